@@ -1,0 +1,92 @@
+"""What can go wrong, as types that carry their data.
+
+Every message answers four questions in one line: what is wrong, where, what is allowed, and what to do.
+"""
+
+from __future__ import annotations
+
+__all__ = ["ClosedGapError", "ClosedProbeError", "InputError", "PumpError", "SingularReflectionError", "SolverError"]
+
+
+class PumpError(Exception):
+    """Base of every error that scatterpump raises on purpose."""
+
+
+class InputError(PumpError, ValueError):
+    """A description, file or argument that cannot be used.
+
+    Attributes
+    ----------
+    problem : str
+        What is wrong, with the offending value.
+    allowed : str
+        What would be accepted.
+    where : str
+        File and key, dotted, or empty when the value came from Python.
+    """
+
+    def __init__(self, problem: str, *, allowed: str = "", where: str = "") -> None:
+        self.problem, self.allowed, self.where = problem, allowed, where
+        text = f"{where}: {problem}" if where else problem
+        super().__init__(f"{text}; allowed: {allowed}" if allowed else text)
+
+
+class ClosedGapError(PumpError):
+    """A band of the interior meets the Fermi level somewhere on the (k, phi) torus."""
+
+    def __init__(self, fermi_level: float, finding: str) -> None:
+        self.fermi_level, self.finding = fermi_level, finding
+        super().__init__(
+            f"the bulk gap closes at the Fermi level {fermi_level:g}: {finding}; "
+            "allowed: a Fermi level that stays inside one gap for all k and phi"
+        )
+
+
+class ClosedProbeError(PumpError):
+    """The probe lead has no open mode at the Fermi level, so r is empty and its winding means nothing."""
+
+    def __init__(self, fermi_level: float, lead: int, role: str = "probe") -> None:
+        self.fermi_level, self.lead, self.role = fermi_level, lead, role
+        super().__init__(
+            f"the {role} (lead {lead}) has no open mode at the Fermi level {fermi_level:g}; "
+            "allowed: an energy inside the lead's band; raise the lead's hopping or shift its on-site level"
+        )
+
+
+class SingularReflectionError(PumpError):
+    """r(phi) is not invertible somewhere on the cycle, so its winding is undefined.
+
+    Attributes
+    ----------
+    phase : float
+        Where the smallest singular value of r was met, in radians.
+    smallest : float
+        That singular value.
+    """
+
+    def __init__(self, phase: float, smallest: float) -> None:
+        self.phase, self.smallest = phase, smallest
+        super().__init__(
+            f"r is singular at phi = {phase:.6g} (smallest singular value {smallest:.1e}); "
+            "a winding needs r invertible all along the cycle; make the device longer or open its gap"
+        )
+
+
+class SolverError(PumpError):
+    """The scattering problem could not be solved at some phase.
+
+    Attributes
+    ----------
+    phase : float
+        Where, in radians.
+    parameters : dict
+        The pump's parameters there.
+    """
+
+    def __init__(self, phase: float, parameters: dict[str, object], cause: BaseException) -> None:
+        self.phase, self.parameters = phase, parameters
+        values = ", ".join(f"{name}={value}" for name, value in parameters.items())
+        super().__init__(
+            f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): "
+            f"{type(cause).__name__}: {cause}"
+        )
