@@ -1,0 +1,1 @@
+"""From a pump to r(phi) and t(phi)."""

@@ -1,0 +1,290 @@
+"""The driven part of a device, with all that stands still folded into self-energies.
+
+    A(phi) = E - H(phi) - Sigma_p - Sigma_d,     Gamma_p = i (Sigma_p - Sigma_p^+) = W W^+,     r = -1 + i W^+ A^-1 W.
+
+Only orbitals whose row of H changes along the cycle matter to how r turns; stretches of still orbitals between them and a lead are eliminated once.
+That multiplies r by a constant unitary matrix (if r_Q is what the still stretch reflects when cut off, r = -r_Q r_folded), so
+windings and singular values stay as they are.  The basis of the probe's channels is that of W; its overall phase is physical: an eigenvalue
++1 of r_folded marks a level of the device that is closed towards the probe.
+
+Orbitals are ordered so that the matrix is a narrow band (reverse Cuthill-McKee); parts that no path connects to the probe are dropped.
+
+References: D. S. Fisher, P. A. Lee, Phys. Rev. B 23, 6851 (1981) (citation from memory).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterpump.errors import SolverError
+from scatterpump.pump import Pump
+from scatterpump.solver.band import pack
+from scatterpump.solver.modes import with_modes
+from scatterpump.solver.path import Path, Side, follow
+
+__all__ = ["FoldedDevice", "fold"]
+
+Complex = NDArray[np.complex128]
+Indices = NDArray[np.int64]
+SAMPLED = (0.0, 0.7390851, 2.3025851, 4.6692016)
+STILL = 1e-13
+OPEN_CHANNEL = 1e-12
+
+
+@dataclass(frozen=True, eq=False)
+class FoldedDevice:
+    """E - H(phi) - Sigma as a banded matrix family.
+
+    Attributes
+    ----------
+    size, half : int
+        Number n of orbitals and half-bandwidth b.
+    rows, columns : (nnz,) int array
+        Places of the matrix elements of H.
+    path : Path
+        Those elements along the cycle.
+    still : (2b+1, n) complex array
+        Band of E - Sigma_p - Sigma_d.
+    probe : (n, m) complex array
+        W: columns of the probe's broadening, orthogonal to each other.
+    drain : (n, m') complex array
+        The same for all other leads together.
+    distance : (n,) int array
+        Number of hops from the probe's columns.
+    samples : int
+        Hamiltonians built to find all this.
+    """
+
+    size: int
+    half: int
+    rows: Indices
+    columns: Indices
+    path: Path
+    still: Complex
+    probe: Complex
+    drain: Complex
+    distance: Indices
+    samples: int
+
+    def matrix(self, phase: float) -> Complex:
+        """Return the band of A at `phase`."""
+        return np.asarray(self.still - self.band(self.path.at(phase)))
+
+    def band(self, entries: Complex) -> Complex:
+        """Return the band of a matrix with the pattern of H."""
+        return pack(self.rows, self.columns, entries, self.size, self.half)
+
+    def derivative(self, phase: float, side: Side, order: int = 1) -> Complex:
+        """Return the band of dH/dphi (or of its derivative) at `phase`, on one side of it."""
+        return self.band(self.path.derivative(phase, side, order))
+
+    def with_broadening(self, width: float) -> tuple[FoldedDevice, NDArray[np.float64]]:
+        """Return the device behind a good contact, and how far its broadening exceeds the actual one.
+
+        Every open channel of the probe gets the broadening `width`, the level shift Re Sigma_p stays.
+
+        Returns
+        -------
+        device : FoldedDevice
+        excess : (m,) float array
+            s_j = width / (broadening of channel j).
+        """
+        strength = np.linalg.norm(self.probe, axis=0) ** 2
+        unit = self.probe / np.sqrt(strength)
+        good = unit * np.sqrt(width)
+        change = 0.5j * (good @ good.conj().T - self.probe @ self.probe.conj().T)
+        rows, columns = np.nonzero(change)
+        still = self.still + pack(rows, columns, change[rows, columns], self.size, self.half)
+        device = FoldedDevice(self.size, self.half, self.rows, self.columns, self.path, still, good, self.drain,
+                              self.distance, 0)
+        return device, width / strength
+
+
+def fold(pump: Pump) -> FoldedDevice:
+    """Fold the still parts and the leads of `pump` into self-energies.
+
+    Raises
+    ------
+    ClosedProbeError, InputError, SolverError
+        As `scatterpump.reflect`.
+    """
+    system = with_modes(pump)
+    sample = _Sampler(pump)
+    size = sample(0.0).shape[0]
+    still = _lead_self_energies(pump, system, size)
+    patterns = [sample(phase) for phase in SAMPLED]
+    moves = _moving(patterns)
+    alive, folded = _eliminate(pump.fermi_level, patterns[0], still, moves)
+    total = _pattern([*patterns, *folded.values()], alive)
+    order = _order(total, alive, folded[pump.probe])
+    return _assemble(pump, sample, folded, order, total)
+
+
+class _Sampler:
+    """H(phi) as a sparse matrix, with failures told where they happened."""
+
+    def __init__(self, pump: Pump) -> None:
+        self.pump, self.calls = pump, 0
+
+    def __call__(self, phase: float) -> Any:
+        parameters = self.pump.parameters(phase)
+        self.calls += 1
+        try:
+            found = self.pump.finalized.hamiltonian_submatrix(params=parameters, sparse=True).tocsr()
+        except Exception as cause:  # a user's value function may raise anything
+            raise SolverError(phase, parameters, cause) from cause
+        if not np.isfinite(found.data).all():
+            raise SolverError(phase, parameters, ValueError("the Hamiltonian has elements that are not finite"))
+        return found
+
+
+def _lead_self_energies(pump: Pump, system: Any, size: int) -> dict[int, Any]:
+    """Self-energy of every lead as a sparse matrix over all orbitals."""
+    from scipy.sparse import coo_matrix
+
+    offsets = _orbital_offsets(system)
+    result = {}
+    for number, (lead, interface) in enumerate(zip(system.leads, system.lead_interfaces, strict=True)):
+        orbitals = np.concatenate([np.arange(offsets[site], offsets[site + 1]) for site in interface])
+        sigma = lead.modes(pump.fermi_level)[1].selfenergy()
+        rows, columns = np.meshgrid(orbitals, orbitals, indexing="ij")
+        result[number] = coo_matrix((sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(size, size)).tocsr()
+    return result
+
+
+def _orbital_offsets(system: Any) -> Indices:
+    count = system.graph.num_nodes
+    if system.site_ranges is None:  # no orbital numbers were given: ask the Hamiltonian
+        return np.arange(count + 1)
+    offsets = np.zeros(count + 1, dtype=int)
+    for (first, norbs, offset), (after, _, end) in zip(system.site_ranges, system.site_ranges[1:], strict=False):
+        offsets[first : after + 1] = offset + norbs * np.arange(after - first + 1)
+        offsets[after] = end
+    return offsets
+
+
+def _moving(patterns: list[Any]) -> NDArray[np.bool_]:
+    """Orbitals whose row of H changes between samples."""
+    scale = max(float(abs(h).max()) for h in patterns) or 1.0
+    moves = np.zeros(patterns[0].shape[0], dtype=bool)
+    for other in patterns[1:]:
+        change = abs(other - patterns[0]).max(axis=1).toarray().ravel()
+        moves |= change > STILL * scale
+    return moves
+
+
+def _eliminate(energy: float, hamiltonian: Any, leads: dict[int, Any], moves: NDArray[np.bool_]) -> tuple[Indices, dict[int, Any]]:
+    """Fold connected still stretches that touch exactly one lead into that lead's self-energy."""
+    from scipy.sparse.csgraph import connected_components
+
+    _, label = connected_components(abs(hamiltonian) + sum(abs(s) for s in leads.values()), directed=False)
+    touched = np.unique(np.concatenate([label[np.unique(s.nonzero()[0])] for s in leads.values()]))
+    gone = ~np.isin(label, touched)
+    folded = dict(leads)
+    quiet = np.flatnonzero(~moves & ~gone)
+    if moves.any() and quiet.size:
+        pieces, label = connected_components(abs(hamiltonian[quiet][:, quiet]), directed=False)
+        for piece in range(pieces):
+            inside = quiet[label == piece]
+            touching = [n for n, s in leads.items() if s[inside].nnz or s[:, inside].nnz]
+            if len(touching) == 1 and _holds(leads[touching[0]], inside):
+                sigma = _folded(energy, hamiltonian, leads[touching[0]], inside)
+                if sigma is not None:
+                    folded[touching[0]] = sigma
+                    gone[inside] = True
+    return np.flatnonzero(~gone), folded
+
+
+def _holds(sigma: Any, inside: Indices) -> bool:
+    """Whether the lead touches nothing outside this stretch."""
+    return bool(np.isin(sigma.nonzero()[0], inside).all())
+
+
+def _folded(energy: float, hamiltonian: Any, sigma: Any, inside: Indices) -> Any:
+    from scipy.sparse import csr_matrix, identity
+    from scipy.sparse.linalg import splu
+
+    outside = np.setdiff1d(np.unique(hamiltonian[inside].nonzero()[1]), inside)
+    if outside.size == 0:
+        return None
+    block = energy * identity(len(inside)) - hamiltonian[inside][:, inside] - sigma[inside][:, inside]
+    coupling = hamiltonian[inside][:, outside].toarray()
+    try:
+        reached = splu(block.tocsc()).solve(coupling.astype(complex))
+    except RuntimeError:
+        return None
+    small = coupling.conj().T @ reached
+    if not np.isfinite(small).all():
+        return None
+    rows, columns = np.meshgrid(outside, outside, indexing="ij")
+    return csr_matrix((small.ravel(), (rows.ravel(), columns.ravel())), shape=hamiltonian.shape)
+
+
+def _pattern(matrices: list[Any], alive: Indices) -> Any:
+    """Boolean union of the patterns on the orbitals that are left."""
+    total = sum(abs(m[alive][:, alive]) for m in matrices)
+    total = total + total.T
+    total.eliminate_zeros()
+    return total.tocsr()
+
+
+def _order(pattern: Any, alive: Indices, probe: Any) -> Indices:
+    """Order of the orbitals: those connected to the probe, in a narrow band."""
+    from scipy.sparse.csgraph import connected_components, reverse_cuthill_mckee
+
+    _, label = connected_components(pattern, directed=False)
+    start = np.flatnonzero(np.isin(alive, np.unique(probe.nonzero()[0])))
+    kept = np.flatnonzero(np.isin(label, label[start]))
+    order = reverse_cuthill_mckee(pattern[kept][:, kept].tocsr(), symmetric_mode=True)
+    return np.asarray(alive[kept[order]], dtype=int)
+
+
+def _assemble(pump: Pump, sample: _Sampler, leads: dict[int, Any], order: Indices, pattern: Any) -> FoldedDevice:
+    union = sum(abs(sample(phase)[order][:, order]) for phase in SAMPLED).tocoo()
+    rows, columns = union.row.astype(int), union.col.astype(int)
+    sigma = {number: matrix[order][:, order].tocoo() for number, matrix in leads.items()}
+    places = [(rows, columns), *((s.row.astype(int), s.col.astype(int)) for s in sigma.values())]
+    half = max(int(np.abs(r - c).max(initial=0)) for r, c in places)
+    size = len(order)
+
+    def entries(phase: float) -> Complex:
+        return np.asarray(sample(phase)[order[rows], order[columns]]).ravel().astype(complex)
+
+    still = pack(np.arange(size), np.arange(size), np.full(size, pump.fermi_level, dtype=complex), size, half)
+    for matrix in sigma.values():
+        still -= pack(matrix.row, matrix.col, matrix.data, size, half)
+    probe = _broadening([sigma[pump.probe]], size)
+    drain = _broadening([s for number, s in sigma.items() if number != pump.probe], size)
+    path = follow(entries, pump.cycle)
+    return FoldedDevice(size, half, rows, columns, path, still, probe, drain, _distance(places, probe, size), sample.calls)
+
+
+def _broadening(sigmas: list[Any], size: int) -> Complex:
+    """W with W W^+ = i (Sigma - Sigma^+), one orthogonal column for each open channel."""
+    columns = [np.zeros((size, 0), dtype=complex)]
+    for sigma in sigmas:
+        touched = np.unique(np.concatenate([sigma.row, sigma.col])).astype(int)
+        block = sigma.tocsr()[touched][:, touched].toarray()
+        strength, states = np.linalg.eigh(1j * (block - block.conj().T))
+        is_open = strength > OPEN_CHANNEL * max(strength.max(initial=0.0), np.abs(block).max(initial=0.0) * 1e-3)
+        column = np.zeros((size, int(is_open.sum())), dtype=complex)
+        column[touched] = states[:, is_open] * np.sqrt(strength[is_open])
+        columns.append(column)
+    return np.hstack(columns)
+
+
+def _distance(places: list[tuple[Indices, Indices]], probe: Complex, size: int) -> Indices:
+    """Hops from the probe's columns to every orbital, on the union of all patterns."""
+    from scipy.sparse import coo_matrix
+    from scipy.sparse.csgraph import dijkstra
+
+    start = np.flatnonzero(np.abs(probe).max(axis=1))
+    rows = np.concatenate([np.full(len(start), size), *(r for r, _ in places)])
+    columns = np.concatenate([start, *(c for _, c in places)])
+    graph = coo_matrix((np.ones(len(rows)), (rows, columns)), shape=(size + 1, size + 1)).tocsr()
+    hops = dijkstra(graph + graph.T, directed=False, unweighted=True, indices=size)[:size] - 1
+    return np.asarray(hops, dtype=int)

@@ -1,0 +1,44 @@
+"""The leads' modes at the Fermi level, computed once and shared by all phi.
+
+The phases of modes are arbitrary; only on one and the same set of modes is det r comparable between phases.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+from scatterpump.errors import ClosedProbeError, InputError
+from scatterpump.pump import Pump
+
+__all__ = ["varying_leads", "with_modes"]
+
+
+def with_modes(pump: Pump) -> Any:
+    """Return the finalized system with every lead's modes precalculated at the Fermi level.
+
+    Raises
+    ------
+    ClosedProbeError
+        If the probe has no open mode there.
+    InputError
+        If a lead depends on a parameter of the cycle.
+    """
+    varying = varying_leads(pump)
+    if varying:
+        lead, names = varying[0]
+        raise InputError(
+            f"lead {lead} depends on {', '.join(names)}, which the cycle sets",
+            allowed="leads that stay the same all along the cycle; move the modulated part into the scattering region",
+        )
+    system = pump.finalized.precalculate(pump.fermi_level, params=pump.parameters(0.0), what="modes")
+    propagating, _ = system.leads[pump.probe].modes(pump.fermi_level)
+    if len(propagating.momenta) == 0:
+        raise ClosedProbeError(pump.fermi_level, pump.probe)
+    return system
+
+
+def varying_leads(pump: Pump) -> list[tuple[int, list[str]]]:
+    """Return (lead, names) for every lead that takes parameters which the cycle sets."""
+    driven = set(pump.cycle.names)
+    found = ((i, sorted(driven & set(lead.parameters))) for i, lead in enumerate(pump.finalized.leads))
+    return [(i, names) for i, names in found if names]
