@@ -1,0 +1,1 @@
+"""From r(phi) to how often det r goes round."""

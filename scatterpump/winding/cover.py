@@ -1,0 +1,178 @@
+"""Covering the cycle: looks, how far each one reaches, and what is still open between them."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterpump.solver.folded import FoldedDevice
+from scatterpump.solver.path import Side, Slopes
+from scatterpump.winding.look import Look, look
+from scatterpump.winding.radius import RIGHT_ANGLE, Model, Rates, length_limit, split_reach
+
+__all__ = ["Arm", "Centre", "Gap", "centre", "centre_of", "covering", "join", "neighbours", "open_gaps", "smallest_over"]
+
+Floats = NDArray[np.float64]
+TURN = 2 * np.pi
+MARGIN = 1e-9
+
+
+@dataclass(frozen=True, eq=False)
+class Arm:
+    """What a look proves to one side: how far, with which model of r, and where it expects resonances.
+
+    `floor` is a lower bound on the smallest singular value of r within the reach.
+    """
+
+    reach: float
+    model: Model
+    poles: tuple[float, ...]
+    floor: float
+
+
+@dataclass(frozen=True, eq=False)
+class Centre:
+    """A look together with what it covers below and above its phase."""
+
+    seen: Look
+    below: Arm
+    above: Arm
+
+    @property
+    def phase(self) -> float:
+        """Phase of the look, in radians."""
+        return self.seen.phase
+
+
+@dataclass(frozen=True)
+class Gap:
+    """A stretch that two neighbours leave open, with the phases at which to look next."""
+
+    start: float
+    end: float
+    places: tuple[float, ...]
+
+
+def centre(device: FoldedDevice, slopes: Slopes, phase: float, *, splitting: bool = True) -> Centre | None:
+    """Look at `phase` and work out the reach to both sides; None if A or B is singular there."""
+    seen = look(phase, device.matrix(phase), device.probe, splitting=splitting)
+    return None if seen is None else centre_of(device, slopes, seen)
+
+
+def centre_of(device: FoldedDevice, slopes: Slopes, seen: Look) -> Centre:
+    """Work out how far a look reaches to both sides."""
+    return Centre(seen, _arm(device, slopes, seen, -1), _arm(device, slopes, seen, 1))
+
+
+def _arm(device: FoldedDevice, slopes: Slopes, seen: Look, side: Side) -> Arm:
+    def length(distances: Floats) -> Floats:
+        return slopes.length(seen.phase, seen.phase + side * distances)
+
+    plain = farthest(length, length_limit(seen) - seen.noise)
+    simple = Arm(plain, Model.constant(seen.reflection), (), seen.smallest * float(np.exp(-RIGHT_ANGLE)))
+    if seen.split is None:
+        return simple
+    rates = _rates(device, slopes, seen, side)
+    model = Model.of(seen.split, rates.core)
+    poles = tuple(np.linalg.eigvals(np.linalg.pinv(model.core) @ model.sigma).real.tolist())
+    reach, floor = split_reach(seen.split, rates, length, side, _smooth_stretch(device.path.corners, seen.phase, side))
+    return Arm(reach, model, poles, floor) if reach > plain else replace(simple, poles=poles)
+
+
+def _rates(device: FoldedDevice, slopes: Slopes, seen: Look, side: Side) -> Rates:
+    from scatterpump.solver.band import apply
+
+    assert seen.split is not None
+    u, v = seen.split.u, seen.split.v
+    first = device.derivative(seen.phase, side)
+    into, out = apply(first, v), apply(first, u)
+    curved = apply(device.derivative(seen.phase, side, 2), v)
+    return Rates(u.conj().T @ into, _norm(into), _norm(out), _norm(u.conj().T @ curved), slopes.second, slopes.third)
+
+
+def _norm(matrix: NDArray[np.complex128]) -> float:
+    return float(np.linalg.norm(matrix, ord=2))
+
+
+def _smooth_stretch(corners: Floats, phase: float, side: Side) -> float:
+    """Distance to the next corner of the cycle, at most half a turn."""
+    if not corners.size:
+        return np.pi
+    ahead = (side * (corners - phase)) % TURN
+    return float(min(np.pi, np.where(ahead > 0, ahead, TURN).min()))
+
+
+def farthest(length: Callable[[Floats], Floats], limit: float) -> float:
+    """Largest distance up to half a turn at which a growing `length` stays within `limit`; 0 if there is none."""
+    low, high = 0.0, np.pi
+    for _ in range(6):
+        grid = np.linspace(low, high, 65)
+        inside = length(grid) <= limit
+        if not inside[0]:
+            return 0.0
+        last = int(np.flatnonzero(inside)[-1])
+        if last == 64:
+            return high
+        low, high = float(grid[last]), float(grid[last + 1])
+    return low
+
+
+def open_gaps(centres: list[Centre]) -> list[Gap]:
+    """Return what neighbouring centres (sorted by phase, round the cycle) leave open."""
+    found = []
+    for left, right, end in neighbours(centres):
+        start, stop = left.phase + left.above.reach, end - right.below.reach
+        if start < stop + MARGIN * min(left.above.reach, right.below.reach):
+            found.append(Gap(start, stop, _places(left, right, end, start, stop)))
+    return found
+
+
+def neighbours(centres: list[Centre]) -> list[tuple[Centre, Centre, float]]:
+    """Pairs of neighbours, with the second one's phase counted onward from the first."""
+    pairs = [(a, b, b.phase) for a, b in zip(centres, centres[1:], strict=False)]
+    return [*pairs, (centres[-1], centres[0], centres[0].phase + TURN)]
+
+
+def _places(left: Centre, right: Centre, end: float, start: float, stop: float) -> tuple[float, ...]:
+    """Resonances that a neighbour expects inside the gap, else as many even places as its neighbours' reach suggests."""
+    expected = [left.phase + p for p in left.above.poles] + [end + p for p in right.below.poles]
+    inside = sorted(p for p in expected if start < p < stop)
+    if inside:
+        nearest = inside[0] if inside[0] - start < stop - inside[-1] else inside[-1]
+        return (nearest,)
+    typical = left.above.reach + right.below.reach
+    count = int(np.ceil(0.9 * (stop - start) / typical)) if typical > 0 else 1
+    count = count if 1 <= count <= 3 else 1
+    return tuple(start + (stop - start) * (2 * i + 1) / (2 * count) for i in range(count))
+
+
+def covering(centres: list[Centre]) -> tuple[tuple[float, float], ...]:
+    """Return the interval that each centre covers."""
+    return tuple((c.phase - c.below.reach, c.phase + c.above.reach) for c in centres)
+
+
+def smallest_over(centres: list[Centre]) -> float:
+    """Return a lower bound on the smallest singular value of r over a covered cycle.
+
+    Over a reach of rule L, r = U r_i where the smallest singular value of U is at least exp(-pi/2); rule S gives its own floor.
+    """
+    return min(arm.floor for c in centres for arm in (c.below, c.above))
+
+
+def join(centres: list[Centre]) -> list[float]:
+    """Return the change of arg det r from each centre to the next one round the cycle, in radians.
+
+    Proven where the two reaches overlap; elsewhere the same formula at the middle of the gap is only a guess.
+    """
+    steps = []
+    for left, right, end in neighbours(centres):
+        start, stop = end - right.below.reach, left.phase + left.above.reach
+        meet = min(max((start + stop) / 2, left.phase), end)
+        near, far = meet - left.phase, meet - end
+        change = np.linalg.solve(left.above.model.at(near), right.below.model.at(far))
+        between = float(np.angle(np.linalg.eigvals(change)).sum())
+        steps.append(left.above.model.turned(near) + between - right.below.model.turned(far))
+    return steps

@@ -1,0 +1,198 @@
+"""How far around one look r stays invertible and its turning is known (arrays only).
+
+Notation: x is an upper bound on |A(phi + s) - A_i|, the path length of H plus the noise of the look.
+
+Rule L (path length).  r^-1 r' = -i W^+ B^-1 H' G W, so while x < 1/max(g, b) the matrix r_i^-1 r(phi + s) turns every vector by at most
+w_a w_b ln((1 - g x)/(1 - b x)) / (b - g), with g = |G_i|, b = |B_i^-1| and w_a, w_b the norms of the columns.  Below a right angle it
+is accretive, and then the principal arguments of its eigenvalues add up to exactly the turn of det r.
+
+Rule S (split).  With the k smallest singular values split off, r is close to r_m(s) = r_c + i X (S - sK)^-1 Y, a rational function
+of s; Schur's complement bounds the rest, and where |r_m^-1| times that rest stays below 1, r_m^-1 r is accretive.  Then det r turns as
+det r_m does, whose zeros and poles are those of k x k pencils.  Near a resonance of width gamma the rest is of order gamma: the reach does
+not shrink with the width.
+
+Both are theorems in exact arithmetic about the matrix that the look is exact for; floating point enters through the noise alone.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterpump.winding.look import Look, Split
+
+__all__ = ["RIGHT_ANGLE", "Model", "Rates", "length_limit", "split_reach"]
+
+Complex = NDArray[np.complex128]
+Floats = NDArray[np.float64]
+RIGHT_ANGLE = np.pi / 2 * (1 - 1e-6)
+
+
+def length_limit(seen: Look) -> float:
+    """Return the largest path length x that rule L allows; 0 if there is none.
+
+    The noise of the look has still to be taken off.
+    """
+    g, b, product = seen.g_norm, seen.b_norm, seen.a_columns * seen.b_columns
+    if not np.isfinite(g + b):
+        return 0.0
+    if abs(b - g) < 1e-9 * g:
+        b = g * (1 + 1e-9)
+    low, high = 0.0, 1 / max(g, b)
+    for _ in range(60):
+        middle = (low + high) / 2
+        turned = product * np.log((1 - g * middle) / (1 - b * middle)) / (b - g)
+        low, high = (middle, high) if turned < RIGHT_ANGLE else (low, middle)
+    return low
+
+
+@dataclass(frozen=True, eq=False)
+class Rates:
+    """How the split-off part of A changes to one side of the look.
+
+    Attributes
+    ----------
+    core : (k, k) complex array
+        K = U^+ H' V.
+    into, out : float
+        |H' V| and |U^+ H'|.
+    curved : float
+        |U^+ H'' V|.
+    second, third : float
+        Bounds on |H''| and |H'''|.
+    """
+
+    core: Complex
+    into: float
+    out: float
+    curved: float
+    second: float
+    third: float
+
+
+@dataclass(frozen=True, eq=False)
+class Model:
+    """A stand-in for r near one look whose turning is known in closed form.
+
+    r_m(s) = far + i into (sigma - s core)^-1 out; without a split it is constant.
+    """
+
+    far: Complex
+    sigma: Complex
+    core: Complex
+    into: Complex
+    out: Complex
+
+    @classmethod
+    def constant(cls, reflection: Complex) -> Model:
+        """Return the model that stays at `reflection`."""
+        m = len(reflection)
+        empty = np.zeros((0, 0), dtype=complex)
+        return cls(reflection, empty, empty, np.zeros((m, 0), dtype=complex), np.zeros((0, m), dtype=complex))
+
+    @classmethod
+    def of(cls, split: Split, core: Complex) -> Model:
+        """Return the model of a split look."""
+        return cls(split.far, np.diag(split.sigma).astype(complex), core, split.into, split.out)
+
+    def at(self, s: float) -> Complex:
+        """Return r_m(s)."""
+        if not len(self.sigma):
+            return self.far
+        return np.asarray(self.far + 1j * self.into @ np.linalg.solve(self.sigma - s * self.core, self.out))
+
+    @property
+    def zeros_part(self) -> Complex:
+        """q_z(0) = sigma + i out far^-1 into, whose pencil with core has the zeros of det r_m."""
+        return np.asarray(self.sigma + 1j * self.out @ np.linalg.solve(self.far, self.into))
+
+    def turned(self, s: float) -> float:
+        """Return the exact change of arg det r_m from 0 to s, in radians."""
+        if not len(self.sigma):
+            return 0.0
+        zeros = np.linalg.eigvals(np.linalg.solve(self.zeros_part, self.core))
+        poles = np.linalg.eigvals(np.linalg.solve(self.sigma, self.core))
+        return float(np.angle(1 - s * zeros).sum() - np.angle(1 - s * poles).sum())
+
+
+def split_reach(split: Split, rates: Rates, length: Callable[[Floats], Floats], side: int,
+                limit: float) -> tuple[float, float]:
+    """Return how far to one side rule S holds, at most `limit` (radians), and the smallest singular value r keeps there.
+
+    Parameters
+    ----------
+    length : callable
+        Distances t >= 0 to bounds on the path length of H.
+    side : +1 or -1
+    """
+    model = Model.of(split, rates.core)
+    if limit <= 0 or not np.isfinite(model.zeros_part).all():
+        return 0.0, 0.0
+    ends = _pieces(model, side, limit)
+    starts = np.concatenate([[0.0], ends[:-1]])
+    floors = _floors(split, rates, model, length, side, starts, ends)
+    failed = np.flatnonzero(floors <= 0)
+    if failed.size == 0:
+        return float(ends[-1]), float(floors.min())
+    return float(starts[failed[0]]), float(floors[: failed[0]].min(initial=1.0))
+
+
+def _pieces(model: Model, side: int, limit: float) -> Floats:
+    """Ends of pieces of [0, limit], fine around the resonances of the model."""
+    marks = [np.linspace(0.0, limit, 65)[1:]]
+    poles = np.linalg.eigvals(np.linalg.pinv(model.core) @ model.sigma)
+    for pole in poles:
+        centre, width = side * pole.real, max(abs(pole.imag), 1e-16)
+        if np.isfinite(centre) and width < limit:
+            grown = width * 1.15 ** np.arange(-8.0, np.log(4 * limit / width) / np.log(1.15))
+            marks += [centre + grown, centre - grown, np.array([centre])]
+    every = np.unique(np.concatenate(marks))
+    return every[(every > 0) & (every <= limit)]
+
+
+def _floors(split: Split, rates: Rates, model: Model, length: Callable[[Floats], Floats], side: int, starts: Floats,
+            ends: Floats) -> Floats:
+    """Check rule S on each piece: growing bounds at its far end, the model's resonance at its nearest point.
+
+    Returns sigma_min(r_m) - |r - r_m|, a lower bound on the smallest singular value of r; 0 where the rule fails.
+    """
+    noise, rest = split.noise, split.next_sigma
+    x = length(ends) + noise
+    inside = x < rest * (1 - 1e-9)
+    th = 1 / (1 - np.where(inside, x, 0.0) / rest)
+    into = rates.into * ends + rates.second * ends**2 / 2 + noise
+    out = rates.out * ends + rates.second * ends**2 / 2 + noise
+    background = split.left * split.right * x * th
+    change_in, change_out = split.left * into * th, split.right * out * th
+    q_rest = rates.curved * ends**2 / 2 + rates.third * ends**3 / 6 + into * out * th / rest + noise
+    q = _nearest(model.sigma, side * model.core, starts, ends)
+    known = inside & (q > q_rest * (1 + 1e-9))
+    gap = np.where(known, q - q_rest, 1.0)
+    q = np.where(known, q, 1.0)
+    x_norm, y_norm = _norm(model.into), _norm(model.out)
+    error = (background + x_norm * y_norm * q_rest / (q * gap)
+             + (change_in * y_norm + x_norm * change_out + change_in * change_out) / gap)
+    inverse = np.linalg.inv(model.far)
+    zeros = _nearest(model.zeros_part, side * model.core, starts, ends)
+    seen = zeros > 0
+    bound = _norm(inverse) + _norm(inverse @ model.into) * _norm(model.out @ inverse) / np.where(seen, zeros, 1.0)
+    return np.where(known & seen & (error * bound < 1 - 1e-6), 1 / bound - error, 0.0)
+
+
+def _nearest(constant: Complex, slope: Complex, starts: Floats, ends: Floats) -> Floats:
+    """Lower bound on the smallest singular value of constant - t slope over each piece t in [start, end]."""
+    if len(constant) == 1:
+        a, k = complex(constant[0, 0]), complex(slope[0, 0])
+        best = (a * np.conj(k)).real / max(abs(k) ** 2, 1e-300)
+        return np.asarray(np.abs(a - np.clip(best, starts, ends) * k))
+    middles, reach = (starts + ends) / 2, (ends - starts) / 2
+    stack = constant - middles[:, None, None] * slope
+    return np.linalg.svd(stack, compute_uv=False)[:, -1] - reach * _norm(slope)
+
+
+def _norm(matrix: NDArray[Any]) -> float:
+    return float(np.linalg.norm(matrix, ord=2)) if matrix.size else 0.0
