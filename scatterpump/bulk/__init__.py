@@ -1,0 +1,1 @@
+"""The endless interior of a pump on the (k, phi) torus: its gap, its Chern number, its decay length."""
