@@ -1,0 +1,1 @@
+"""The audit: everything that would make the integer meaningless, looked at one by one."""

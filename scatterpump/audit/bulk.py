@@ -1,0 +1,43 @@
+"""Checks on the interior: the Fermi level must stay in one gap, whose Chern number is the integer."""
+
+from __future__ import annotations
+
+from scatterpump.audit.evidence import Evidence
+from scatterpump.audit.finding import Finding
+
+__all__ = ["fermi_level_in_gap", "integer_agrees"]
+
+THIN = 0.05
+
+
+def fermi_level_in_gap(evidence: Evidence) -> Finding | None:
+    """Distance of the Fermi level from the nearest bulk band over the (k, phi) torus, against the gap."""
+    gap, level = evidence.gap, evidence.pump.fermi_level
+    if gap is None:
+        return None
+    where = f"k = {gap.momentum:.4g}, phi = {gap.phase:.4g}"
+    if not gap.is_open:
+        return Finding("Fermi level in gap", "alarm", gap.distance_upper, 0.0, "E",
+                       f"A bulk band meets the Fermi level {level:g} or comes within {gap.distance_upper:.1e} of it, so the pump "
+                       "is not gapped and any integer is an accident.",
+                       "Move the Fermi level into a gap, or change the cycle so that the gap stays open.", where)
+    width = gap.upper_edge.lower - gap.lower_edge.upper
+    message = f"The Fermi level stays at least {gap.distance_lower:.4g} away from every bulk band."
+    if gap.distance_lower < THIN * width:
+        return Finding("Fermi level in gap", "caution", gap.distance_lower, THIN * width, "E", message,
+                       "Move the Fermi level towards the middle of the window.", where)
+    return Finding("Fermi level in gap", "pass", gap.distance_lower, THIN * min(width, 1e300), "E", message, where=where)
+
+
+def integer_agrees(evidence: Evidence) -> Finding | None:
+    """The winding of a long clean pump is the Chern number of its filled bands."""
+    winding, chern = evidence.winding, evidence.chern
+    if winding is None or winding.number is None or chern is None:
+        return None
+    difference = winding.number - chern
+    if difference == 0:
+        return Finding("integer agrees with bulk", "pass", 0, 0, "charges",
+                       f"The winding equals the Chern number {chern:+d} of the filled bands.")
+    return Finding("integer agrees with bulk", "alarm", difference, 0, "charges",
+                   f"The winding is {winding.number:+d}, but the filled bands of the endless interior carry {chern:+d}.",
+                   "Make the device longer, open its far end and its contact, and look for defects in it.")
