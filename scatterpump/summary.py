@@ -1,0 +1,94 @@
+"""A verdict as text: alarms first, then the integer, how sure it is, and the margins."""
+
+from __future__ import annotations
+
+from textwrap import wrap
+from typing import TYPE_CHECKING
+
+from scatterpump.audit.finding import Finding
+from scatterpump.bulk.gap import BulkGap
+from scatterpump.version import version
+from scatterpump.winding.result import Winding
+
+if TYPE_CHECKING:
+    from scatterpump.verdict import Verdict
+
+__all__ = ["summarise"]
+
+WIDTH = 98
+LABEL = 18
+SHOWN_INTERVALS = 4
+
+
+def summarise(verdict: Verdict) -> str:
+    """Return the table that `Verdict.summary` shows."""
+    lines = [f"{verdict.name}, Fermi level {verdict.fermi_level:g}   (scatterpump {version()})", ""]
+    for finding in verdict.audit.alarms:
+        lines += _finding(finding)
+    lines += _integer(verdict)
+    if verdict.winding is not None:
+        lines += _winding(verdict.winding)
+    if verdict.gap is not None:
+        lines += _gap(verdict.gap)
+    if verdict.chern is not None:
+        lines += _row("Chern number", f"{verdict.chern:+d} of the filled bands")
+    for finding in verdict.audit.cautions:
+        lines += _finding(finding)
+    passed = sum(finding.status == "pass" for finding in verdict.audit.findings)
+    lines += _row("checks", f"{passed} passed, {len(verdict.audit.cautions)} cautions, {len(verdict.audit.alarms)} alarms")
+    return "\n".join(lines)
+
+
+def _row(label: str, text: str) -> list[str]:
+    first, *rest = wrap(text, WIDTH - LABEL) or [""]
+    return [f"{label:<{LABEL}}{first}", *(" " * LABEL + line for line in rest)]
+
+
+def _finding(finding: Finding) -> list[str]:
+    where = f" ({finding.where})" if finding.where else ""
+    return _row(finding.status.upper(), f"{finding.check}{where}: {finding.message} {finding.remedy}")
+
+
+def _integer(verdict: Verdict) -> list[str]:
+    winding = verdict.winding
+    if winding is None:
+        return _row("charges a cycle", "undefined: r is singular on the cycle")
+    if winding.number is None:
+        return _row("charges a cycle", f"not proven (det r seems to wind {winding.turns:+.3g} times)")
+    if not verdict.trustworthy:
+        return _row("charges a cycle", f"not to be trusted (det r winds {winding.number:+d} times)")
+    return _row("charges a cycle", f"{winding.number:+d} from probe to drain")
+
+
+def _winding(winding: Winding) -> list[str]:
+    lines = _row("how sure", _proof(winding))
+    for crossing in winding.crossings:
+        verb = "filled from" if crossing.direction > 0 else "emptied into"
+        lines += _row("level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}")
+    if winding.leak.bound < 1:
+        lines += _row("leak", f"proven to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
+    return lines
+
+
+def _proof(winding: Winding) -> str:
+    if not winding.certified:
+        shown = ", ".join(f"{a:.6g} to {b:.6g}" for a, b in winding.unproven[:SHOWN_INTERVALS])
+        more = f" and {len(winding.unproven) - SHOWN_INTERVALS} more" if len(winding.unproven) > SHOWN_INTERVALS else ""
+        return f"not proven: {winding.reason}; open after {winding.evaluations} evaluations: phi = {shown}{more}"
+    if winding.method == "no drain":
+        return "proven: without a drain det r cannot wind"
+    how = "proven" if winding.exact else "proven up to an estimate of how fast H changes"
+    place = " behind a good contact" if winding.method == "open reference" else ""
+    return f"{how}: {winding.evaluations} evaluations{place} cover every phi"
+
+
+def _gap(gap: BulkGap) -> list[str]:
+    if not gap.is_open:
+        return _row("bulk gap", f"closed or below {gap.distance_upper:.1e} at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}")
+    kind = "proven" if gap.exact else "estimated"
+    return [
+        *_row("bulk gap", f"{gap.lower:.5g} to {gap.upper:.5g} ({kind}), smallest at k = {gap.momentum:.4f}, "
+                          f"phi = {gap.phase:.4f}"),
+        *_row("Fermi window", f"{gap.lower_edge.upper:.5g} to {gap.upper_edge.lower:.5g}, the level is "
+                              f"{gap.distance_lower:.4g} away from the nearer edge"),
+    ]

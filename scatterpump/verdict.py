@@ -1,0 +1,101 @@
+"""The verdict: the integer, how sure it is, the margins, and every alarm, in one record.
+
+scatterpump is single-particle theory: no interactions, no decoherence, no temperature.  A verdict guides measurement and
+does not replace it.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable
+from dataclasses import asdict, dataclass
+from math import isfinite
+from typing import Any
+
+from scatterpump.audit.examine import gather, run_checks
+from scatterpump.audit.finding import AuditReport
+from scatterpump.bulk.gap import BulkGap
+from scatterpump.pump import Pump
+from scatterpump.version import version
+from scatterpump.winding.result import Winding
+
+__all__ = ["Verdict", "judge"]
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """Everything found out about a pump.
+
+    Attributes
+    ----------
+    name : str
+        The pump's name.
+    fermi_level : float
+        Energy at which it was judged.
+    winding : Winding or None
+        None if r is singular somewhere on the cycle.
+    gap : BulkGap or None
+        None without a bulk cell.
+    chern : int or None
+        None without a bulk cell or where the gap closes.
+    audit : AuditReport
+    """
+
+    name: str
+    fermi_level: float
+    winding: Winding | None
+    gap: BulkGap | None
+    chern: int | None
+    audit: AuditReport
+
+    @property
+    def trustworthy(self) -> bool:
+        """True if there is an integer and no alarm."""
+        return self.winding is not None and self.audit.passed
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return plain data: numbers, text, lists and dictionaries; an infinite number is None."""
+        content = {"scatterpump": version(), "trustworthy": self.trustworthy, **asdict(self)}
+        return dict(_plain(content))
+
+    def to_json(self) -> str:
+        """Return `to_dict` as JSON text."""
+        return json.dumps(self.to_dict(), indent=2, allow_nan=False)
+
+    def summary(self) -> str:
+        """Return the verdict as a table that a person reads in ten seconds, alarms first."""
+        from scatterpump.summary import summarise
+
+        return summarise(self)
+
+
+def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Verdict:
+    """Reach a verdict on `pump`: winding, gap, Chern number and audit.
+
+    Parameters
+    ----------
+    pump : Pump
+    progress : callable, optional
+        Called with the share of the cycle that is covered so far, 0 to 1.
+
+    Raises
+    ------
+    ClosedProbeError
+        If the probe has no open mode at the Fermi level.
+    InputError
+        If a lead depends on the cycle.
+    SolverError
+        If the Hamiltonian or its solution fails at some phase.
+    """
+    evidence = gather(pump, progress=progress)
+    return Verdict(pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, run_checks(evidence))
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, dict):
+        return {key: _plain(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(item) for item in value]
+    if hasattr(value, "item"):
+        value = value.item()
+    return None if isinstance(value, float) and not isfinite(value) else value
