@@ -65,7 +65,7 @@ def _winding(winding: Winding) -> list[str]:
     for crossing in winding.crossings:
         verb = "filled from" if crossing.direction > 0 else "emptied into"
         lines += _row("level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}")
-    if winding.leak.bound < 1:
+    if 0 < winding.leak.bound < 1:
         lines += _row("leak", f"proven to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
     return lines
 

@@ -50,8 +50,8 @@ class Verdict:
 
     @property
     def trustworthy(self) -> bool:
-        """True if there is an integer and no alarm."""
-        return self.winding is not None and self.audit.passed
+        """True if there is a proven integer and no alarm."""
+        return self.winding is not None and self.winding.certified and self.audit.passed
 
     def to_dict(self) -> dict[str, Any]:
         """Return plain data: numbers, text, lists and dictionaries; an infinite number is None."""
@@ -87,8 +87,12 @@ def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ver
     SolverError
         If the Hamiltonian or its solution fails at some phase.
     """
-    evidence = gather(pump, progress=progress)
-    return Verdict(pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, run_checks(evidence))
+    from threadpoolctl import threadpool_limits
+
+    with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
+        evidence = gather(pump, progress=progress)
+        report = run_checks(evidence)
+    return Verdict(pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, report)
 
 
 def _plain(value: Any) -> Any:

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Finding
+from scatterpump.winding.certificate import behind_good_contact
 
 __all__ = ["fermi_level_in_gap", "integer_agrees"]
 
 THIN = 0.05
+MUCH = 1e-2
 
 
 def fermi_level_in_gap(evidence: Evidence) -> Finding | None:
@@ -39,5 +41,18 @@ def integer_agrees(evidence: Evidence) -> Finding | None:
         return Finding("integer agrees with bulk", "pass", 0, 0, "charges",
                        f"The winding equals the Chern number {chern:+d} of the filled bands.")
     return Finding("integer agrees with bulk", "alarm", difference, 0, "charges",
-                   f"The winding is {winding.number:+d}, but the filled bands of the endless interior carry {chern:+d}.",
-                   "Make the device longer, open its far end and its contact, and look for defects in it.")
+                   f"The winding is {winding.number:+d}, but the filled bands of the endless interior carry {chern:+d}: "
+                   + _explanation(evidence, chern), "Mend what is named here, or take the winding for what it is.")
+
+
+def _explanation(evidence: Evidence, chern: int) -> str:
+    """Say which of a closed far end, a contact weaker than the leak, or a finite length accounts for the difference."""
+    if evidence.pump.drain is None:
+        return "the far end is closed, and its level takes back what the near one took in."
+    if behind_good_contact(evidence.pump) == chern:
+        return ("the contact is weaker than the leak, so the edge level fills and drains through the far end; behind a good "
+                f"contact this device winds {chern:+d}.")
+    leak = float(evidence.trace.leakage.max())
+    if leak > MUCH:
+        return f"the device is too short, up to {leak:.1e} of the electrons pass through it."
+    return "the device differs from its interior, by disorder or by its ends."

@@ -95,7 +95,7 @@ Curve = Harmonics | Pieces
 
 @dataclass(frozen=True, eq=False)
 class BlochFamily:
-    """Centres (k, phi), shape (n, 2), to H - E_F, H_k and H_phi there, shape (n, 3, q, q), in one basis for each centre.
+    """Centres (k, phi), shape (n, 2), to H - E_F, H_k and H_phi there, shape (n, 3, q, q), in one basis a centre.
 
     Attributes
     ----------

@@ -30,7 +30,6 @@ __all__ = ["FoldedDevice", "fold"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
-SAMPLED = (0.0, 0.7390851, 2.3025851, 4.6692016)
 STILL = 1e-13
 OPEN_CHANNEL = 1e-12
 
@@ -114,14 +113,14 @@ def fold(pump: Pump) -> FoldedDevice:
     """
     system = with_modes(pump)
     sample = _Sampler(pump)
-    size = sample(0.0).shape[0]
-    still = _lead_self_energies(pump, system, size)
-    patterns = [sample(phase) for phase in SAMPLED]
-    moves = _moving(patterns)
-    alive, folded = _eliminate(pump.fermi_level, patterns[0], still, moves)
-    total = _pattern([*patterns, *folded.values()], alive)
-    order = _order(total, alive, folded[pump.probe])
-    return _assemble(pump, sample, folded, order, total)
+    structure = _structure(system).tocoo()
+    rows, columns = structure.row.astype(int), structure.col.astype(int)
+    path = follow(lambda phase: np.asarray(sample(phase)[rows, columns]).ravel().astype(complex), pump.cycle)
+    leads = _lead_self_energies(pump, system, structure.shape[0])
+    moves = _moving(path, rows, structure.shape[0])
+    alive, folded = _eliminate(pump.fermi_level, structure.tocsr(), sample(0.0), leads, moves)
+    order = _order(structure.tocsr(), folded, alive, pump.probe)
+    return _assemble(pump, path, rows, columns, folded, order, sample.calls)
 
 
 class _Sampler:
@@ -167,41 +166,59 @@ def _orbital_offsets(system: Any) -> Indices:
     return offsets
 
 
-def _moving(patterns: list[Any]) -> NDArray[np.bool_]:
-    """Orbitals whose row of H changes between samples."""
-    scale = max(float(abs(h).max()) for h in patterns) or 1.0
-    moves = np.zeros(patterns[0].shape[0], dtype=bool)
-    for other in patterns[1:]:
-        change = abs(other - patterns[0]).max(axis=1).toarray().ravel()
-        moves |= change > STILL * scale
+def _structure(system: Any) -> Any:
+    """Places where H may have elements, whatever their values at some phase: every site and every hopping of the system."""
+    from scipy.sparse import coo_matrix
+
+    offsets = _orbital_offsets(system)
+    edges = np.array(list(system.graph), dtype=int).reshape(-1, 2)
+    sites = np.arange(len(offsets) - 1)
+    pairs = np.concatenate([edges, np.stack([sites, sites], axis=1)])
+    count = np.diff(offsets)
+    rows, columns = [], []
+    for i in range(int(count.max(initial=0))):
+        for j in range(int(count.max(initial=0))):
+            fits = (i < count[pairs[:, 0]]) & (j < count[pairs[:, 1]])
+            rows.append(offsets[pairs[fits, 0]] + i)
+            columns.append(offsets[pairs[fits, 1]] + j)
+    places = np.concatenate(rows), np.concatenate(columns)
+    size = int(offsets[-1])
+    return coo_matrix((np.ones(len(places[0])), places), shape=(size, size)).tocsr()
+
+
+def _moving(path: Path, rows: Indices, size: int) -> NDArray[np.bool_]:
+    """Orbitals whose row of H changes along the cycle."""
+    variation, moves = path.variation(), np.zeros(size, dtype=bool)
+    scale = float(np.abs(path.at(0.0)).max(initial=0.0)) or 1.0
+    moves[rows[variation > STILL * scale]] = True
     return moves
 
 
-def _eliminate(energy: float, hamiltonian: Any, leads: dict[int, Any], moves: NDArray[np.bool_]) -> tuple[Indices, dict[int, Any]]:
-    """Fold connected still stretches that touch exactly one lead into that lead's self-energy."""
+def _eliminate(energy: float, structure: Any, hamiltonian: Any, leads: dict[int, Any],
+               moves: NDArray[np.bool_]) -> tuple[Indices, dict[int, Any]]:
+    """Fold the still stretches that touch one lead only into its self-energy, if it touches nothing else.
+
+    Returns the orbitals that are left and the self-energies of all leads.
+    """
     from scipy.sparse.csgraph import connected_components
 
-    _, label = connected_components(abs(hamiltonian) + sum(abs(s) for s in leads.values()), directed=False)
-    touched = np.unique(np.concatenate([label[np.unique(s.nonzero()[0])] for s in leads.values()]))
-    gone = ~np.isin(label, touched)
-    folded = dict(leads)
-    quiet = np.flatnonzero(~moves & ~gone)
-    if moves.any() and quiet.size:
-        pieces, label = connected_components(abs(hamiltonian[quiet][:, quiet]), directed=False)
-        for piece in range(pieces):
-            inside = quiet[label == piece]
-            touching = [n for n, s in leads.items() if s[inside].nnz or s[:, inside].nnz]
-            if len(touching) == 1 and _holds(leads[touching[0]], inside):
-                sigma = _folded(energy, hamiltonian, leads[touching[0]], inside)
-                if sigma is not None:
-                    folded[touching[0]] = sigma
-                    gone[inside] = True
+    folded, gone = dict(leads), np.zeros(len(moves), dtype=bool)
+    quiet = np.flatnonzero(~moves)
+    if not moves.any() or not quiet.size:
+        return np.flatnonzero(~gone), folded
+    _, piece = connected_components(structure[quiet][:, quiet], directed=False)
+    seats = {number: np.unique(sigma.nonzero()[0]) for number, sigma in leads.items()}
+    touching = {number: set(piece[np.isin(quiet, seat)]) for number, seat in seats.items()}
+    for number, seat in seats.items():
+        own = touching[number].difference(*(touching[other] for other in leads if other != number))
+        inside = quiet[np.isin(piece, list(own))]
+        if not np.isin(seat, inside).all():
+            continue
+        sigma = _folded(energy, hamiltonian, leads[number], inside)
+        if sigma is not None:
+            folded[number] = sigma
+            gone[inside] = True
     return np.flatnonzero(~gone), folded
-
-
-def _holds(sigma: Any, inside: Indices) -> bool:
-    """Whether the lead touches nothing outside this stretch."""
-    return bool(np.isin(sigma.nonzero()[0], inside).all())
 
 
 def _folded(energy: float, hamiltonian: Any, sigma: Any, inside: Indices) -> Any:
@@ -224,43 +241,35 @@ def _folded(energy: float, hamiltonian: Any, sigma: Any, inside: Indices) -> Any
     return csr_matrix((small.ravel(), (rows.ravel(), columns.ravel())), shape=hamiltonian.shape)
 
 
-def _pattern(matrices: list[Any], alive: Indices) -> Any:
-    """Boolean union of the patterns on the orbitals that are left."""
-    total = sum(abs(m[alive][:, alive]) for m in matrices)
-    total = total + total.T
-    total.eliminate_zeros()
-    return total.tocsr()
-
-
-def _order(pattern: Any, alive: Indices, probe: Any) -> Indices:
+def _order(structure: Any, leads: dict[int, Any], alive: Indices, probe: int) -> Indices:
     """Order of the orbitals: those connected to the probe, in a narrow band."""
     from scipy.sparse.csgraph import connected_components, reverse_cuthill_mckee
 
+    pattern = sum((abs(s[alive][:, alive]) for s in leads.values()), structure[alive][:, alive])
+    pattern = (pattern + pattern.T).tocsr()
     _, label = connected_components(pattern, directed=False)
-    start = np.flatnonzero(np.isin(alive, np.unique(probe.nonzero()[0])))
+    start = np.flatnonzero(np.isin(alive, np.unique(leads[probe].nonzero()[0])))
     kept = np.flatnonzero(np.isin(label, label[start]))
     order = reverse_cuthill_mckee(pattern[kept][:, kept].tocsr(), symmetric_mode=True)
     return np.asarray(alive[kept[order]], dtype=int)
 
 
-def _assemble(pump: Pump, sample: _Sampler, leads: dict[int, Any], order: Indices, pattern: Any) -> FoldedDevice:
-    union = sum(abs(sample(phase)[order][:, order]) for phase in SAMPLED).tocoo()
-    rows, columns = union.row.astype(int), union.col.astype(int)
+def _assemble(pump: Pump, path: Path, rows: Indices, columns: Indices, leads: dict[int, Any], order: Indices,
+              samples: int) -> FoldedDevice:
+    size, place = len(order), np.full(leads[pump.probe].shape[0], -1)
+    place[order] = np.arange(size)
+    kept = np.flatnonzero((place[rows] >= 0) & (place[columns] >= 0))
+    rows, columns = place[rows[kept]], place[columns[kept]]
     sigma = {number: matrix[order][:, order].tocoo() for number, matrix in leads.items()}
     places = [(rows, columns), *((s.row.astype(int), s.col.astype(int)) for s in sigma.values())]
     half = max(int(np.abs(r - c).max(initial=0)) for r, c in places)
-    size = len(order)
-
-    def entries(phase: float) -> Complex:
-        return np.asarray(sample(phase)[order[rows], order[columns]]).ravel().astype(complex)
-
     still = pack(np.arange(size), np.arange(size), np.full(size, pump.fermi_level, dtype=complex), size, half)
     for matrix in sigma.values():
         still -= pack(matrix.row, matrix.col, matrix.data, size, half)
     probe = _broadening([sigma[pump.probe]], size)
     drain = _broadening([s for number, s in sigma.items() if number != pump.probe], size)
-    path = follow(entries, pump.cycle)
-    return FoldedDevice(size, half, rows, columns, path, still, probe, drain, _distance(places, probe, size), sample.calls)
+    distance = _distance(places, probe, size)
+    return FoldedDevice(size, half, rows, columns, path.only(kept), still, probe, drain, distance, samples)
 
 
 def _broadening(sigmas: list[Any], size: int) -> Complex:

@@ -7,6 +7,7 @@ the fit has not seen.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -14,9 +15,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Harmonics", "fit"]
+__all__ = ["HIGHEST", "Harmonics", "fit"]
 
-CHECKS = (0.7390851, 2.3025851, 4.6692016)
+CHECKS = tuple(2 * math.pi * ((i + 0.5) * 0.6180339887498949 % 1) for i in range(7))  # far from any even spacing
 TOLERANCE = 1e-11
 HIGHEST = 16
 

@@ -4,28 +4,33 @@ What is known about H(phi) decides how much of a proof is exact:
 
 * ``trigonometric``: a few Fourier coefficients, found by sampling and verified at other angles; all bounds are exact.
 * ``straight``: linear in phi between corners of the cycle, verified inside every piece; exact.
-* ``sampled``: neither; rates of change are largest difference quotients on a grid times a safety factor of 2, and everything that rests
-  on them is called estimated.
+* ``sampled``: neither; rates of change are largest difference quotients on a grid times a safety factor of 2, and
+  everything that rests on them is called estimated.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Literal, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.cycle import Cycle
-from scatterpump.solver.harmonics import Harmonics, fit
+from scatterpump.solver.harmonics import HIGHEST, Harmonics, fit
 
-__all__ = ["Path", "SampledPath", "StraightPath", "TrigonometricPath", "follow"]
+__all__ = ["Path", "SampledPath", "Slopes", "StraightPath", "TrigonometricPath", "follow"]
 
 Entries = NDArray[np.complex128]
+Floats = NDArray[np.float64]
+Norm = Callable[[Entries], float]
 Side = Literal[-1, 1]
 TURN = 2 * np.pi
 STRAIGHT_TOLERANCE = 1e-10
+GRID = 192
+FINE = 1024
 
 
 class Path(Protocol):
@@ -36,7 +41,7 @@ class Path(Protocol):
         """Whether bounds built on this path are exact."""
 
     @property
-    def corners(self) -> NDArray[np.float64]:
+    def corners(self) -> Floats:
         """Phases in [0, 2 pi) between which the path is smooth, in order; empty if it is smooth all round."""
 
     def at(self, phase: float) -> Entries:
@@ -45,8 +50,14 @@ class Path(Protocol):
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return the derivative of `order` 1 or 2 at `phase`, from above (+1) or below (-1)."""
 
-    def slopes(self, norm: Callable[[Entries], float]) -> Slopes:
+    def slopes(self, norm: Norm) -> Slopes:
         """Return bounds on |H'|, |H''| and |H'''| in the given matrix norm."""
+
+    def variation(self) -> Floats:
+        """Return a bound on how far each element strays from a fixed value, shape (nnz,)."""
+
+    def only(self, chosen: NDArray[np.int64]) -> Path:
+        """Return the path of the chosen elements alone."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -58,15 +69,16 @@ class Slopes:
     nodes : (c+1,) float array
         0 = first ... last = 2 pi.
     left, right : (c,) float array
-        |H'| at the two ends of each stretch between nodes; in between it is at most the straight line between them plus `excess`.
+        |H'| at the two ends of each stretch between nodes; in between it is at most the straight line between them
+        plus `excess`.
     excess : float
     second, third : float
         Bounds on |H''| and |H'''| between corners.
     """
 
-    nodes: NDArray[np.float64]
-    left: NDArray[np.float64]
-    right: NDArray[np.float64]
+    nodes: Floats
+    left: Floats
+    right: Floats
     excess: float
     second: float
     third: float
@@ -76,19 +88,21 @@ class Slopes:
         """Bound on |H'| over the cycle."""
         return float(max(self.left.max(), self.right.max())) + self.excess
 
-    def length(self, start: float, ends: NDArray[np.float64]) -> NDArray[np.float64]:
-        """Return bounds on the path length of H from `start` to each of `ends` (radians, within a turn of it)."""
+    def length(self, start: float, ends: Floats) -> Floats:
+        """Return bounds on the path length of H from `start` to each of `ends` (radians)."""
         return np.abs(self._from_zero(np.asarray(ends, dtype=float)) - self._from_zero(np.asarray(start)))
 
-    def _from_zero(self, phases: NDArray[np.float64]) -> NDArray[np.float64]:
-        step = np.diff(self.nodes)
-        whole = np.concatenate([[0.0], np.cumsum(step * (self.left + self.right) / 2)])
+    @cached_property
+    def _whole(self) -> Floats:
+        return np.concatenate([[0.0], np.cumsum(np.diff(self.nodes) * (self.left + self.right) / 2)])
+
+    def _from_zero(self, phases: Floats) -> Floats:
         laps, rest = np.divmod(phases, TURN)
-        cell = np.clip(np.searchsorted(self.nodes, rest, side="right") - 1, 0, len(step) - 1)
+        cell = np.clip(np.searchsorted(self.nodes, rest, side="right") - 1, 0, len(self.left) - 1)
         inside = rest - self.nodes[cell]
-        rise = (self.right - self.left)[cell] / step[cell]
-        along = whole[cell] + inside * (self.left[cell] + rise * inside / 2)
-        return np.asarray(laps * whole[-1] + along + self.excess * phases)
+        rise = (self.right - self.left)[cell] / np.diff(self.nodes)[cell]
+        along = self._whole[cell] + inside * (self.left[cell] + rise * inside / 2)
+        return np.asarray(laps * self._whole[-1] + along + self.excess * phases)
 
 
 @dataclass(frozen=True, eq=False)
@@ -97,7 +111,7 @@ class TrigonometricPath:
 
     harmonics: Harmonics
     exact: bool = True
-    corners: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
+    corners: Floats = field(default_factory=lambda: np.empty(0))
 
     def at(self, phase: float) -> Entries:
         """Return H at `phase`."""
@@ -105,17 +119,19 @@ class TrigonometricPath:
 
     def derivative(self, phase: float, side: Side = 1, order: int = 1) -> Entries:
         """Return the derivative of `order` at `phase`."""
-        found = self.harmonics
-        for _ in range(order):
-            found = found.derivative()
-        return found.at(phase)
+        return self._derivatives[order - 1].at(phase)
 
-    def slopes(self, norm: Callable[[Entries], float]) -> Slopes:
+    @cached_property
+    def _derivatives(self) -> tuple[Harmonics, Harmonics]:
+        first = self.harmonics.derivative()
+        return first, first.derivative()
+
+    def slopes(self, norm: Norm) -> Slopes:
         """Bound the derivatives from a grid.
 
-        For a unit vector x, x^+ H' x is a trigonometric polynomial, so between grid points of distance h it stays within h^2/8 sup|H'''| of
-        the straight line; and sup <= (largest on N equidistant points) / cos(pi K / N) for degree K (H. Ehlich, K. Zeller,
-        Math. Z. 86, 41 (1964), citation from memory).
+        For a unit vector x, x^+ H' x is a trigonometric polynomial, so between grid points of distance h it stays
+        within h^2/8 sup|H'''| of the straight line; and sup <= (largest on N equidistant points) / cos(pi K / N) for
+        degree K (H. Ehlich, K. Zeller, Math. Z. 86, 41 (1964), citation from memory).
         """
         degree = max(1, self.harmonics.degree)
         count = 32 * degree
@@ -123,8 +139,7 @@ class TrigonometricPath:
         if degree == 1:  # H'(phi + pi) = -H'(phi): half a turn says all
             half = [norm(self.derivative(p)) for p in nodes[: count // 2]]
             values = np.array([*half, *half, half[0]])
-            largest = float(values.max()) / np.cos(np.pi / count)
-            second = third = largest
+            second = third = float(values.max()) / np.cos(np.pi / count)
         else:
             values = np.array([norm(self.derivative(p)) for p in nodes[:-1]])
             values = np.append(values, values[0])
@@ -133,13 +148,22 @@ class TrigonometricPath:
             third = degree * second  # Bernstein's inequality
         return Slopes(nodes, values[:-1], values[1:], (TURN / count) ** 2 / 8 * third, second, third)
 
+    def variation(self) -> Floats:
+        """Return the sum of the moduli of all harmonics but the constant one."""
+        size = np.abs(self.harmonics.coefficients)
+        return np.asarray(size.sum(axis=0) - size[self.harmonics.degree])
+
+    def only(self, chosen: NDArray[np.int64]) -> TrigonometricPath:
+        """Return the path of the chosen elements alone."""
+        return TrigonometricPath(Harmonics(self.harmonics.coefficients[:, chosen]))
+
 
 @dataclass(frozen=True, eq=False)
 class StraightPath:
     """H as straight lines between the corners of the cycle."""
 
-    corners: NDArray[np.float64]
-    points: NDArray[np.complex128]
+    corners: Floats
+    points: Entries
     exact: bool = True
 
     def at(self, phase: float) -> Entries:
@@ -152,13 +176,21 @@ class StraightPath:
         piece, _ = self._piece(phase, side)
         return self._slope(piece) if order == 1 else np.zeros_like(self.points[0])
 
-    def slopes(self, norm: Callable[[Entries], float]) -> Slopes:
+    def slopes(self, norm: Norm) -> Slopes:
         """Return the exact norms of the slopes of all pieces."""
         rates = np.array([norm(self._slope(piece)) for piece in range(len(self.corners))])
         starts = self.corners
         if starts[0] > 0:
             starts, rates = np.concatenate([[0.0], starts]), np.concatenate([rates[-1:], rates])
         return Slopes(np.append(starts, TURN), rates, rates, 0.0, 0.0, 0.0)
+
+    def variation(self) -> Floats:
+        """Return the largest distance of a corner's value from the first one's."""
+        return np.asarray(np.abs(self.points - self.points[0]).max(axis=0))
+
+    def only(self, chosen: NDArray[np.int64]) -> StraightPath:
+        """Return the path of the chosen elements alone."""
+        return StraightPath(self.corners, self.points[:, chosen])
 
     def _piece(self, phase: float, side: Side) -> tuple[int, float]:
         place = phase % TURN
@@ -173,49 +205,99 @@ class StraightPath:
 
 @dataclass(frozen=True, eq=False)
 class SampledPath:
-    """H as a function to be asked, its derivatives by differences."""
+    """H as a function to be asked, its derivatives by differences between `nodes`."""
 
     sample: Callable[[float], Entries]
-    corners: NDArray[np.float64]
+    corners: Floats
+    nodes: Floats
     exact: bool = False
 
     STEP = 1e-4
     SAFETY = 2.0
-    GRID = 256
 
     def at(self, phase: float) -> Entries:
         """Return H at `phase`."""
         return self.sample(phase)
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
-        """Return a one-sided difference quotient of second order (first derivative) or first order (second derivative)."""
+        """Return a one-sided difference quotient."""
         here, near, far = (self.sample(phase + side * self.STEP * k) for k in range(3))
         if order == 1:
             return side * (4 * near - far - 3 * here) / (2 * self.STEP)
         return (here - 2 * near + far) / self.STEP**2
 
-    def slopes(self, norm: Callable[[Entries], float]) -> Slopes:
-        """Estimate the bounds from difference quotients on a grid that includes the corners."""
-        nodes = np.unique(np.concatenate([np.linspace(0.0, TURN, self.GRID + 1), self.corners]))
-        values = [self.sample(float(node)) for node in nodes]
-        first = [(b - a) / h for a, b, h in zip(values, values[1:], np.diff(nodes), strict=False)]
-        second = [(b - a) / h for a, b, h in zip(first, first[1:], np.diff(nodes), strict=False)]
-        third = [(b - a) / h for a, b, h in zip(second, second[1:], np.diff(nodes), strict=False)]
+    def slopes(self, norm: Norm) -> Slopes:
+        """Estimate the bounds from difference quotients between the nodes."""
+        steps = np.diff(self.nodes)
+        first, second, third = (_quotients(self._values, steps, order) for order in (1, 2, 3))
         rates = self.SAFETY * np.array([norm(value) for value in first])
         curved, twisted = (self.SAFETY * max(norm(v) for v in values) for values in (second, third))
-        return Slopes(nodes, rates, rates, 0.0, curved, twisted)
+        return Slopes(self.nodes, rates, rates, 0.0, curved, twisted)
+
+    def variation(self) -> Floats:
+        """Return the largest distance of a node's value from the first one's."""
+        return np.asarray(np.abs(self._values - self._values[0]).max(axis=0))
+
+    def only(self, chosen: NDArray[np.int64]) -> SampledPath:
+        """Return the path of the chosen elements alone."""
+        return SampledPath(lambda phase: self.sample(phase)[chosen], self.corners, self.nodes)
+
+    @cached_property
+    def _values(self) -> Entries:
+        return np.array([self.sample(float(node)) for node in self.nodes])
+
+
+def _quotients(values: Entries, steps: Floats, order: int) -> Entries:
+    """Difference quotients of `order`, for steps that change slowly."""
+    for _ in range(order):
+        values = np.diff(values, axis=0) / steps[: len(values) - 1, None]
+    return values
 
 
 def follow(sample: Callable[[float], Entries], cycle: Cycle) -> Path:
     """Find out what kind of path H takes along `cycle`, from samples of its matrix elements."""
     corners = np.array(cycle.corners)
     if cycle.straight and corners.size:
-        points = np.array([sample(float(corner)) for corner in corners])
-        straight = StraightPath(corners, points)
-        scale = max(1e-300, float(np.abs(points).max(initial=0.0)))
-        inside = corners + 0.37 * np.diff(np.append(corners, corners[0] + TURN))
-        if all(np.abs(straight.at(p) - sample(p)).max(initial=0.0) <= STRAIGHT_TOLERANCE * scale for p in inside.tolist()):
+        straight = StraightPath(corners, np.array([sample(float(corner)) for corner in corners]))
+        if _is_straight(straight, sample):
             return straight
-        return SampledPath(sample, corners)
-    harmonics = None if corners.size else fit(sample)
-    return SampledPath(sample, corners) if harmonics is None else TrigonometricPath(harmonics)
+    elif not corners.size and _plain(cycle) and (harmonics := fit(sample)) is not None:
+        return TrigonometricPath(harmonics)
+    return SampledPath(sample, corners, _nodes(cycle, corners))
+
+
+def _is_straight(path: StraightPath, sample: Callable[[float], Entries]) -> bool:
+    scale = max(1e-300, float(np.abs(path.points).max(initial=0.0)))
+    inside = path.corners + 0.37 * np.diff(np.append(path.corners, path.corners[0] + TURN))
+    misses = (np.abs(path.at(p) - sample(p)).max(initial=0.0) for p in inside.tolist())
+    return all(miss <= STRAIGHT_TOLERANCE * scale for miss in misses)
+
+
+def _parameters(cycle: Cycle) -> Floats:
+    """Numbers among the parameters of a cycle at many even phases, shape (FINE + 1, parameters)."""
+    rows = [cycle.at(float(phase)) for phase in np.linspace(0.0, TURN, FINE + 1)]
+    numbers = [name for name, value in rows[0].items() if isinstance(value, int | float | np.number)]
+    return np.array([[float(row[name]) for name in numbers] for row in rows]).reshape(FINE + 1, len(numbers))
+
+
+def _plain(cycle: Cycle) -> bool:
+    """Whether every number among the parameters is a trigonometric polynomial, or in step with phi, at many phases.
+
+    A Hamiltonian is sampled at few phases; a pulse in the parameters between them must not be missed.
+    """
+    values = _parameters(cycle)
+    steady = values - np.linspace(0.0, 1.0, FINE + 1)[:, None] * (values[-1] - values[0])
+    size = np.abs(np.fft.rfft(steady[:-1], axis=0)) / FINE
+    return bool((size[HIGHEST + 1 :] <= 1e-10 * np.maximum(1.0, np.abs(values).max(axis=0))).all())
+
+
+def _nodes(cycle: Cycle, corners: Floats) -> Floats:
+    """Phases at which to sample a path: even ones, the corners, and more where the parameters move fast."""
+    values = _parameters(cycle)
+    moved = np.abs(np.diff(values, axis=0)) / np.maximum(np.ptp(values, axis=0), 1e-300)
+    length = np.concatenate([[0.0], np.cumsum(moved.sum(axis=1))])
+    even = np.linspace(0.0, TURN, GRID + 1)
+    fast = np.interp(np.linspace(0.0, length[-1], GRID + 1), length, np.linspace(0.0, TURN, FINE + 1))
+    every = np.unique(np.concatenate([even, fast, corners]))
+    apart = np.concatenate([[True], np.diff(every) > TURN / (16 * FINE)])
+    return np.append(every[apart & (every < TURN * (1 - 1e-4))], TURN)

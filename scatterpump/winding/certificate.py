@@ -33,7 +33,7 @@ from scatterpump.winding.look import ROUNDING, Look
 from scatterpump.winding.reference import Contact, Reference, survey
 from scatterpump.winding.result import Leak, Winding
 
-__all__ = ["certify", "certify_device"]
+__all__ = ["behind_good_contact", "certify", "certify_device"]
 
 TURN = 2 * np.pi
 START = 5
@@ -79,6 +79,18 @@ def certify(pump: Pump, *, budget: int = 400, progress: Progress | None = None) 
 
     with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
         return certify_device(fold(pump), budget=budget, progress=progress)
+
+
+def behind_good_contact(pump: Pump) -> int | None:
+    """Return the winding that the same device would have behind a good contact, or None if it cannot be proven.
+
+    Where it differs from the winding at the actual contact, more leaks through the device than that contact lets through.
+    """
+    device = fold(pump)
+    good, _ = device.with_broadening(GOOD_CONTACT * _scale(device))
+    slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
+    cover = _cover(good, slopes, budget=200, progress=None)
+    return round(sum(join(list(cover.centres))) / TURN) if cover.closed else None
 
 
 def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progress | None = None) -> Winding:
@@ -146,7 +158,7 @@ def _cover(device: FoldedDevice, slopes: Slopes, budget: int, progress: Progress
             return _Cover(tuple(centres), looks, "a level there is too narrow for double precision")
         places = [place for gap in gaps for place in gap.places]
         if looks + len(places) > budget:
-            return _Cover(tuple(centres), looks, f"the budget of {budget} looks is spent")
+            return _Cover(tuple(centres), looks, f"the budget of {budget} looks is spent; a larger one, or a wider gap, may close the proof")
         if len({c.phase for c in centres} | {p % TURN for p in places}) < len(centres) + len(places):
             return _Cover(tuple(centres), looks, "phases can no longer be told apart in double precision")
 
@@ -162,7 +174,7 @@ def _refuse_singular(cover: _Cover) -> None:
 def _proven(device: FoldedDevice, cover: _Cover, seen: Reference, looks: int, contact: Contact | None = None) -> Winding:
     """Read the number off a closed cover; `contact` tells that it was made behind a better one."""
     centres = list(cover.centres)
-    turns = sum(join(centres)) / TURN
+    turns = sum(join(centres)) / TURN + 0.0
     number = round(turns)
     if abs(turns - number) > WHOLE:
         return _refused(device, cover, seen, looks, f"the parts of the proof add up to {turns:.6f} turns, which is no integer")
@@ -195,7 +207,8 @@ def _at_open_reference(device: FoldedDevice, good: FoldedDevice, contact: Contac
     looks = here.looks + (seen.needed or seen.evaluations)
     if not seen.same_winding:
         return _refused(device, here, seen, looks, f"{here.reason}, and what leaks behind a good contact is not proven to be less than "
-                        f"the share {contact.transparency:.1e} that the actual one lets through")
+                        f"the share {contact.transparency:.1e} that the actual one lets through; a longer device or a stronger "
+                        "contact may close the proof")
     there = _cover(good, slopes, budget, progress, seen.looks)
     if not there.closed:
         return _refused(device, there, seen, looks + there.looks, there.reason)

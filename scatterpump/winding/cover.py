@@ -12,6 +12,7 @@ from scatterpump.solver.folded import FoldedDevice
 from scatterpump.solver.path import Side, Slopes
 from scatterpump.winding.look import Look, look
 from scatterpump.winding.radius import RIGHT_ANGLE, Model, Rates, length_limit, split_reach
+from scatterpump.winding.unwrap import turn
 
 __all__ = ["Arm", "Centre", "Gap", "centre", "centre_of", "covering", "join", "neighbours", "open_gaps", "smallest_over"]
 
@@ -172,7 +173,6 @@ def join(centres: list[Centre]) -> list[float]:
         start, stop = end - right.below.reach, left.phase + left.above.reach
         meet = min(max((start + stop) / 2, left.phase), end)
         near, far = meet - left.phase, meet - end
-        change = np.linalg.solve(left.above.model.at(near), right.below.model.at(far))
-        between = float(np.angle(np.linalg.eigvals(change)).sum())
+        between = turn(left.above.model.at(near), right.below.model.at(far))
         steps.append(left.above.model.turned(near) + between - right.below.model.turned(far))
     return steps

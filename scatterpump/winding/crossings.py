@@ -18,12 +18,14 @@ from scatterpump.solver.folded import FoldedDevice
 from scatterpump.winding.cover import Arm, Centre, neighbours
 from scatterpump.winding.reference import Contact
 from scatterpump.winding.result import Crossing
+from scatterpump.winding.unwrap import turn
 
 __all__ = ["find_crossings"]
 
 Complex = NDArray[np.complex128]
 TURN = 2 * np.pi
 FINEST = 4e-16
+SAME = 1e-12
 
 
 def find_crossings(device: FoldedDevice, centres: list[Centre], contact: Contact | None = None) -> tuple[Crossing, ...]:
@@ -71,8 +73,7 @@ class _Counter:
 
 def _turn(arm: Arm, s: float, here: Complex) -> float:
     """Exact turn of det r from a look to where r is `here`, at distance s within its reach."""
-    ahead = np.linalg.solve(arm.model.at(s), here)
-    return arm.model.turned(s) + float(np.angle(np.linalg.eigvals(ahead)).sum())
+    return arm.model.turned(s) + turn(arm.model.at(s), here)
 
 
 def _angles(reflection: Complex) -> NDArray[np.float64]:
@@ -99,7 +100,8 @@ def _located(count: Callable[[float], int], low: float, at_low: int, high: float
 
 def _described(device: FoldedDevice, phase: float, number: int, contact: Contact | None) -> Crossing:
     rate = _rate(device, phase, contact)
-    return Crossing(phase % TURN, int(np.sign(number)), 2 / rate if rate > 0 else np.inf)
+    place = phase % TURN
+    return Crossing(0.0 if TURN - place < SAME else place, int(np.sign(number)), 2 / rate if rate > 0 else np.inf)
 
 
 def _rate(device: FoldedDevice, phase: float, contact: Contact | None) -> float:

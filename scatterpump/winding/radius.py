@@ -30,6 +30,7 @@ __all__ = ["RIGHT_ANGLE", "Model", "Rates", "length_limit", "split_reach"]
 Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 RIGHT_ANGLE = np.pi / 2 * (1 - 1e-6)
+STEP = 1.1
 
 
 def length_limit(seen: Look) -> float:
@@ -148,7 +149,7 @@ def _pieces(model: Model, side: int, limit: float) -> Floats:
     for pole in poles:
         centre, width = side * pole.real, max(abs(pole.imag), 1e-16)
         if np.isfinite(centre) and width < limit:
-            grown = width * 1.15 ** np.arange(-8.0, np.log(4 * limit / width) / np.log(1.15))
+            grown = width * STEP ** np.arange(-18.0, np.log(4 * limit / width) / np.log(STEP))
             marks += [centre + grown, centre - grown, np.array([centre])]
     every = np.unique(np.concatenate(marks))
     return every[(every > 0) & (every <= limit)]
@@ -169,29 +170,57 @@ def _floors(split: Split, rates: Rates, model: Model, length: Callable[[Floats],
     background = split.left * split.right * x * th
     change_in, change_out = split.left * into * th, split.right * out * th
     q_rest = rates.curved * ends**2 / 2 + rates.third * ends**3 / 6 + into * out * th / rest + noise
-    q = _nearest(model.sigma, side * model.core, starts, ends)
+    q, x_over_q, y_over_q = _over_pieces(model.sigma, side * model.core, model.into, model.out, starts, ends)
     known = inside & (q > q_rest * (1 + 1e-9))
-    gap = np.where(known, q - q_rest, 1.0)
-    q = np.where(known, q, 1.0)
-    x_norm, y_norm = _norm(model.into), _norm(model.out)
-    error = (background + x_norm * y_norm * q_rest / (q * gap)
-             + (change_in * y_norm + x_norm * change_out + change_in * change_out) / gap)
+    room = np.where(known, 1 - q_rest / np.where(known, q, 1.0), 1.0)
+    error = (background + x_over_q * y_over_q * q_rest / room
+             + (change_in * y_over_q + x_over_q * change_out + change_in * change_out / np.where(known, q, 1.0)) / room)
+    least = np.maximum(_by_zeros(model, side, starts, ends), _by_middles(model, side, starts, ends, x_over_q * y_over_q))
+    return np.where(known & (error < least * (1 - 1e-6)), least - error, 0.0)
+
+
+def _by_zeros(model: Model, side: int, starts: Floats, ends: Floats) -> Floats:
+    """Lower bound on sigma_min(r_m) over each piece, by Woodbury's formula for r_m^-1."""
     inverse = np.linalg.inv(model.far)
-    zeros = _nearest(model.zeros_part, side * model.core, starts, ends)
-    seen = zeros > 0
-    bound = _norm(inverse) + _norm(inverse @ model.into) * _norm(model.out @ inverse) / np.where(seen, zeros, 1.0)
-    return np.where(known & seen & (error * bound < 1 - 1e-6), 1 / bound - error, 0.0)
+    z, x_over_z, _ = _over_pieces(model.zeros_part, side * model.core, inverse @ model.into, model.out, starts, ends)
+    bound = _norm(inverse) + np.where(z > 0, x_over_z, 0.0) * _norm(model.out @ inverse)
+    return np.where(z > 0, 1 / bound, 0.0)
 
 
-def _nearest(constant: Complex, slope: Complex, starts: Floats, ends: Floats) -> Floats:
-    """Lower bound on the smallest singular value of constant - t slope over each piece t in [start, end]."""
+def _by_middles(model: Model, side: int, starts: Floats, ends: Floats, square: Floats) -> Floats:
+    """The same, by r_m in the middle of each piece; `square` bounds |X q^-1| |q^-1 Y|, and with |K| the slope of r_m."""
+    middles = side * (starts + ends) / 2
+    q = model.sigma - middles[:, None, None] * model.core
+    singular = np.abs(np.linalg.det(q)) == 0
+    q[singular] = np.eye(len(model.sigma))
+    values = model.far + 1j * model.into @ np.linalg.solve(q, np.broadcast_to(model.out, (len(q), *model.out.shape)))
+    least = np.linalg.svd(values, compute_uv=False)[:, -1] - (ends - starts) / 2 * _norm(model.core) * square
+    return np.where(singular, 0.0, least)
+
+
+def _over_pieces(constant: Complex, slope: Complex, left: Complex, right: Complex, starts: Floats,
+                 ends: Floats) -> tuple[Floats, Floats, Floats]:
+    """Bounds that hold over each piece t in [start, end], for q = constant - t slope.
+
+    Returns a lower bound on the smallest singular value of q, and upper bounds on |left q^-1| and |q^-1 right|.  For one split
+    level q is a number and the nearest point of a straight line to 0 is known; else q^-1 is expanded around the middle of the piece.
+    """
     if len(constant) == 1:
         a, k = complex(constant[0, 0]), complex(slope[0, 0])
         best = (a * np.conj(k)).real / max(abs(k) ** 2, 1e-300)
-        return np.asarray(np.abs(a - np.clip(best, starts, ends) * k))
+        q = np.abs(a - np.clip(best, starts, ends) * k)
+        safe = np.maximum(q, 1e-300)
+        return q, _norm(left) / safe, _norm(right) / safe
     middles, reach = (starts + ends) / 2, (ends - starts) / 2
     stack = constant - middles[:, None, None] * slope
-    return np.linalg.svd(stack, compute_uv=False)[:, -1] - reach * _norm(slope)
+    q = np.linalg.svd(stack, compute_uv=False)[:, -1] - reach * _norm(slope)
+    inverse = np.linalg.inv(np.where((q > 0)[:, None, None], stack, np.eye(len(constant))))
+    room = np.maximum(1 - reach * np.maximum(_norms(slope @ inverse), _norms(inverse @ slope)), 1e-300)
+    return q, _norms(left @ inverse) / room, _norms(inverse @ right) / room
+
+
+def _norms(stack: Complex) -> Floats:
+    return np.asarray(np.linalg.norm(stack, ord=2, axis=(-2, -1)), dtype=float)
 
 
 def _norm(matrix: NDArray[Any]) -> float:

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Steps", "steps"]
+__all__ = ["Steps", "steps", "turn"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -34,6 +34,11 @@ class Steps:
     def turns(self) -> float:
         """Sum of all steps in full turns."""
         return float(self.turned.sum() / (2 * np.pi))
+
+
+def turn(before: NDArray[np.complex128], after: NDArray[np.complex128]) -> float:
+    """Return by how much det r turns from `before` to `after`, (m, m) each, in radians: the sum of eigenphases."""
+    return float(np.angle(np.linalg.eigvals(np.linalg.solve(before, after))).sum())
 
 
 def steps(reflection: NDArray[np.complex128]) -> Steps:
