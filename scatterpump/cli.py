@@ -54,9 +54,8 @@ def verdict(device: Path, json_file: str | None, changes: tuple[str, ...]) -> No
     from scatterpump.device_file import load_device
     from scatterpump.verdict import judge
 
-    pump = load_device(device, changes).pump()
-    with _progress("covering the cycle") as progress:
-        result = judge(pump, progress=progress)
+    with _named(device), _progress("covering the cycle") as progress:
+        result = judge(load_device(device, changes).pump(), progress=progress)
     if json_file == "-":
         click.echo(result.to_json())
     else:
@@ -87,6 +86,18 @@ def example(name: str | None) -> None:
     for item in wanted:
         _write(Path(item.name), item.read_text(encoding="utf-8"))
         click.echo(item.name)
+
+
+@contextmanager
+def _named(device: Path) -> Iterator[None]:
+    """Say which device file an error belongs to, if it does not say so itself."""
+    try:
+        yield
+    except InputError as error:
+        where = error.where if error.where.startswith((str(device), "--set")) else f"{device}: {error.where}".rstrip(": ")
+        raise InputError(error.problem, allowed=error.allowed, where=where) from error
+    except PumpError as error:
+        raise InputError(str(error), where=str(device)) from error
 
 
 def _write(path: Path, text: str) -> None:

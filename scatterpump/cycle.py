@@ -10,6 +10,7 @@ from __future__ import annotations
 import csv
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from keyword import iskeyword
 from math import cos, floor, isfinite, pi, sin
 from pathlib import Path
 from typing import Any, Literal
@@ -18,10 +19,16 @@ import numpy as np
 
 from scatterpump.errors import InputError
 
-__all__ = ["Cycle"]
+__all__ = ["NAMES", "Cycle", "is_name"]
 
 TURN = 2 * pi
+NAMES = "names of letters, digits and underscores, no word of Python"
 Parameters = dict[str, Any]
+
+
+def is_name(text: str) -> bool:
+    """Tell whether `text` can name a parameter of a Hamiltonian, as `NAMES` says."""
+    return text.isidentifier() and not iskeyword(text)
 
 
 @dataclass(frozen=True)
@@ -126,13 +133,15 @@ class Cycle:
 
     def repeated(self, times: int) -> Cycle:
         """Return the path run `times` times (a whole number of at least 1) while phi goes round once."""
-        if times < 1:
+        if times < 1 or times != int(times):
             raise InputError(f"a cycle cannot be repeated {times} times", allowed="a whole number of at least 1")
         corners = ((c + TURN * lap) / times for c in self.corners for lap in range(times))
         return replace(self, function=lambda phase: self.function(times * phase), corners=_sorted_corners(corners))
 
     def started_at(self, start: float) -> Cycle:
         """Return the same path begun at the phase `start` (radians)."""
+        if not isfinite(start):
+            raise InputError(f"start is {start}", allowed="a finite angle in radians")
         corners = _sorted_corners(c - start for c in self.corners)
         return replace(self, function=lambda phase: self.function(phase + start), corners=corners)
 
@@ -153,24 +162,34 @@ def _columns(table: str | Path | Mapping[str, Sequence[float]]) -> tuple[dict[st
             allowed="a readable CSV file, its path taken from the device file's folder",
             where=str(path),
         ) from error
-    rows = list(csv.DictReader(line for line in text.splitlines() if line.strip() and not line.startswith("#")))
-    names = [name.strip() for name in rows[0]] if rows and all(isinstance(n, str) for n in rows[0]) else []
-    columns: dict[str, list[float]] = {name: [] for name in names}
+    lines = [line for line in text.splitlines() if line.strip() and not line.startswith("#")]
+    try:
+        header, *rows = csv.reader(lines) if lines else [[]]
+    except csv.Error as error:
+        raise InputError(f"row 1 or a later one is no CSV ({error})", allowed="numbers with commas between",
+                         where=str(path)) from error
+    names = [name.strip() for name in header]
+    if len(set(names)) < len(names) or "" in names:
+        raise InputError(f"the columns are named {', '.join(map(repr, names))}", where=str(path),
+                         allowed="a different name for every column")
+    for name in names:
+        if not is_name(name):
+            raise InputError(f"the column {name!r} names no parameter", allowed=NAMES, where=str(path))
     for number, row in enumerate(rows, 1):
-        values = list(row.values())
-        for name, value in zip(names, values, strict=False):
-            columns[name].append(_number(value, f"{path}: row {number}, column {name!r}"))
-        if len(values) != len(names):
+        if len(row) > len(names):
             raise InputError("the row has more values than the header", allowed="one a column",
                              where=f"{path}: row {number}")
-    return columns, str(path)
+    return {
+        name: [_number(row[i] if i < len(row) else "", f"{path}: row {number}, column {name!r}")
+               for number, row in enumerate(rows, 1)] for i, name in enumerate(names)
+    }, str(path)
 
 
-def _number(text: Any, where: str) -> float:
+def _number(text: str, where: str) -> float:
     try:
         return float(text)
-    except (TypeError, ValueError):
-        shown = "nothing" if text in (None, "") else repr(text)
+    except ValueError:
+        shown = repr(text[:30]) if text.strip() else "nothing"
         raise InputError(f"{shown} stands where a number should", allowed="a decimal number", where=where) from None
 
 

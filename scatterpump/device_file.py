@@ -45,7 +45,7 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
         reason = getattr(error, "strerror", None) or "it is not UTF-8 text"
         raise InputError(f"the device file cannot be read: {reason}", allowed="a readable TOML file; "
                          "'scatterpump example' lists devices to start from", where=str(path)) from error
-    except tomllib.TOMLDecodeError as error:
+    except ValueError as error:  # invalid TOML, or a number of thousands of digits
         raise InputError(f"the file is not valid TOML: {error}", allowed="TOML 1.0", where=str(path)) from error
     for change in changes:
         _apply(content, change)
@@ -81,22 +81,32 @@ def _first_mistake(error: Any, source: str) -> InputError:
     if isinstance(cause, InputError):
         where = ": ".join(part for part in (source, keys, cause.where) if part)
         return InputError(cause.problem + rest, allowed=cause.allowed, where=where)
-    problem, allowed = _WORDS.get(first["type"], ("{input!r} does not fit", first["msg"]))
-    return InputError(problem.format(input=first["input"]) + rest, allowed=allowed,
+    otherwise = first["msg"].removeprefix("Input should be ").removeprefix("Value should be ")
+    problem, allowed = _WORDS.get(first["type"], ("{input} does not fit", otherwise))
+    return InputError(problem.format(input=_shown(first["input"])) + rest, allowed=allowed,
                       where=": ".join(part for part in (source, keys) if part))
 
 
+def _shown(value: Any) -> str:
+    text = repr(value)
+    return text if len(text) <= LONGEST_SHOWN else text[:LONGEST_SHOWN] + "..."
+
+
+LONGEST_SHOWN = 40
 _UNION_TAGS = {"Lead", "float", "str", "literal['wall']"}
 _WORDS = {
     "unexpected_keyword_argument": ("this key is unknown", "the keys of the description; 'scatterpump example' shows them"),
     "extra_forbidden": ("this key is unknown", "the keys of the description; 'scatterpump example' shows them"),
     "missing": ("this key is missing", "a value for it"),
-    "int_type": ("{input!r} is no whole number", "a whole number"),
-    "int_from_float": ("{input!r} is no whole number", "a whole number"),
-    "float_type": ("{input!r} is no number", "a number"),
-    "string_type": ("{input!r} is no text", "text in quotes"),
-    "dataclass_type": ("{input!r} is no table", "a table of keys and values"),
-    "tuple_type": ("{input!r} is no list", "a list"),
+    "missing_argument": ("this key is missing", "a value for it"),
+    "missing_keyword_only_argument": ("this key is missing", "a value for it"),
+    "int_parsing_size": ("{input} is too large", "a whole number of a reasonable size"),
+    "int_type": ("{input} is no whole number", "a whole number"),
+    "int_from_float": ("{input} is no whole number", "a whole number"),
+    "float_type": ("{input} is no number", "a number"),
+    "string_type": ("{input} is no text", "text in quotes"),
+    "dataclass_type": ("{input} is no table", "a table of keys and values"),
+    "tuple_type": ("{input} is no list", "a list"),
 }
 
 
@@ -153,7 +163,7 @@ def _apply(content: dict[str, Any], change: str) -> None:
 
 
 def _item(place: Any, part: str, key: str) -> Any:
-    if not isinstance(place, list) or not part.isdigit() or int(part) >= len(place):
+    if not isinstance(place, list) or not (part.isascii() and part.isdigit()) or int(part) >= len(place):
         size = f"0 to {len(place) - 1}" if isinstance(place, list) else "a key of a table"
         raise InputError(f"there is no {part!r} in {key!r}", allowed=size, where="--set")
     return place[int(part)]

@@ -28,7 +28,7 @@ class InputError(PumpError, ValueError):
     def __init__(self, problem: str, *, allowed: str = "", where: str = "") -> None:
         self.problem, self.allowed, self.where = problem, allowed, where
         text = f"{where}: {problem}" if where else problem
-        super().__init__(f"{text}; allowed: {allowed}" if allowed else text)
+        super().__init__(" ".join((f"{text}; allowed: {allowed}" if allowed else text).split()))
 
 
 class ClosedGapError(PumpError):

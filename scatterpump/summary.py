@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from math import isfinite
 from textwrap import wrap
 from typing import TYPE_CHECKING
 
@@ -31,12 +32,16 @@ def summarise(verdict: Verdict) -> str:
     if verdict.gap is not None:
         lines += _gap(verdict.gap)
     if verdict.chern is not None:
-        lines += _row("Chern number", f"{verdict.chern:+d} of the filled bands")
+        lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
     for finding in verdict.audit.cautions:
         lines += _finding(finding)
     passed = sum(finding.status == "pass" for finding in verdict.audit.findings)
     lines += _row("checks", f"{passed} passed, {len(verdict.audit.cautions)} cautions, {len(verdict.audit.alarms)} alarms")
     return "\n".join(lines)
+
+
+def _signed(number: int) -> str:
+    return f"{number:+d}" if number else "0"
 
 
 def _row(label: str, text: str) -> list[str]:
@@ -56,8 +61,8 @@ def _integer(verdict: Verdict) -> list[str]:
     if winding.number is None:
         return _row("charges a cycle", f"not proven (det r seems to wind {winding.turns:+.3g} times)")
     if not verdict.trustworthy:
-        return _row("charges a cycle", f"not to be trusted (det r winds {winding.number:+d} times)")
-    return _row("charges a cycle", f"{winding.number:+d} from probe to drain")
+        return _row("charges a cycle", f"not to be trusted (det r winds {_signed(winding.number)} times)")
+    return _row("charges a cycle", f"{_signed(winding.number)} from probe to drain")
 
 
 def _winding(winding: Winding) -> list[str]:
@@ -86,9 +91,13 @@ def _gap(gap: BulkGap) -> list[str]:
     if not gap.is_open:
         return _row("bulk gap", f"closed or below {gap.distance_upper:.1e} at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}")
     kind = "proven" if gap.exact else "estimated"
+    low, high = gap.lower_edge.upper, gap.upper_edge.lower
+    window = f"{low:.5g} to {high:.5g}" if isfinite(high - low) else f"below {high:.5g}" if isfinite(high) else f"above {low:.5g}"
+    lines = _row("Fermi window", f"{window}, the level is {gap.distance_lower:.4g} away from the nearer edge")
+    if not isfinite(gap.upper):
+        return lines
     return [
         *_row("bulk gap", f"{gap.lower:.5g} to {gap.upper:.5g} ({kind}), smallest at k = {gap.momentum:.4f}, "
                           f"phi = {gap.phase:.4f}"),
-        *_row("Fermi window", f"{gap.lower_edge.upper:.5g} to {gap.upper_edge.lower:.5g}, the level is "
-                              f"{gap.distance_lower:.4g} away from the nearer edge"),
+        *lines,
     ]

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from math import isfinite
+
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Finding
 from scatterpump.winding.certificate import behind_good_contact
@@ -25,10 +27,11 @@ def fermi_level_in_gap(evidence: Evidence) -> Finding | None:
                        "Move the Fermi level into a gap, or change the cycle so that the gap stays open.", where)
     width = gap.upper_edge.lower - gap.lower_edge.upper
     message = f"The Fermi level stays at least {gap.distance_lower:.4g} away from every bulk band."
-    if gap.distance_lower < THIN * width:
-        return Finding("Fermi level in gap", "caution", gap.distance_lower, THIN * width, "E", message,
+    limit = THIN * width if isfinite(width) else 0.0
+    if gap.distance_lower < limit:
+        return Finding("Fermi level in gap", "caution", gap.distance_lower, limit, "E", message,
                        "Move the Fermi level towards the middle of the window.", where)
-    return Finding("Fermi level in gap", "pass", gap.distance_lower, THIN * min(width, 1e300), "E", message, where=where)
+    return Finding("Fermi level in gap", "pass", gap.distance_lower, limit, "E", message, where=where)
 
 
 def integer_agrees(evidence: Evidence) -> Finding | None:

@@ -23,7 +23,7 @@ from typing import TYPE_CHECKING, Any, ClassVar, Literal
 import numpy as np
 
 from scatterpump.builder.description import Disorder, Lead, Wave, require
-from scatterpump.cycle import Cycle
+from scatterpump.cycle import NAMES, Cycle, is_name
 from scatterpump.pump import Pump
 
 if TYPE_CHECKING:
@@ -79,11 +79,12 @@ class ModulatedChain:
         require(self.sites >= 1, "sites", self.sites, "a whole number of at least 1")
         for name in ("hopping", "level", "fermi_level"):
             require(isfinite(getattr(self, name)), name, getattr(self, name), "a finite energy")
-        have = set(self.cycle.names)
+        have = self.cycle.names
+        for name in have:
+            require(is_name(name), "a parameter of the cycle", name, NAMES)
         for wave in (*self.onsite, *self.bonds):
-            need = ({"phi"} if wave.harmonic else set()) | ({wave.amplitude} & {str(wave.amplitude)})
-            require(need <= have, "cycle", sorted(have),
-                    f"a cycle that sets {', '.join(sorted(map(str, need)))}, which a wave uses")
+            require(wave.needs <= set(have), "cycle", sorted(have),
+                    f"a cycle that sets {' and '.join(sorted(wave.needs))}, which a wave uses")
 
     @property
     def period(self) -> int | None:
@@ -163,7 +164,8 @@ def _noise(width: float, count: int, salt: str) -> np.ndarray[Any, np.dtype[np.f
 
 def _with_parameters(function: Callable[..., Any], places: int, names: Sequence[str]) -> Callable[..., Any]:
     """Give a value function the signature (site(s), *names) that kwant reads parameter names from."""
-    parts = [Parameter(f"site_{i}", Parameter.POSITIONAL_ONLY) for i in range(places)]
+    free = (f"site_{i}" for i in range(places + len(names)) if f"site_{i}" not in names)
+    parts = [Parameter(next(free), Parameter.POSITIONAL_ONLY) for _ in range(places)]
     parts += [Parameter(name, Parameter.POSITIONAL_OR_KEYWORD) for name in names]
     function.__signature__ = Signature(parts)  # type: ignore[attr-defined]  # the protocol inspect.signature reads
     return function

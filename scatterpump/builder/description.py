@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from math import isfinite
 from typing import Any, ClassVar
 
+from scatterpump.cycle import is_name
 from scatterpump.errors import InputError
 
 __all__ = ["Disorder", "Lead", "Wave", "require"]
@@ -55,9 +56,14 @@ class Wave:
     def __post_init__(self) -> None:
         _finite(self, "amplitude", "period", "lag")
         require(self.period > 0, "period", self.period, "a positive number of lattice constants")
-        named = isinstance(self.amplitude, str)
-        require(not named or str(self.amplitude).isidentifier(), "amplitude", self.amplitude,
+        require(not isinstance(self.amplitude, str) or is_name(self.amplitude), "amplitude", self.amplitude,
                 "a number, or the name of a parameter of the cycle")
+
+    @property
+    def needs(self) -> frozenset[str]:
+        """Names of the parameters that the wave takes from the cycle."""
+        named = {self.amplitude} if isinstance(self.amplitude, str) else set()
+        return frozenset(named | {"phi"} if self.harmonic else named)
 
 
 @dataclass(frozen=True)

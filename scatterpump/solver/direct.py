@@ -18,21 +18,23 @@ __all__ = ["scattering_matrix", "solve"]
 def solve(pump: Pump, phases: NDArray[np.float64]) -> ReflectionTrace:
     """Solve the scattering problem at each of `phases` (radians)."""
     system = with_modes(pump)
-    others = [lead for lead in range(len(system.leads)) if lead != pump.probe]
-    blocks = [_solve_one(pump, system, phase, [pump.probe, *others], [pump.probe]) for phase in phases.tolist()]
-    size = blocks[0].shape[1]
-    stack = np.array(blocks)
-    return ReflectionTrace(phases, stack[:, :size], stack[:, size:], len(blocks), "direct")
+    leads = range(len(system.leads))
+    found = [_solve_one(pump, system, phase, list(leads), [pump.probe]) for phase in phases.tolist()]
+    others = [lead for lead in leads if lead != pump.probe]
+    reflection = np.array([matrix.submatrix(pump.probe, pump.probe) for matrix in found])
+    transmission = [np.vstack([matrix.submatrix(lead, pump.probe) for lead in others]) for matrix in found if others]
+    none = np.zeros((len(found), 0, reflection.shape[2]), dtype=complex)
+    return ReflectionTrace(phases, reflection, np.array(transmission) if others else none, len(found), "direct")
 
 
 def scattering_matrix(pump: Pump, phase: float) -> NDArray[np.complex128]:
     """Return the full S at `phase`, all leads in and out in the order of their numbers."""
     system = with_modes(pump)
     leads = list(range(len(system.leads)))
-    return _solve_one(pump, system, phase, leads, leads)
+    return np.asarray(_solve_one(pump, system, phase, leads, leads).data)
 
 
-def _solve_one(pump: Pump, system: Any, phase: float, out: list[int], into: list[int]) -> NDArray[np.complex128]:
+def _solve_one(pump: Pump, system: Any, phase: float, out: list[int], into: list[int]) -> Any:
     import kwant
 
     parameters = pump.parameters(phase)
@@ -40,7 +42,6 @@ def _solve_one(pump: Pump, system: Any, phase: float, out: list[int], into: list
         result = kwant.smatrix(system, pump.fermi_level, params=parameters, out_leads=out, in_leads=into)
     except Exception as cause:  # a user's value function may raise anything
         raise SolverError(phase, parameters, cause) from cause
-    data = np.asarray(result.data, dtype=complex)
-    if not np.isfinite(data).all():
+    if not np.isfinite(result.data).all():
         raise SolverError(phase, parameters, ValueError("the scattering matrix is not finite"))
-    return data
+    return result

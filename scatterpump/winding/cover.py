@@ -166,7 +166,8 @@ def smallest_over(centres: list[Centre]) -> float:
 def join(centres: list[Centre]) -> list[float]:
     """Return the change of arg det r from each centre to the next one round the cycle, in radians.
 
-    Proven where the two reaches overlap; elsewhere the same formula at the middle of the gap is only a guess.
+    Proven where the two reaches overlap; elsewhere the same formula at the middle of the gap is only a guess.  The models of a centre's two
+    arms agree at the centre up to its noise only, so the step between them is taken like any other.
     """
     steps = []
     for left, right, end in neighbours(centres):
@@ -174,5 +175,6 @@ def join(centres: list[Centre]) -> list[float]:
         meet = min(max((start + stop) / 2, left.phase), end)
         near, far = meet - left.phase, meet - end
         between = turn(left.above.model.at(near), right.below.model.at(far))
-        steps.append(left.above.model.turned(near) + between - right.below.model.turned(far))
+        across = turn(right.below.model.at(0.0), right.above.model.at(0.0))
+        steps.append(left.above.model.turned(near) + between - right.below.model.turned(far) + across)
     return steps
