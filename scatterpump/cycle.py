@@ -147,7 +147,7 @@ class Cycle:
 
 
 def _sorted_corners(corners: Any) -> tuple[float, ...]:
-    return tuple(sorted(corner % TURN for corner in corners))
+    return tuple(sorted(corner % TURN % TURN for corner in corners))  # a tiny negative one becomes 2 pi first, then 0
 
 
 def _columns(table: str | Path | Mapping[str, Sequence[float]]) -> tuple[dict[str, list[float]], str]:
@@ -158,7 +158,7 @@ def _columns(table: str | Path | Mapping[str, Sequence[float]]) -> tuple[dict[st
         text = path.read_text(encoding="utf-8-sig")
     except (OSError, UnicodeDecodeError) as error:
         raise InputError(
-            f"the table cannot be read ({getattr(error, 'strerror', None) or error})",
+            f"the table cannot be read ({getattr(error, 'strerror', None) or 'it is not UTF-8 text'})",
             allowed="a readable CSV file, its path taken from the device file's folder",
             where=str(path),
         ) from error
@@ -177,7 +177,7 @@ def _columns(table: str | Path | Mapping[str, Sequence[float]]) -> tuple[dict[st
             raise InputError(f"the column {name!r} names no parameter", allowed=NAMES, where=str(path))
     for number, row in enumerate(rows, 1):
         if len(row) > len(names):
-            raise InputError("the row has more values than the header", allowed="one a column",
+            raise InputError("the row has more values than the header", allowed="one value a column",
                              where=f"{path}: row {number}")
     return {
         name: [_number(row[i] if i < len(row) else "", f"{path}: row {number}, column {name!r}")

@@ -10,10 +10,13 @@ from __future__ import annotations
 import json
 import tomllib
 from collections.abc import Callable, Iterable
+from dataclasses import fields
+from inspect import signature
 from pathlib import Path
 from typing import Any
 
 from scatterpump.builder.chain import ModulatedChain
+from scatterpump.builder.description import Disorder, Lead, Wave
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
@@ -45,8 +48,11 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
         reason = getattr(error, "strerror", None) or "it is not UTF-8 text"
         raise InputError(f"the device file cannot be read: {reason}", allowed="a readable TOML file; "
                          "'scatterpump example' lists devices to start from", where=str(path)) from error
-    except ValueError as error:  # invalid TOML, or a number of thousands of digits
+    except tomllib.TOMLDecodeError as error:
         raise InputError(f"the file is not valid TOML: {error}", allowed="TOML 1.0", where=str(path)) from error
+    except (ValueError, RecursionError) as error:
+        raise InputError("the file holds a number of thousands of digits, or lists nested without end",
+                         allowed="the values of a device", where=str(path)) from error
     for change in changes:
         _apply(content, change)
     return read_device(content, folder=path.parent, source=str(path))
@@ -60,7 +66,7 @@ def read_device(content: dict[str, Any], *, folder: Path = Path("."), source: st
     description = _choice(content.pop("kind", "chain"), KINDS, f"{source}: kind")
     try:  # through JSON, whose strict mode still takes lists for tuples
         device: ModulatedChain = TypeAdapter(description).validate_json(
-            json.dumps(content, default=str), strict=True, context={"cycle": lambda table: _cycle(table, folder)}
+            json.dumps(content, default=lambda value: [str(value)]), strict=True, context={"cycle": lambda table: _cycle(table, folder)}
         )
         return device
     except ValidationError as error:
@@ -74,29 +80,45 @@ def _choice(name: Any, among: dict[str, Any], where: str) -> Any:
 
 
 def _first_mistake(error: Any, source: str) -> InputError:
-    first, *more = error.errors()
-    keys = ".".join(str(key) for key in first["loc"] if key not in _UNION_TAGS)
-    rest = f" (and {len(more)} more)" if more else ""
+    """Turn the first of pydantic's complaints into ours; an unknown key comes first, as it explains a missing one."""
+    errors = sorted(error.errors(), key=lambda e: e["type"] not in _UNKNOWN_KEY)
+    first = errors[0]
+    keys = _keys(first)
+    others = {_keys(other)[:2] for other in errors} - {keys[:2]}
+    rest = f" (and {len(others)} more)" if others else ""
+    where = ": ".join(part for part in (source, ".".join(keys)) if part)
     cause = first.get("ctx", {}).get("error")
     if isinstance(cause, InputError):
-        where = ": ".join(part for part in (source, keys, cause.where) if part)
-        return InputError(cause.problem + rest, allowed=cause.allowed, where=where)
-    otherwise = first["msg"].removeprefix("Input should be ").removeprefix("Value should be ")
-    problem, allowed = _WORDS.get(first["type"], ("{input} does not fit", otherwise))
-    return InputError(problem.format(input=_shown(first["input"])) + rest, allowed=allowed,
-                      where=": ".join(part for part in (source, keys) if part))
+        return InputError(cause.problem + rest, allowed=cause.allowed, where=": ".join(filter(None, (where, cause.where))))
+    problem, allowed = _WORDS.get(first["type"], ("{input} does not fit", first["msg"].removeprefix("Input should be ")))
+    if first["type"] in _UNKNOWN_KEY:
+        allowed = ", ".join(f.name for f in fields(_PARTS.get(keys[0] if len(keys) > 1 else "", ModulatedChain)))
+    if keys[-1:] == ("drain",):
+        allowed += ', or "wall"'
+    return InputError(problem.format(input=_shown(first["input"])) + rest, allowed=allowed, where=where)
+
+
+def _keys(error: Any) -> tuple[str, ...]:
+    """Path to the place of a complaint, without the names that pydantic gives the branches of a union."""
+    return tuple(str(key) for key in error["loc"] if key not in _UNION_TAGS)
 
 
 def _shown(value: Any) -> str:
-    text = repr(value)
+    """The value as it stands in the file, shortened."""
+    try:
+        text = json.dumps(value, ensure_ascii=False)
+    except (TypeError, ValueError):
+        text = str(value)
     return text if len(text) <= LONGEST_SHOWN else text[:LONGEST_SHOWN] + "..."
 
 
+_UNKNOWN_KEY = ("unexpected_keyword_argument", "extra_forbidden")
+_PARTS: dict[str, type[Any]] = {"probe": Lead, "drain": Lead, "onsite": Wave, "bonds": Wave, "disorder": Disorder}
 LONGEST_SHOWN = 40
 _UNION_TAGS = {"Lead", "float", "str", "literal['wall']"}
 _WORDS = {
-    "unexpected_keyword_argument": ("this key is unknown", "the keys of the description; 'scatterpump example' shows them"),
-    "extra_forbidden": ("this key is unknown", "the keys of the description; 'scatterpump example' shows them"),
+    "unexpected_keyword_argument": ("this key is unknown", ""),
+    "extra_forbidden": ("this key is unknown", ""),
     "missing": ("this key is missing", "a value for it"),
     "missing_argument": ("this key is missing", "a value for it"),
     "missing_keyword_only_argument": ("this key is missing", "a value for it"),
@@ -107,6 +129,8 @@ _WORDS = {
     "string_type": ("{input} is no text", "text in quotes"),
     "dataclass_type": ("{input} is no table", "a table of keys and values"),
     "tuple_type": ("{input} is no list", "a list"),
+    "sequence_type": ("{input} is no list", "a list of tables, each headed by its name in double brackets"),
+    "list_type": ("{input} is no list", "a list of tables, each headed by its name in double brackets"),
 }
 
 
@@ -115,7 +139,9 @@ def _cycle(table: Any, folder: Path) -> Cycle:
     if not isinstance(table, dict):
         raise InputError(f"{table!r} is no table", allowed="a table [cycle] with its kind")
     table = dict(table)
-    make = _choice(table.pop("kind", None), CYCLES, "kind")
+    if "kind" not in table:
+        raise InputError("this key is missing", allowed=", ".join(map(repr, CYCLES)), where="kind")
+    make = _choice(table.pop("kind"), CYCLES, "kind")
     changes = {key: table.pop(key) for key in ("reversed", "repeated", "started_at") if key in table}
     if make == Cycle.through and isinstance(table.get("table"), str):
         table["table"] = folder / table["table"]
@@ -125,12 +151,14 @@ def _cycle(table: Any, folder: Path) -> Cycle:
     if changes.get("reversed"):
         cycle = cycle.reversed()
     if "repeated" in changes:
-        cycle = _called(cycle.repeated, {"times": changes["repeated"]})
-    return _called(cycle.started_at, {"start": changes["started_at"]}) if "started_at" in changes else cycle
+        cycle = _called(cycle.repeated, {"times": changes["repeated"]}, key="repeated")
+    if "started_at" in changes:
+        cycle = _called(cycle.started_at, {"start": changes["started_at"]}, key="started_at")
+    return cycle
 
 
-def _called(function: Callable[..., Cycle], arguments: dict[str, Any]) -> Cycle:
-    """Call a constructor of `Cycle` with arguments checked against its own signature."""
+def _called(function: Callable[..., Cycle], arguments: dict[str, Any], key: str = "") -> Cycle:
+    """Call a method of `Cycle` with arguments checked against its own signature; `key` is what the file calls its one argument."""
     from pydantic import ValidationError, validate_call
 
     frozen = {key: tuple(value) if isinstance(value, list) else value for key, value in arguments.items()}
@@ -138,7 +166,12 @@ def _called(function: Callable[..., Cycle], arguments: dict[str, Any]) -> Cycle:
         cycle: Cycle = validate_call(config={"strict": True})(function)(**frozen)
         return cycle
     except ValidationError as error:
-        raise _first_mistake(error, "") from None
+        mistake = _first_mistake(error, "")
+        unknown = error.errors()[0]["type"] in _UNKNOWN_KEY
+        allowed = ", ".join(("kind", *signature(function).parameters)) if unknown else mistake.allowed
+        raise InputError(mistake.problem, allowed=allowed, where=key or mistake.where) from None
+    except InputError as error:
+        raise InputError(error.problem, allowed=error.allowed, where=error.where or key) from error
 
 
 def _apply(content: dict[str, Any], change: str) -> None:
@@ -163,7 +196,11 @@ def _apply(content: dict[str, Any], change: str) -> None:
 
 
 def _item(place: Any, part: str, key: str) -> Any:
-    if not isinstance(place, list) or not (part.isascii() and part.isdigit()) or int(part) >= len(place):
-        size = f"0 to {len(place) - 1}" if isinstance(place, list) else "a key of a table"
-        raise InputError(f"there is no {part!r} in {key!r}", allowed=size, where="--set")
+    """Return the entry of a list that a part of a dotted key names."""
+    if not isinstance(place, list):
+        raise InputError(f"what comes before {part!r} in {key!r} has no parts", allowed="keys of tables, numbers of lists",
+                         where="--set")
+    if not (part.isascii() and part.isdigit()) or int(part) >= len(place):
+        raise InputError(f"there is no {part!r} in {key!r}", where="--set",
+                         allowed=f"one of {len(place)} entries, counted from 0" if place else "nothing, the list is empty")
     return place[int(part)]

@@ -7,7 +7,7 @@ from textwrap import wrap
 from typing import TYPE_CHECKING
 
 from scatterpump.audit.finding import Finding
-from scatterpump.bulk.gap import BulkGap
+from scatterpump.bulk.gap import FLOOR, BulkGap
 from scatterpump.version import version
 from scatterpump.winding.result import Winding
 
@@ -36,8 +36,12 @@ def summarise(verdict: Verdict) -> str:
     for finding in verdict.audit.cautions:
         lines += _finding(finding)
     passed = sum(finding.status == "pass" for finding in verdict.audit.findings)
-    lines += _row("checks", f"{passed} passed, {len(verdict.audit.cautions)} cautions, {len(verdict.audit.alarms)} alarms")
+    lines += _row("checks", f"{passed} passed, {_count(verdict.audit.cautions, 'caution')}, {_count(verdict.audit.alarms, 'alarm')}")
     return "\n".join(lines)
+
+
+def _count(findings: tuple[Finding, ...], word: str) -> str:
+    return f"{len(findings)} {word}" + ("" if len(findings) == 1 else "s")
 
 
 def _signed(number: int) -> str:
@@ -59,7 +63,7 @@ def _integer(verdict: Verdict) -> list[str]:
     if winding is None:
         return _row("charges a cycle", "undefined: r is singular on the cycle")
     if winding.number is None:
-        return _row("charges a cycle", f"not proven (det r seems to wind {winding.turns:+.3g} times)")
+        return _row("charges a cycle", "not proven")
     if not verdict.trustworthy:
         return _row("charges a cycle", f"not to be trusted (det r winds {_signed(winding.number)} times)")
     return _row("charges a cycle", f"{_signed(winding.number)} from probe to drain")
@@ -89,7 +93,7 @@ def _proof(winding: Winding) -> str:
 
 def _gap(gap: BulkGap) -> list[str]:
     if not gap.is_open:
-        return _row("bulk gap", f"closed or below {gap.distance_upper:.1e} at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}")
+        return _row("bulk gap", f"closed, or the level closer than {max(gap.distance_upper, FLOOR / 2):.1e} to a band, at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}")
     kind = "proven" if gap.exact else "estimated"
     low, high = gap.lower_edge.upper, gap.upper_edge.lower
     window = f"{low:.5g} to {high:.5g}" if isfinite(high - low) else f"below {high:.5g}" if isfinite(high) else f"above {low:.5g}"

@@ -131,9 +131,9 @@ WRONG = {
     "ellipse with text as radius": ({"cycle": {**ELLIPSE, "x": ["left", 0.0, "wide"]}}, "cycle: x"),
     "ellipse not a number": ({"cycle": {**ELLIPSE, "x": ["left", 0.0, NAN]}}, "cycle"),
     "cycle repeated never": ({"cycle": {"kind": "angle", "repeated": 0}}, "repeated"),
-    "cycle repeated by a fraction": ({"cycle": {"kind": "angle", "repeated": 1.5}}, "cycle: times"),
+    "cycle repeated by a fraction": ({"cycle": {"kind": "angle", "repeated": 1.5}}, "cycle: repeated"),
     "cycle reversed by a number": ({"cycle": {"kind": "angle", "reversed": 1}}, "cycle: reversed"),
-    "cycle started at a word": ({"cycle": {"kind": "angle", "started_at": "noon"}}, "cycle: start"),
+    "cycle started at a word": ({"cycle": {"kind": "angle", "started_at": "noon"}}, "cycle: started_at"),
     "cycle started nowhere": ({"cycle": {"kind": "angle", "started_at": NAN}}, "start"),
     "parameter that is no name": ({"cycle": {"kind": "angle", "name": "two words"}, "onsite": []}, "two words"),
     "parameter named like a keyword": ({"cycle": {"kind": "angle", "name": "lambda"}, "onsite": []}, "lambda"),
@@ -163,11 +163,36 @@ def test_several_mistakes_are_counted(tmp_path: Path) -> None:
     complaint(call(written(tmp_path, device_with(hopping="1", level="2", name=3))), "hopping", "(and 2 more)")
 
 
-@pytest.mark.parametrize("fermi_level", [4.1, -7.5])
+@pytest.mark.parametrize("fermi_level", [4.1, -7.5, 4.0, -4.0])
 def test_fermi_level_outside_the_probe_band_is_one_line(tmp_path: Path, fermi_level: float) -> None:
     result = call(written(tmp_path, device_with(fermi_level=fermi_level)))
-    # derived: the probe's band reaches from -4 to 4
-    complaint(result, "device.toml", "probe", "Fermi level", f"{fermi_level:g}", "allowed: ")
+    # derived: the probe's band reaches from -4 to 4; at its very edges waves stand still
+    complaint(result, "device.toml", "Fermi level", f"{fermi_level:g}", "allowed: ")
+
+
+def test_fermi_level_on_the_band_edge_of_the_drain_is_one_line(tmp_path: Path) -> None:
+    result = call(written(tmp_path, device_with(fermi_level=-1.0, drain={"hopping": 0.5})))
+    # derived: the drain's band reaches from -1 to 1
+    complaint(result, "device.toml", "Fermi level", "allowed: ")
+
+
+EXTREME = {
+    "amplitude at the end of double precision": {"onsite": [{"amplitude": 1e308, "period": 3}]},
+    "hopping at the end of double precision": {"hopping": 1e308},
+    "band of the probe at the end of double precision": {"probe": {"hopping": 1e308}},
+    "band of the probe next to nothing": {"probe": {"hopping": 1e-300, "level": -1.2}},
+    "contact next to nothing": {"probe": {"hopping": 2.0, "contact": 1e-300}},
+    "period next to nothing": {"onsite": [{"amplitude": 1.0, "period": 1e-320}]},
+}
+
+
+@pytest.mark.filterwarnings("ignore::RuntimeWarning")
+@pytest.mark.parametrize("changes", EXTREME.values(), ids=EXTREME)
+def test_extreme_numbers_end_in_an_alarm_or_a_line(tmp_path: Path, changes: dict[str, Any]) -> None:
+    result = call(written(tmp_path, device_with(**changes)))
+    # derived: the project's own promise
+    if result.exit_code != 1 or not isinstance(result.exception, SystemExit):
+        complaint(result, "device.toml")
 
 
 # --- recorded traces ---
@@ -225,7 +250,8 @@ def test_folder_is_no_device(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize(("content", "words"), [
     (bytes(range(256)), "UTF-8"), (b"sites = ", "TOML"), (b"sites = 3\nsites = 4", "TOML"), (b"sites 3", "line 1"),
-    (b"", "sites"), (b"sites = 3\n\x00", "TOML"), (b"sites = " + b"9" * 5000, "digits")])
+    (b"", "sites"), (b"sites = 3\n\x00", "TOML"), (b"sites = " + b"9" * 5000, "digits"),
+    (b"sites = " + b"[" * 3000 + b"]" * 3000, "TOML")])
 def test_file_that_is_no_device_is_one_line(tmp_path: Path, content: bytes, words: str) -> None:
     (tmp_path / "device.toml").write_bytes(content)
     # derived: the project's own promise

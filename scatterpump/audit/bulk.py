@@ -6,6 +6,7 @@ from math import isfinite
 
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Finding
+from scatterpump.bulk.gap import FLOOR
 from scatterpump.winding.certificate import behind_good_contact
 
 __all__ = ["fermi_level_in_gap", "integer_agrees"]
@@ -22,7 +23,7 @@ def fermi_level_in_gap(evidence: Evidence) -> Finding | None:
     where = f"k = {gap.momentum:.4g}, phi = {gap.phase:.4g}"
     if not gap.is_open:
         return Finding("Fermi level in gap", "alarm", gap.distance_upper, 0.0, "E",
-                       f"A bulk band meets the Fermi level {level:g} or comes within {gap.distance_upper:.1e} of it, so the pump "
+                       f"A bulk band meets the Fermi level {level:g} or comes within {max(gap.distance_upper, FLOOR / 2):.1e} of it, so the pump "
                        "is not gapped and any integer is an accident.",
                        "Move the Fermi level into a gap, or change the cycle so that the gap stays open.", where)
     width = gap.upper_edge.lower - gap.lower_edge.upper
@@ -44,7 +45,7 @@ def integer_agrees(evidence: Evidence) -> Finding | None:
         return Finding("integer agrees with bulk", "pass", 0, 0, "charges",
                        f"The winding equals the Chern number {chern:+d} of the filled bands.")
     return Finding("integer agrees with bulk", "alarm", difference, 0, "charges",
-                   f"The winding is {winding.number:+d}, but the filled bands of the endless interior carry {chern:+d}: "
+                   f"The winding is {winding.number}, but the filled bands of the endless interior carry {chern}: "
                    + _explanation(evidence, chern), "Mend what is named here, or take the winding for what it is.")
 
 

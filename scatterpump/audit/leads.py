@@ -40,7 +40,12 @@ def probe_open(pump: Pump) -> Finding:
 def drain_present(pump: Pump) -> Finding:
     """Without a drain the far edge level unwinds what the near one wound, and the true total is 0."""
     if pump.drain is not None:
-        return Finding("drain present", "pass", 1, 1, "drains", "The far end opens into a drain.")
+        modes = len(with_modes(pump).leads[pump.drain].modes(pump.fermi_level)[0].momenta) // 2
+        if modes:
+            return Finding("drain present", "pass", modes, 1, "modes", f"The drain has {modes} open mode(s) at the Fermi level.")
+        return Finding("drain present", "alarm", 0, 1, "modes",
+                       f"The drain has no open mode at the Fermi level {pump.fermi_level:g}, so it takes nothing and the true winding is 0.",
+                       "Raise the drain's hopping or shift its level until the Fermi level lies in its band.", f"lead {pump.drain}")
     return Finding(
         "drain present", "alarm", 0, 1, "drains",
         "The far end is a hard wall: r is unitary whatever happens, and the narrow level of the far edge takes back "

@@ -17,19 +17,22 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from inspect import Parameter, Signature
-from math import isfinite, lcm, pi
+from math import lcm, pi
 from typing import TYPE_CHECKING, Any, ClassVar, Literal
 
 import numpy as np
 
-from scatterpump.builder.description import Disorder, Lead, Wave, require
+from scatterpump.builder.description import LARGEST, Disorder, Lead, Wave, require
 from scatterpump.cycle import NAMES, Cycle, is_name
+from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 
 if TYPE_CHECKING:
     import kwant
 
 __all__ = ["ModulatedChain"]
+
+LONGEST = 10_000_000
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -76,15 +79,16 @@ class ModulatedChain:
     __pydantic_config__: ClassVar[Any] = {"extra": "forbid"}
 
     def __post_init__(self) -> None:
-        require(self.sites >= 1, "sites", self.sites, "a whole number of at least 1")
+        require(1 <= self.sites <= LONGEST, "sites", self.sites, f"a whole number from 1 to {LONGEST}")
         for name in ("hopping", "level", "fermi_level"):
-            require(isfinite(getattr(self, name)), name, getattr(self, name), "a finite energy")
+            require(abs(getattr(self, name)) < LARGEST, name, getattr(self, name), "a finite energy")
         have = self.cycle.names
         for name in have:
             require(is_name(name), "a parameter of the cycle", name, NAMES)
         for wave in (*self.onsite, *self.bonds):
-            require(wave.needs <= set(have), "cycle", sorted(have),
-                    f"a cycle that sets {' and '.join(sorted(wave.needs))}, which a wave uses")
+            for name in sorted(wave.needs - set(have)):
+                raise InputError(f"a wave uses the parameter {name!r}, which the cycle does not set",
+                                 allowed=f"parameters of the cycle: {', '.join(have)}")
 
     @property
     def period(self) -> int | None:

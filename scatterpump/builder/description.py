@@ -7,13 +7,15 @@ fields under the same names.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import isfinite
 from typing import Any, ClassVar
 
 from scatterpump.cycle import is_name
 from scatterpump.errors import InputError
 
-__all__ = ["Disorder", "Lead", "Wave", "require"]
+__all__ = ["LARGEST", "Disorder", "Lead", "Wave", "require"]
+
+LARGEST = 1e60
+SMALLEST = 1e-60
 
 
 def require(holds: bool, name: str, value: Any, allowed: str) -> None:
@@ -25,7 +27,7 @@ def require(holds: bool, name: str, value: Any, allowed: str) -> None:
 def _finite(record: Any, *names: str) -> None:
     for name in names:
         value = getattr(record, name)
-        require(isinstance(value, str) or isfinite(value), name, value, "a finite number")
+        require(isinstance(value, str) or abs(value) < LARGEST, name, value, f"a finite number below {LARGEST:g}")
 
 
 @dataclass(frozen=True)
@@ -88,8 +90,8 @@ class Lead:
 
     def __post_init__(self) -> None:
         _finite(self, "hopping", "level", "contact")
-        require(self.hopping > 0, "hopping", self.hopping, "a positive energy")
-        require(self.contact > 0, "contact", self.contact, "a positive energy; a closed lead pumps nothing")
+        require(self.hopping > SMALLEST, "hopping", self.hopping, "a positive energy")
+        require(self.contact > SMALLEST, "contact", self.contact, "a positive energy, as a closed lead pumps nothing")
 
 
 @dataclass(frozen=True)

@@ -21,7 +21,7 @@ from scatterpump.bulk.torus import Found, search
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 
-__all__ = ["BulkGap", "Extremum", "bulk_gap"]
+__all__ = ["FLOOR", "BulkGap", "Extremum", "bulk_gap"]
 
 Place = NDArray[np.float64]
 

@@ -22,7 +22,7 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import SolverError
 from scatterpump.pump import Pump
-from scatterpump.solver.band import pack
+from scatterpump.solver.band import EPS, pack
 from scatterpump.solver.modes import with_modes
 from scatterpump.solver.path import Path, Side, follow
 
@@ -31,7 +31,7 @@ __all__ = ["FoldedDevice", "fold"]
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 STILL = 1e-13
-OPEN_CHANNEL = 1e-12
+RESOLVED = 1e3 * EPS
 
 
 @dataclass(frozen=True, eq=False)
@@ -117,10 +117,11 @@ def fold(pump: Pump) -> FoldedDevice:
     rows, columns = structure.row.astype(int), structure.col.astype(int)
     path = follow(lambda phase: np.asarray(sample(phase)[rows, columns]).ravel().astype(complex), pump.cycle)
     leads = _lead_self_energies(pump, system, structure.shape[0])
+    channels = {i: len(lead.modes(pump.fermi_level)[0].momenta) // 2 for i, lead in enumerate(system.leads)}
     moves = _moving(path, rows, structure.shape[0])
-    alive, folded = _eliminate(pump.fermi_level, structure.tocsr(), sample(0.0), leads, moves)
+    alive, folded = _eliminate(pump.fermi_level, structure.tocsr(), sample(0.0), leads, channels, moves)
     order = _order(structure.tocsr(), folded, alive, pump.probe)
-    return _assemble(pump, path, rows, columns, folded, order, sample.calls)
+    return _assemble(pump, path, rows, columns, folded, channels, order, sample.calls)
 
 
 class _Sampler:
@@ -195,7 +196,7 @@ def _moving(path: Path, rows: Indices, size: int) -> NDArray[np.bool_]:
 
 
 def _eliminate(energy: float, structure: Any, hamiltonian: Any, leads: dict[int, Any],
-               moves: NDArray[np.bool_]) -> tuple[Indices, dict[int, Any]]:
+               channels: dict[int, int], moves: NDArray[np.bool_]) -> tuple[Indices, dict[int, Any]]:
     """Fold the still stretches that touch one lead only into its self-energy, if it touches nothing else.
 
     Returns the orbitals that are left and the self-energies of all leads.
@@ -215,7 +216,7 @@ def _eliminate(energy: float, structure: Any, hamiltonian: Any, leads: dict[int,
         if not np.isin(seat, inside).all():
             continue
         sigma = _folded(energy, hamiltonian, leads[number], inside)
-        if sigma is not None:
+        if sigma is not None and _still_resolves(sigma, channels[number]):
             folded[number] = sigma
             gone[inside] = True
     return np.flatnonzero(~gone), folded
@@ -254,8 +255,8 @@ def _order(structure: Any, leads: dict[int, Any], alive: Indices, probe: int) ->
     return np.asarray(alive[kept[order]], dtype=int)
 
 
-def _assemble(pump: Pump, path: Path, rows: Indices, columns: Indices, leads: dict[int, Any], order: Indices,
-              samples: int) -> FoldedDevice:
+def _assemble(pump: Pump, path: Path, rows: Indices, columns: Indices, leads: dict[int, Any],
+              channels: dict[int, int], order: Indices, samples: int) -> FoldedDevice:
     size, place = len(order), np.full(leads[pump.probe].shape[0], -1)
     place[order] = np.arange(size)
     kept = np.flatnonzero((place[rows] >= 0) & (place[columns] >= 0))
@@ -266,24 +267,37 @@ def _assemble(pump: Pump, path: Path, rows: Indices, columns: Indices, leads: di
     still = pack(np.arange(size), np.arange(size), np.full(size, pump.fermi_level, dtype=complex), size, half)
     for matrix in sigma.values():
         still -= pack(matrix.row, matrix.col, matrix.data, size, half)
-    probe = _broadening([sigma[pump.probe]], size)
-    drain = _broadening([s for number, s in sigma.items() if number != pump.probe], size)
+    width = {number: _broadening(s, size, channels[number]) for number, s in sigma.items()}
+    probe = width.pop(pump.probe)
+    drain = np.hstack([np.zeros((size, 0), dtype=complex), *width.values()])
     distance = _distance(places, probe, size)
     return FoldedDevice(size, half, rows, columns, path.only(kept), still, probe, drain, distance, samples)
 
 
-def _broadening(sigmas: list[Any], size: int) -> Complex:
-    """W with W W^+ = i (Sigma - Sigma^+), one orthogonal column for each open channel."""
-    columns = [np.zeros((size, 0), dtype=complex)]
-    for sigma in sigmas:
-        touched = np.unique(np.concatenate([sigma.row, sigma.col])).astype(int)
-        block = sigma.tocsr()[touched][:, touched].toarray()
-        strength, states = np.linalg.eigh(1j * (block - block.conj().T))
-        is_open = strength > OPEN_CHANNEL * max(strength.max(initial=0.0), np.abs(block).max(initial=0.0) * 1e-3)
-        column = np.zeros((size, int(is_open.sum())), dtype=complex)
-        column[touched] = states[:, is_open] * np.sqrt(strength[is_open])
-        columns.append(column)
-    return np.hstack(columns)
+def _broadening(sigma: Any, size: int, channels: int) -> Complex:
+    """W with W W^+ = i (Sigma - Sigma^+), shape (size, channels): one orthogonal column for each open channel."""
+    touched, strength, states = _strengths(sigma)
+    column = np.zeros((size, channels), dtype=complex)
+    first = len(strength) - channels
+    column[touched] = states[:, first:] * np.sqrt(np.maximum(strength[first:], 0.0))
+    return column
+
+
+def _strengths(sigma: Any) -> tuple[Indices, NDArray[np.float64], Complex]:
+    """Orbitals that a self-energy touches, with the eigenvalues (rising) and eigenvectors of its broadening on them."""
+    places = sigma.tocoo()
+    touched = np.unique(np.concatenate([places.row, places.col])).astype(int)
+    block = sigma.tocsr()[touched][:, touched].toarray()
+    strength, states = np.linalg.eigh(1j * (block - block.conj().T))
+    return touched, strength, states
+
+
+def _still_resolves(sigma: Any, channels: int) -> bool:
+    """Whether all open channels of a lead are still seen through the stretch folded into it, above rounding."""
+    _, strength, _ = _strengths(sigma)
+    if len(strength) < channels:
+        return False
+    return bool((strength[len(strength) - channels :] > RESOLVED * np.abs(sigma).max()).all())
 
 
 def _distance(places: list[tuple[Indices, Indices]], probe: Complex, size: int) -> Indices:

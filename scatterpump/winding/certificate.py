@@ -16,9 +16,6 @@ trigonometric nor straight between corners.
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
-
 import numpy as np
 from numpy.typing import NDArray
 
@@ -27,23 +24,21 @@ from scatterpump.pump import Pump
 from scatterpump.solver.band import EPS, norm_bound, row_sum_norm
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.path import Slopes
-from scatterpump.winding.cover import Centre, centre, centre_of, covering, join, open_gaps, smallest_over
+from scatterpump.winding.cover import START, Cover, Progress, cover_cycle, covering, join, open_gaps, smallest_over
 from scatterpump.winding.crossings import find_crossings
-from scatterpump.winding.look import ROUNDING, Look
-from scatterpump.winding.reference import Contact, Reference, survey
+from scatterpump.winding.look import ROUNDING
+from scatterpump.winding.reference import FIRST, Contact, Reference, survey
 from scatterpump.winding.result import Leak, Winding
 
 __all__ = ["behind_good_contact", "certify", "certify_device"]
 
 TURN = 2 * np.pi
-START = 5
 SINGULAR = 1e-7
 WHOLE = 1e-6
 GOOD_CONTACT = 2.0
 LEAK_GOAL = 1e-7
 LEAK_BUDGET = 96
 REFERENCE_BUDGET = 160
-Progress = Callable[[float], None]
 
 
 def certify(pump: Pump, *, budget: int = 400, progress: Progress | None = None) -> Winding:
@@ -89,7 +84,7 @@ def behind_good_contact(pump: Pump) -> int | None:
     device = fold(pump)
     good, _ = device.with_broadening(GOOD_CONTACT * _scale(device))
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
-    cover = _cover(good, slopes, budget=200, progress=None)
+    cover = cover_cycle(good, slopes, budget=200)
     return round(sum(join(list(cover.centres))) / TURN) if cover.closed else None
 
 
@@ -98,29 +93,18 @@ def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progres
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
     good, excess = device.with_broadening(GOOD_CONTACT * _scale(device))
     contact = Contact(excess)
-    here = _Cover((), 0, "the contact is weaker than rounding can resolve")
+    here = Cover((), 0, "the contact is weaker than rounding can resolve")
     if not _below_rounding(device):
-        here = _cover(device, slopes, budget, progress)
+        here = cover_cycle(device, slopes, budget=budget, progress=progress)
     if here.closed:
         seen = survey(good, slopes, contact, goal=LEAK_GOAL, need_winding=False, budget=LEAK_BUDGET)
         return _proven(device, here, seen, here.looks)
     if device.drain.shape[1] == 0:
         return _by_absence_of_drain(device, here)
     _refuse_singular(here)
+    if budget - here.looks < FIRST:
+        return _refused(device, here, Reference(1.0, False, (), 0, 0), here.looks, here.reason)
     return _at_open_reference(device, good, contact, slopes, here, budget, progress)
-
-
-@dataclass(frozen=True, eq=False)
-class _Cover:
-    """Centres sorted by phase, the looks they took, and why covering stopped (empty if it closed)."""
-
-    centres: tuple[Centre, ...]
-    looks: int
-    reason: str
-
-    @property
-    def closed(self) -> bool:
-        return not self.reason
 
 
 def _scale(device: FoldedDevice) -> float:
@@ -136,34 +120,7 @@ def _below_rounding(device: FoldedDevice) -> bool:
     return narrowest < 10 * ROUNDING * EPS * row_sum_norm(device.matrix(0.0))
 
 
-def _cover(device: FoldedDevice, slopes: Slopes, budget: int, progress: Progress | None,
-           seeds: tuple[Look, ...] = ()) -> _Cover:
-    """Rounds of looks until nothing is open, the budget is spent, or a look proves nothing.
-
-    `seeds` are looks at this device already taken; without any, five are spread over the cycle.
-    """
-    centres = [centre_of(device, slopes, seen) for seen in seeds]
-    places = [] if seeds else [TURN * i / START for i in range(START)]
-    looks = 0
-    while True:
-        found = [centre(device, slopes, place % TURN) for place in places]
-        looks += len(places)
-        centres = sorted([*centres, *(c for c in found if c is not None)], key=lambda c: c.phase)
-        gaps = open_gaps(centres) if centres else []
-        if progress is not None:
-            progress(1 - sum(gap.end - gap.start for gap in gaps) / TURN)
-        if centres and not gaps:
-            return _Cover(tuple(centres), looks, "")
-        if any(c is None or max(c.above.reach, c.below.reach) == 0.0 for c in found):
-            return _Cover(tuple(centres), looks, "a level there is too narrow for double precision")
-        places = [place for gap in gaps for place in gap.places]
-        if looks + len(places) > budget:
-            return _Cover(tuple(centres), looks, f"the budget of {budget} looks is spent; a larger one, or a wider gap, may close the proof")
-        if len({c.phase for c in centres} | {p % TURN for p in places}) < len(centres) + len(places):
-            return _Cover(tuple(centres), looks, "phases can no longer be told apart in double precision")
-
-
-def _refuse_singular(cover: _Cover) -> None:
+def _refuse_singular(cover: Cover) -> None:
     if not cover.centres:
         return
     worst = min(cover.centres, key=lambda c: c.seen.smallest)
@@ -171,7 +128,7 @@ def _refuse_singular(cover: _Cover) -> None:
         raise SingularReflectionError(worst.phase, worst.seen.smallest)
 
 
-def _proven(device: FoldedDevice, cover: _Cover, seen: Reference, looks: int, contact: Contact | None = None) -> Winding:
+def _proven(device: FoldedDevice, cover: Cover, seen: Reference, looks: int, contact: Contact | None = None) -> Winding:
     """Read the number off a closed cover; `contact` tells that it was made behind a better one."""
     centres = list(cover.centres)
     turns = sum(join(centres)) / TURN + 0.0
@@ -187,7 +144,7 @@ def _proven(device: FoldedDevice, cover: _Cover, seen: Reference, looks: int, co
     )
 
 
-def _refused(device: FoldedDevice, cover: _Cover, seen: Reference, looks: int, reason: str) -> Winding:
+def _refused(device: FoldedDevice, cover: Cover, seen: Reference, looks: int, reason: str) -> Winding:
     centres = list(cover.centres)
     turns = sum(join(centres)) / TURN if centres else 0.0
     unproven = tuple((gap.start, gap.end) for gap in open_gaps(centres)) if centres else ((0.0, TURN),)
@@ -195,21 +152,21 @@ def _refused(device: FoldedDevice, cover: _Cover, seen: Reference, looks: int, r
                    Leak(seen.leak, seen.evaluations), device.path.exact, "contact")
 
 
-def _by_absence_of_drain(device: FoldedDevice, cover: _Cover) -> Winding:
+def _by_absence_of_drain(device: FoldedDevice, cover: Cover) -> Winding:
     return Winding(0, True, cover.looks, 0.0, (), covering(list(cover.centres)), (), "", 1.0, Leak(0.0, 0), device.path.exact,
                    "no drain")
 
 
-def _at_open_reference(device: FoldedDevice, good: FoldedDevice, contact: Contact, slopes: Slopes, here: _Cover,
+def _at_open_reference(device: FoldedDevice, good: FoldedDevice, contact: Contact, slopes: Slopes, here: Cover,
                        budget: int, progress: Progress | None) -> Winding:
     """Prove the winding behind a good contact, and that the actual one does not change it."""
-    seen = survey(good, slopes, contact, goal=LEAK_GOAL, need_winding=True, budget=REFERENCE_BUDGET)
+    seen = survey(good, slopes, contact, goal=LEAK_GOAL, need_winding=True, budget=min(budget - here.looks, REFERENCE_BUDGET))
     looks = here.looks + (seen.needed or seen.evaluations)
     if not seen.same_winding:
         return _refused(device, here, seen, looks, f"{here.reason}, and what leaks behind a good contact is not proven to be less than "
                         f"the share {contact.transparency:.1e} that the actual one lets through; a longer device or a stronger "
                         "contact may close the proof")
-    there = _cover(good, slopes, budget, progress, seen.looks)
+    there = cover_cycle(good, slopes, budget=budget, progress=progress, seeds=seen.looks)
     if not there.closed:
         return _refused(device, there, seen, looks + there.looks, there.reason)
     return _proven(good, there, seen, looks + there.looks, contact)

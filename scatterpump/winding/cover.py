@@ -14,10 +14,15 @@ from scatterpump.winding.look import Look, look
 from scatterpump.winding.radius import RIGHT_ANGLE, Model, Rates, length_limit, split_reach
 from scatterpump.winding.unwrap import turn
 
-__all__ = ["Arm", "Centre", "Gap", "centre", "centre_of", "covering", "join", "neighbours", "open_gaps", "smallest_over"]
+__all__ = [
+    "START", "Arm", "Centre", "Cover", "Gap", "Progress", "centre", "centre_of", "cover_cycle", "covering", "join", "neighbours",
+    "open_gaps", "smallest_over",
+]
 
 Floats = NDArray[np.float64]
+Progress = Callable[[float], None]
 TURN = 2 * np.pi
+START = 5
 MARGIN = 1e-9
 
 
@@ -55,6 +60,56 @@ class Gap:
     start: float
     end: float
     places: tuple[float, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class Cover:
+    """Centres sorted by phase, the looks they took, and why covering stopped (empty if it closed)."""
+
+    centres: tuple[Centre, ...]
+    looks: int
+    reason: str
+
+    @property
+    def closed(self) -> bool:
+        """Whether the centres cover the whole cycle."""
+        return not self.reason
+
+
+def cover_cycle(device: FoldedDevice, slopes: Slopes, *, budget: int, progress: Progress | None = None,
+                seeds: tuple[Look, ...] = ()) -> Cover:
+    """Take rounds of looks until nothing is open, the budget is spent, or a look proves nothing.
+
+    `seeds` are looks at this device already taken; without any, five are spread over the cycle.
+    """
+    centres = [centre_of(device, slopes, seen) for seen in seeds]
+    places = [] if seeds else [TURN * i / START for i in range(START)]
+    looks = 0
+    while True:
+        found = [centre(device, slopes, place % TURN) for place in places]
+        looks += len(places)
+        centres = sorted([*centres, *(c for c in found if c is not None)], key=lambda c: c.phase)
+        gaps = open_gaps(centres) if centres else []
+        if progress is not None:
+            progress(1 - sum(gap.end - gap.start for gap in gaps) / TURN)
+        places = [place for gap in gaps for place in gap.places]
+        reason = _reason_to_stop(centres, found, gaps, places, looks, budget)
+        if reason is not None:
+            return Cover(tuple(centres), looks, reason)
+
+
+def _reason_to_stop(centres: list[Centre], found: list[Centre | None], gaps: list[Gap], places: list[float], looks: int,
+                    budget: int) -> str | None:
+    """Empty if the cycle is covered, a reason if it cannot be, None to go on."""
+    if centres and not gaps:
+        return ""
+    if any(c is None or max(c.above.reach, c.below.reach) == 0.0 for c in found):
+        return "a level there is too narrow for double precision"
+    if looks + len(places) > budget:
+        return f"the budget of {budget} looks is spent; a larger one, or a wider gap, may close the proof"
+    if len({c.phase for c in centres} | {p % TURN for p in places}) < len(centres) + len(places):
+        return "phases can no longer be told apart in double precision"
+    return None
 
 
 def centre(device: FoldedDevice, slopes: Slopes, phase: float, *, splitting: bool = True) -> Centre | None:

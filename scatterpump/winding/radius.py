@@ -43,10 +43,10 @@ def length_limit(seen: Look) -> float:
         return 0.0
     if abs(b - g) < 1e-9 * g:
         b = g * (1 + 1e-9)
-    low, high = 0.0, 1 / max(g, b)
+    low, high = 0.0, (1 - 1e-9) / max(g, b)
     for _ in range(60):
         middle = (low + high) / 2
-        turned = product * np.log((1 - g * middle) / (1 - b * middle)) / (b - g)
+        turned = product * np.log1p((b - g) * middle / (1 - b * middle)) / (b - g)
         low, high = (middle, high) if turned < RIGHT_ANGLE else (low, middle)
     return low
 
@@ -143,8 +143,8 @@ def split_reach(split: Split, rates: Rates, length: Callable[[Floats], Floats], 
 
 
 def _pieces(model: Model, side: int, limit: float) -> Floats:
-    """Ends of pieces of [0, limit], fine around the resonances of the model."""
-    marks = [np.linspace(0.0, limit, 65)[1:]]
+    """Ends of pieces of [0, limit], fine around the look itself and around the resonances of the model."""
+    marks = [np.linspace(0.0, limit, 65)[1:], limit / 64 * 0.75 ** np.arange(48)]
     poles = np.linalg.eigvals(np.linalg.pinv(model.core) @ model.sigma)
     for pole in poles:
         centre, width = side * pole.real, max(abs(pole.imag), 1e-16)

@@ -23,7 +23,7 @@ from scatterpump.solver.path import Slopes
 from scatterpump.winding.damped import Damped, damped, sideways_slope
 from scatterpump.winding.look import Look, look
 
-__all__ = ["Contact", "Reference", "survey"]
+__all__ = ["FIRST", "Contact", "Reference", "survey"]
 
 Floats = NDArray[np.float64]
 TURN = 2 * np.pi
