@@ -41,7 +41,7 @@ def test_noise_never_makes_a_wrong_number(width: float) -> None:
     pump = rice_mele(loop(), cells=20, probe=Lead(2.0, contact=float(np.sqrt(width * 9 / 8))))
     device = fold(pump)
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
-    covers = [cover_cycle(noisy(device, seed), slopes, budget=60) for seed in range(SEEDS)]
+    covers = [cover_cycle(noisy(device, seed), slopes, budget=30) for seed in range(SEEDS)]
     numbers = {round(sum(join(list(cover.centres))) / (2 * np.pi)) for cover in covers if cover.closed}
     assert numbers <= {1}
     if width <= 1e-15:

@@ -192,8 +192,8 @@ def test_narrow_levels_are_split_off_without_loss(exponent: int, copies: int) ->
     values = np.linalg.svd(device.matrix, compute_uv=False)[::-1]
     size = values[-1]
     assert len(split.sigma) == copies
-    # derived: the end state has the weight 8/9 on the last site, and the singular value is half the width; dense ones are
-    # accurate to a few eps |A|
+    # derived: the end state has the weight 8/9 on the last site, and the singular value is half the width; dense ones
+    # are accurate to a few eps |A|
     assert_allclose(np.sort(split.sigma), values[:copies], rtol=0, atol=10 * EPS * size)
     assert_allclose(split.sigma, 8 / 9 * 10.0**-exponent / 2, rtol=1e-2, atol=10 * EPS * size)
     assert split.noise <= 200 * EPS * size

@@ -127,8 +127,8 @@ def proven(pump: Pump) -> Winding | None:
 PUMPS = st.builds(
     RandomPump, seed=st.integers(0, 10**6), channels=st.integers(1, 3), sites=st.integers(2, 12),
     contact=st.sampled_from([1.2, 0.6, 0.3, 0.15]), far_contact=st.sampled_from([1.2, 0.5, 0.05]), degree=st.integers(1, 2))
-CHECKED = settings(derandomize=True, deadline=None, max_examples=60)
-FEWER = settings(derandomize=True, deadline=None, max_examples=15)
+CHECKED = settings(derandomize=True, deadline=None, max_examples=30)
+FEWER = settings(derandomize=True, deadline=None, max_examples=6)
 
 
 @CHECKED
@@ -143,10 +143,10 @@ def test_certified_number_is_the_brute_force_count(pump: RandomPump) -> None:
 
 def test_most_random_pumps_get_an_answer() -> None:
     """The property above would hold for a proof that always refuses."""
-    pumps = [RandomPump(seed, 1 + seed % 3, 2 + seed % 11, 0.6, 0.5, 1 + seed % 2) for seed in range(24)]
+    pumps = [RandomPump(seed, 1 + seed % 3, 2 + seed % 11, 0.6, 0.5, 1 + seed % 2) for seed in range(12)]
     windings = [proven(pump.pump()) for pump in pumps]
     numbers = [winding.number for winding in windings if winding is not None and winding.certified]
-    assert len(numbers) >= 22
+    assert len(numbers) >= 11
     assert any(numbers)  # and not all of them are 0
 
 
