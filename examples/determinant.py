@@ -11,7 +11,7 @@ import numpy as np
 import scatterpump as sp
 
 matplotlib.use("Agg")
-import matplotlib.pyplot as plt  # noqa: E402  # after the choice of the backend
+import matplotlib.pyplot as plt  # after the choice of the backend
 
 HERE = Path(__file__).parent
 INK, LEVEL = "0.15", "#c0392b"
@@ -40,8 +40,14 @@ def main() -> None:
         line.plot(np.array([start, end]) / np.pi, [-0.12, -0.12], color="0.55", lw=1, marker="|", ms=7)
     for crossing in winding.crossings:
         line.axvline(crossing.phase / np.pi, color=LEVEL, lw=1, ls="--")
-        line.annotate("edge level passes", (crossing.phase / np.pi, 0.06), xytext=(6, 0), textcoords="offset points",
-                      color=LEVEL, fontsize=9)
+        line.annotate(
+            "edge level passes",
+            (crossing.phase / np.pi, 0.06),
+            xytext=(6, 0),
+            textcoords="offset points",
+            color=LEVEL,
+            fontsize=9,
+        )
     line.text(0.02, -0.21, f"{winding.evaluations} overlapping intervals of the proof", fontsize=8, color="0.4")
     line.set(xlabel=r"$\varphi/\pi$", ylabel=r"turns of $\det\, r$", xlim=(0, 2), ylim=(-0.26, 1.06))
     line.spines[["top", "right"]].set_visible(False)

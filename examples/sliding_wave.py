@@ -12,8 +12,12 @@ WIRE = sp.Lead(hopping=2.0)
 
 def main() -> None:
     chain = sp.ModulatedChain(
-        name="sliding superlattice", sites=90, fermi_level=-1.2, onsite=[sp.Wave(amplitude=1.5, period=3)],
-        probe=WIRE, drain=WIRE,
+        name="sliding superlattice",
+        sites=90,
+        fermi_level=-1.2,
+        onsite=[sp.Wave(amplitude=1.5, period=3)],
+        probe=WIRE,
+        drain=WIRE,
     )
     pump = chain.pump()
 
@@ -27,8 +31,10 @@ def main() -> None:
 
     print("behind a contact a thousand times weaker:")
     weak = replace(chain, probe=replace(WIRE, contact=1e-3)).pump()
-    print(f"  {sp.certify(weak).number} charge a cycle, at a resonance of half-width "
-          f"{sp.certify(weak).crossings[0].width:.1g}")
+    print(
+        f"  {sp.certify(weak).number} charge a cycle, at a resonance of half-width "
+        f"{sp.certify(weak).crossings[0].width:.1g}"
+    )
 
     print("with disorder as strong as the gap:")
     for seed in range(4):

@@ -21,7 +21,14 @@ from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.cycle import Cycle
 from scatterpump.device_file import load_device
-from scatterpump.errors import ClosedGapError, ClosedProbeError, InputError, PumpError, SingularReflectionError, SolverError
+from scatterpump.errors import (
+    ClosedGapError,
+    ClosedProbeError,
+    InputError,
+    PumpError,
+    SingularReflectionError,
+    SolverError,
+)
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace

@@ -43,9 +43,16 @@ def main() -> None:
 
 @main.command()
 @click.argument("device", type=click.Path(path_type=Path))
-@click.option("--json", "json_file", metavar="FILE", help="Also write the verdict as JSON; '-' prints it instead of the table.")
-@click.option("--set", "changes", multiple=True, metavar="KEY=VALUE",
-              help="Change a key of the device file, e.g. sites=120 or probe.contact=0.1 or onsite.0.amplitude=2.")
+@click.option(
+    "--json", "json_file", metavar="FILE", help="Also write the verdict as JSON; '-' prints it instead of the table."
+)
+@click.option(
+    "--set",
+    "changes",
+    multiple=True,
+    metavar="KEY=VALUE",
+    help="Change a key of the device file, e.g. sites=120 or probe.contact=0.1 or onsite.0.amplitude=2.",
+)
 def verdict(device: Path, json_file: str | None, changes: tuple[str, ...]) -> None:
     """Reach a verdict on the pump described in DEVICE, a TOML file.
 
@@ -94,7 +101,9 @@ def _named(device: Path) -> Iterator[None]:
     try:
         yield
     except InputError as error:
-        where = error.where if error.where.startswith((str(device), "--set")) else f"{device}: {error.where}".rstrip(": ")
+        where = (
+            error.where if error.where.startswith((str(device), "--set")) else f"{device}: {error.where}".rstrip(": ")
+        )
         raise InputError(error.problem, allowed=error.allowed, where=where) from error
     except PumpError as error:
         raise InputError(str(error), where=str(device)) from error
@@ -104,8 +113,9 @@ def _write(path: Path, text: str) -> None:
     try:
         path.write_text(text, encoding="utf-8")
     except OSError as error:
-        raise InputError(f"the file cannot be written: {error.strerror}", allowed="a writable place",
-                         where=str(path)) from error
+        raise InputError(
+            f"the file cannot be written: {error.strerror}", allowed="a writable place", where=str(path)
+        ) from error
 
 
 @contextmanager
@@ -113,8 +123,16 @@ def _progress(label: str) -> Iterator[Callable[[float], None]]:
     """Yield a function that shows a share done, on a terminal's standard error and after one second only."""
     from tqdm import tqdm
 
-    with tqdm(total=100, desc=label, delay=1.0, leave=False, disable=not sys.stderr.isatty(), file=sys.stderr,
-              bar_format="{desc}: {percentage:3.0f} % |{bar}| {elapsed}") as bar:
+    with tqdm(
+        total=100,
+        desc=label,
+        delay=1.0,
+        leave=False,
+        disable=not sys.stderr.isatty(),
+        file=sys.stderr,
+        bar_format="{desc}: {percentage:3.0f} % |{bar}| {elapsed}",
+    ) as bar:
+
         def show(share: float) -> None:
             bar.update(100 * share - bar.n)
 

@@ -83,9 +83,7 @@ class Cycle:
             raise InputError(f"both axes of the ellipse are named {x_name!r}", allowed="two different parameters")
         if not all(map(isfinite, (x_centre, x_radius, y_centre, y_radius))):
             raise InputError("the ellipse has a centre or radius that is not finite", allowed="finite numbers")
-        return cls(
-            lambda phase: {x_name: x_centre + x_radius * cos(phase), y_name: y_centre + y_radius * sin(phase)}
-        )
+        return cls(lambda phase: {x_name: x_centre + x_radius * cos(phase), y_name: y_centre + y_radius * sin(phase)})
 
     @classmethod
     def through(
@@ -166,22 +164,30 @@ def _columns(table: str | Path | Mapping[str, Sequence[float]]) -> tuple[dict[st
     try:
         header, *rows = csv.reader(lines) if lines else [[]]
     except csv.Error as error:
-        raise InputError(f"row 1 or a later one is no CSV ({error})", allowed="numbers with commas between",
-                         where=str(path)) from error
+        raise InputError(
+            f"row 1 or a later one is no CSV ({error})", allowed="numbers with commas between", where=str(path)
+        ) from error
     names = [name.strip() for name in header]
     if len(set(names)) < len(names) or "" in names:
-        raise InputError(f"the columns are named {', '.join(map(repr, names))}", where=str(path),
-                         allowed="a different name for every column")
+        raise InputError(
+            f"the columns are named {', '.join(map(repr, names))}",
+            where=str(path),
+            allowed="a different name for every column",
+        )
     for name in names:
         if not is_name(name):
             raise InputError(f"the column {name!r} names no parameter", allowed=NAMES, where=str(path))
     for number, row in enumerate(rows, 1):
         if len(row) > len(names):
-            raise InputError("the row has more values than the header", allowed="one value a column",
-                             where=f"{path}: row {number}")
+            raise InputError(
+                "the row has more values than the header", allowed="one value a column", where=f"{path}: row {number}"
+            )
     return {
-        name: [_number(row[i] if i < len(row) else "", f"{path}: row {number}, column {name!r}")
-               for number, row in enumerate(rows, 1)] for i, name in enumerate(names)
+        name: [
+            _number(row[i] if i < len(row) else "", f"{path}: row {number}, column {name!r}")
+            for number, row in enumerate(rows, 1)
+        ]
+        for i, name in enumerate(names)
     }, str(path)
 
 
@@ -196,20 +202,24 @@ def _number(text: str, where: str) -> float:
 def _closed_points(columns: dict[str, list[float]], source: str) -> np.ndarray[Any, np.dtype[np.float64]]:
     if len({len(values) for values in columns.values()}) != 1 or len(next(iter(columns.values()))) < 4:
         raise InputError(
-            "the trace needs named columns of equal length, at least four rows", where=source,
+            "the trace needs named columns of equal length, at least four rows",
+            where=source,
             allowed="a header of parameter names, then one row a point, the last equal to the first",
         )
     points = np.array(list(columns.values()), dtype=float).T
     if not np.isfinite(points).all():
         row, column = np.argwhere(~np.isfinite(points))[0]
-        raise InputError(f"row {row + 1}, column {list(columns)[column]!r} is not finite",
-                         allowed="finite numbers", where=source)
+        raise InputError(
+            f"row {row + 1}, column {list(columns)[column]!r} is not finite", allowed="finite numbers", where=source
+        )
     gap = np.abs(points[-1] - points[0])
     if (gap > 1e-9 * np.maximum(1e-300, np.ptp(points, axis=0))).any():
         worst = list(columns)[int(gap.argmax())]
         raise InputError(
             f"the trace is open: {worst!r} starts at {points[0, gap.argmax()]:g} and ends at "
-            f"{points[-1, gap.argmax()]:g}", allowed="a closed trace, whose last row repeats the first", where=source,
+            f"{points[-1, gap.argmax()]:g}",
+            allowed="a closed trace, whose last row repeats the first",
+            where=source,
         )
     return points
 

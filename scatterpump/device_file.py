@@ -1,8 +1,8 @@
 """Device files: TOML to a description, and every mistake in one to a single line.
 
-A device file has the fields of the description it stands for under the same names; ``kind`` says which ("chain").  The table
-``[cycle]`` names one of the constructors of `Cycle` in its own ``kind`` and gives that constructor's arguments; a table's file is
-looked for next to the device file.
+A device file has the fields of the description it stands for under the same names; ``kind`` says which ("chain").
+The table ``[cycle]`` names one of the constructors of `Cycle` in its own ``kind`` and gives that constructor's
+arguments; a table's file is looked for next to the device file.
 """
 
 from __future__ import annotations
@@ -46,13 +46,19 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
         content = tomllib.loads(path.read_text(encoding="utf-8"))
     except (OSError, UnicodeDecodeError) as error:
         reason = getattr(error, "strerror", None) or "it is not UTF-8 text"
-        raise InputError(f"the device file cannot be read: {reason}", allowed="a readable TOML file; "
-                         "'scatterpump example' lists devices to start from", where=str(path)) from error
+        raise InputError(
+            f"the device file cannot be read: {reason}",
+            allowed="a readable TOML file; 'scatterpump example' lists devices to start from",
+            where=str(path),
+        ) from error
     except tomllib.TOMLDecodeError as error:
         raise InputError(f"the file is not valid TOML: {error}", allowed="TOML 1.0", where=str(path)) from error
     except (ValueError, RecursionError) as error:
-        raise InputError("the file holds a number of thousands of digits, or lists nested without end",
-                         allowed="the values of a device", where=str(path)) from error
+        raise InputError(
+            "the file holds a number of thousands of digits, or lists nested without end",
+            allowed="the values of a device",
+            where=str(path),
+        ) from error
     for change in changes:
         _apply(content, change)
     return read_device(content, folder=path.parent, source=str(path))
@@ -66,7 +72,9 @@ def read_device(content: dict[str, Any], *, folder: Path = Path("."), source: st
     description = _choice(content.pop("kind", "chain"), KINDS, f"{source}: kind")
     try:  # through JSON, whose strict mode still takes lists for tuples
         device: ModulatedChain = TypeAdapter(description).validate_json(
-            json.dumps(content, default=lambda value: [str(value)]), strict=True, context={"cycle": lambda table: _cycle(table, folder)}
+            json.dumps(content, default=lambda value: [str(value)]),
+            strict=True,
+            context={"cycle": lambda table: _cycle(table, folder)},
         )
         return device
     except ValidationError as error:
@@ -89,8 +97,12 @@ def _first_mistake(error: Any, source: str) -> InputError:
     where = ": ".join(part for part in (source, ".".join(keys)) if part)
     cause = first.get("ctx", {}).get("error")
     if isinstance(cause, InputError):
-        return InputError(cause.problem + rest, allowed=cause.allowed, where=": ".join(filter(None, (where, cause.where))))
-    problem, allowed = _WORDS.get(first["type"], ("{input} does not fit", first["msg"].removeprefix("Input should be ")))
+        return InputError(
+            cause.problem + rest, allowed=cause.allowed, where=": ".join(filter(None, (where, cause.where)))
+        )
+    problem, allowed = _WORDS.get(
+        first["type"], ("{input} does not fit", first["msg"].removeprefix("Input should be "))
+    )
     if first["type"] in _UNKNOWN_KEY:
         allowed = ", ".join(f.name for f in fields(_PARTS.get(keys[0] if len(keys) > 1 else "", ModulatedChain)))
     if keys[-1:] == ("drain",):
@@ -147,7 +159,9 @@ def _cycle(table: Any, folder: Path) -> Cycle:
         table["table"] = folder / table["table"]
     cycle = _called(make, table)
     if "reversed" in changes and not isinstance(changes["reversed"], bool):
-        raise InputError(f"{changes['reversed']!r} is neither true nor false", allowed="true or false", where="reversed")
+        raise InputError(
+            f"{changes['reversed']!r} is neither true nor false", allowed="true or false", where="reversed"
+        )
     if changes.get("reversed"):
         cycle = cycle.reversed()
     if "repeated" in changes:
@@ -158,7 +172,7 @@ def _cycle(table: Any, folder: Path) -> Cycle:
 
 
 def _called(function: Callable[..., Cycle], arguments: dict[str, Any], key: str = "") -> Cycle:
-    """Call a method of `Cycle` with arguments checked against its own signature; `key` is what the file calls its one argument."""
+    """Call a method of `Cycle`, its arguments checked against its signature; `key` is the file's word for the only one."""
     from pydantic import ValidationError, validate_call
 
     frozen = {key: tuple(value) if isinstance(value, list) else value for key, value in arguments.items()}
@@ -178,8 +192,9 @@ def _apply(content: dict[str, Any], change: str) -> None:
     """Set one dotted key to a value given as "key=value"."""
     key, equals, text = change.partition("=")
     if not equals or not key.strip():
-        raise InputError(f"{change!r} sets nothing", allowed="key=value, such as sites=120 or probe.contact=0.1",
-                         where="--set")
+        raise InputError(
+            f"{change!r} sets nothing", allowed="key=value, such as sites=120 or probe.contact=0.1", where="--set"
+        )
     try:
         value = tomllib.loads(f"value = {text}")["value"]
     except tomllib.TOMLDecodeError:
@@ -198,9 +213,15 @@ def _apply(content: dict[str, Any], change: str) -> None:
 def _item(place: Any, part: str, key: str) -> Any:
     """Return the entry of a list that a part of a dotted key names."""
     if not isinstance(place, list):
-        raise InputError(f"what comes before {part!r} in {key!r} has no parts", allowed="keys of tables, numbers of lists",
-                         where="--set")
+        raise InputError(
+            f"what comes before {part!r} in {key!r} has no parts",
+            allowed="keys of tables, numbers of lists",
+            where="--set",
+        )
     if not (part.isascii() and part.isdigit()) or int(part) >= len(place):
-        raise InputError(f"there is no {part!r} in {key!r}", where="--set",
-                         allowed=f"one of {len(place)} entries, counted from 0" if place else "nothing, the list is empty")
+        raise InputError(
+            f"there is no {part!r} in {key!r}",
+            where="--set",
+            allowed=f"one of {len(place)} entries, counted from 0" if place else "nothing, the list is empty",
+        )
     return place[int(part)]

@@ -87,6 +87,5 @@ class SolverError(PumpError):
         self.phase, self.parameters = phase, parameters
         values = ", ".join(f"{name}={value}" for name, value in parameters.items())
         super().__init__(
-            f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): "
-            f"{type(cause).__name__}: {cause}"
+            f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): {type(cause).__name__}: {cause}"
         )

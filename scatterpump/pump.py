@@ -34,8 +34,8 @@ class Pump:
     drain : int or None
         Number of the lead the charge leaves by; None for a hard wall at the far end (which the audit reports).
     bulk : kwant.Builder or finalized infinite system, optional
-        One cell of the pump's interior, repeated away from the probe.  The gap and the Chern number belong to it; without
-        it they are left out of a verdict.
+        One cell of the pump's interior, repeated away from the probe.  The gap and the Chern number belong to it;
+        without it they are left out of a verdict.
     constants : dict
         Parameters of the Hamiltonian that the cycle does not set.
     name : str
@@ -62,8 +62,10 @@ class Pump:
         leads = len(self.system.leads)
         for role, lead in (("probe", self.probe), ("drain", self.drain)):
             if lead is not None and not 0 <= lead < leads:
-                raise InputError(f"the {role} is lead {lead}, but the system has {leads} lead(s)",
-                                 allowed=f"0 to {leads - 1}, counted in the order they were attached")
+                raise InputError(
+                    f"the {role} is lead {lead}, but the system has {leads} lead(s)",
+                    allowed=f"0 to {leads - 1}, counted in the order they were attached",
+                )
         if self.probe == self.drain:
             raise InputError(f"probe and drain are both lead {self.probe}", allowed="two different leads")
 

@@ -36,7 +36,10 @@ def summarise(verdict: Verdict) -> str:
     for finding in verdict.audit.cautions:
         lines += _finding(finding)
     passed = sum(finding.status == "pass" for finding in verdict.audit.findings)
-    lines += _row("checks", f"{passed} passed, {_count(verdict.audit.cautions, 'caution')}, {_count(verdict.audit.alarms, 'alarm')}")
+    lines += _row(
+        "checks",
+        f"{passed} passed, {_count(verdict.audit.cautions, 'caution')}, {_count(verdict.audit.alarms, 'alarm')}",
+    )
     return "\n".join(lines)
 
 
@@ -73,7 +76,9 @@ def _winding(winding: Winding) -> list[str]:
     lines = _row("how sure", _proof(winding))
     for crossing in winding.crossings:
         verb = "filled from" if crossing.direction > 0 else "emptied into"
-        lines += _row("level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}")
+        lines += _row(
+            "level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}"
+        )
     if 0 < winding.leak.bound < 1:
         lines += _row("leak", f"proven to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
     return lines
@@ -93,15 +98,25 @@ def _proof(winding: Winding) -> str:
 
 def _gap(gap: BulkGap) -> list[str]:
     if not gap.is_open:
-        return _row("bulk gap", f"closed, or the level closer than {max(gap.distance_upper, FLOOR / 2):.1e} to a band, at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}")
+        near = max(gap.distance_upper, FLOOR / 2)
+        place = f"k = {gap.momentum:.4f}, phi = {gap.phase:.4f}"
+        return _row("bulk gap", f"closed, or the level closer than {near:.1e} to a band, at {place}")
     kind = "proven" if gap.exact else "estimated"
     low, high = gap.lower_edge.upper, gap.upper_edge.lower
-    window = f"{low:.5g} to {high:.5g}" if isfinite(high - low) else f"below {high:.5g}" if isfinite(high) else f"above {low:.5g}"
+    window = (
+        f"{low:.5g} to {high:.5g}"
+        if isfinite(high - low)
+        else f"below {high:.5g}"
+        if isfinite(high)
+        else f"above {low:.5g}"
+    )
     lines = _row("Fermi window", f"{window}, the level is {gap.distance_lower:.4g} away from the nearer edge")
     if not isfinite(gap.upper):
         return lines
     return [
-        *_row("bulk gap", f"{gap.lower:.5g} to {gap.upper:.5g} ({kind}), smallest at k = {gap.momentum:.4f}, "
-                          f"phi = {gap.phase:.4f}"),
+        *_row(
+            "bulk gap",
+            f"{gap.lower:.5g} to {gap.upper:.5g} ({kind}), smallest at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}",
+        ),
         *lines,
     ]

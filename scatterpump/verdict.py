@@ -1,7 +1,7 @@
 """The verdict: the integer, how sure it is, the margins, and every alarm, in one record.
 
-scatterpump is single-particle theory: no interactions, no decoherence, no temperature.  A verdict guides measurement and
-does not replace it.
+scatterpump is single-particle theory: no interactions, no decoherence, no temperature.  A verdict guides
+measurement and does not replace it.
 """
 
 from __future__ import annotations

@@ -25,7 +25,13 @@ __all__ = ["CHECKS", "LEAD_CHECKS", "examine", "gather", "run_checks"]
 
 LEAD_CHECKS: tuple[Callable[[Pump], Finding], ...] = (leads_still, probe_open, drain_present)
 CHECKS: tuple[Callable[[Evidence], Finding | None], ...] = (
-    cycle_closes, leakage, reflection_invertible, decays, fermi_level_in_gap, integer_agrees, scattering_unitary,
+    cycle_closes,
+    leakage,
+    reflection_invertible,
+    decays,
+    fermi_level_in_gap,
+    integer_agrees,
+    scattering_unitary,
 )
 SAMPLES = 48
 
@@ -33,8 +39,8 @@ SAMPLES = 48
 def examine(pump: Pump) -> AuditReport:
     """Run every check on `pump`.
 
-    Checks of the leads come first; if the probe is closed or a lead depends on the cycle there is no r(phi) to look at, and
-    the report ends there.
+    Checks of the leads come first; if the probe is closed or a lead depends on the cycle there is no r(phi) to look
+    at, and the report ends there.
 
     Raises
     ------

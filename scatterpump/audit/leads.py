@@ -17,9 +17,14 @@ def leads_still(pump: Pump) -> Finding:
         return Finding("leads still", "pass", 0, 0, "leads", "No lead depends on the cycle.")
     lead, names = varying[0]
     return Finding(
-        "leads still", "alarm", len(varying), 0, "leads",
+        "leads still",
+        "alarm",
+        len(varying),
+        0,
+        "leads",
         f"Lead {lead} depends on {', '.join(names)}, so its modes change along the cycle and det r is not comparable.",
-        "Move the modulated part of the lead into the scattering region.", f"lead {lead}",
+        "Move the modulated part of the lead into the scattering region.",
+        f"lead {lead}",
     )
 
 
@@ -29,9 +34,14 @@ def probe_open(pump: Pump) -> Finding:
         system = with_modes(pump)
     except ClosedProbeError:
         return Finding(
-            "probe open", "alarm", 0, 1, "modes",
+            "probe open",
+            "alarm",
+            0,
+            1,
+            "modes",
             f"The probe has no open mode at the Fermi level {pump.fermi_level:g}, so there is no r to wind.",
-            "Raise the probe's hopping or shift its level until the Fermi level lies in its band.", f"lead {pump.probe}",
+            "Raise the probe's hopping or shift its level until the Fermi level lies in its band.",
+            f"lead {pump.probe}",
         )
     modes = len(system.leads[pump.probe].modes(pump.fermi_level)[0].momenta) // 2
     return Finding("probe open", "pass", modes, 1, "modes", f"The probe has {modes} open mode(s) at the Fermi level.")
@@ -42,12 +52,26 @@ def drain_present(pump: Pump) -> Finding:
     if pump.drain is not None:
         modes = len(with_modes(pump).leads[pump.drain].modes(pump.fermi_level)[0].momenta) // 2
         if modes:
-            return Finding("drain present", "pass", modes, 1, "modes", f"The drain has {modes} open mode(s) at the Fermi level.")
-        return Finding("drain present", "alarm", 0, 1, "modes",
-                       f"The drain has no open mode at the Fermi level {pump.fermi_level:g}, so it takes nothing and the true winding is 0.",
-                       "Raise the drain's hopping or shift its level until the Fermi level lies in its band.", f"lead {pump.drain}")
+            return Finding(
+                "drain present", "pass", modes, 1, "modes", f"The drain has {modes} open mode(s) at the Fermi level."
+            )
+        return Finding(
+            "drain present",
+            "alarm",
+            0,
+            1,
+            "modes",
+            f"The drain has no open mode at the Fermi level {pump.fermi_level:g}, so it takes nothing "
+            "and the true winding is 0.",
+            "Raise the drain's hopping or shift its level until the Fermi level lies in its band.",
+            f"lead {pump.drain}",
+        )
     return Finding(
-        "drain present", "alarm", 0, 1, "drains",
+        "drain present",
+        "alarm",
+        0,
+        1,
+        "drains",
         "The far end is a hard wall: r is unitary whatever happens, and the narrow level of the far edge takes back "
         "exactly what the near edge took in, so the true winding is 0.",
         "Attach a drain at the far end.",

@@ -23,7 +23,16 @@ def scattering_unitary(evidence: Evidence) -> Finding:
     value, where = max(errors), f"phi = {PROBED[int(np.argmax(errors))]:g}"
     status = graded(value, GOOD_UNITARITY, BAD_UNITARITY)
     if status == "pass":
-        return Finding("S unitary", status, value, GOOD_UNITARITY, "1", "The computed scattering matrix conserves current.")
-    return Finding("S unitary", status, value, GOOD_UNITARITY, "1",
-                   f"The computed scattering matrix loses or gains {value:.1e} of the current.",
-                   "Check that H is Hermitian, and move the Fermi level away from a lead's band edge.", where)
+        return Finding(
+            "S unitary", status, value, GOOD_UNITARITY, "1", "The computed scattering matrix conserves current."
+        )
+    return Finding(
+        "S unitary",
+        status,
+        value,
+        GOOD_UNITARITY,
+        "1",
+        f"The computed scattering matrix loses or gains {value:.1e} of the current.",
+        "Check that H is Hermitian, and move the Fermi level away from a lead's band edge.",
+        where,
+    )

@@ -2,9 +2,9 @@
 
     H = sum_x v_x |x><x|  -  sum_x (t_x |x><x+1| + h.c.),      x = 0 ... sites-1,
 
-with v_x = level + on-site waves and t_x = hopping + bond waves at x + 1/2, each plus static disorder.  One lead-like site
-stands before and behind it (x = -1 and x = sites), so that r refers to a place where the wire is still uniform.
-A dimerised or a quasi-periodic chain is a matter of two lines:
+with v_x = level + on-site waves and t_x = hopping + bond waves at x + 1/2, each plus static disorder.  One
+lead-like site stands before and behind it (x = -1 and x = sites), so that r refers to a place where the wire is
+still uniform. A dimerised or a quasi-periodic chain is a matter of two lines:
 
     ModulatedChain(sites=80, cycle=Cycle.ellipse(x=("delta", 0, 0.5), y=("stagger", 0, 0.5)),
                    onsite=[Wave("stagger", 2, harmonic=0)], bonds=[Wave("delta", 2, lag=-pi / 2, harmonic=0)])
@@ -54,7 +54,8 @@ class ModulatedChain:
     disorder : Disorder
         Static disorder of on-site energies and hoppings.
     cycle : Cycle
-        What the pump is driven round; by default phi itself.  Waves with a harmonic other than 0 need it to set ``phi``.
+        What the pump is driven round; by default phi itself.  Waves with a harmonic other than 0 need it to set
+        ``phi``.
     name : str
         What to call the device in a report.
 
@@ -87,23 +88,34 @@ class ModulatedChain:
             require(is_name(name), "a parameter of the cycle", name, NAMES)
         for wave in (*self.onsite, *self.bonds):
             for name in sorted(wave.needs - set(have)):
-                raise InputError(f"a wave uses the parameter {name!r}, which the cycle does not set",
-                                 allowed=f"parameters of the cycle: {', '.join(have)}")
+                raise InputError(
+                    f"a wave uses the parameter {name!r}, which the cycle does not set",
+                    allowed=f"parameters of the cycle: {', '.join(have)}",
+                )
 
     @property
     def period(self) -> int | None:
         """Smallest number of sites after which all waves repeat, or None if they do not within the chain."""
         ratios = [Fraction(wave.period).limit_denominator(1000) for wave in (*self.onsite, *self.bonds)]
-        exact = all(abs(float(r) - w.period) < 1e-12 * w.period
-                    for r, w in zip(ratios, (*self.onsite, *self.bonds), strict=True))
+        exact = all(
+            abs(float(r) - w.period) < 1e-12 * w.period
+            for r, w in zip(ratios, (*self.onsite, *self.bonds), strict=True)
+        )
         cell = lcm(*(ratio.numerator for ratio in ratios))
         return cell if exact and cell <= self.sites else None
 
     def pump(self) -> Pump:
         """Build the kwant system and return it as a `Pump`: probe lead 0, drain lead 1."""
         walled = isinstance(self.drain, str)
-        return Pump(self._system(), self.cycle, self.fermi_level, probe=0, drain=None if walled else 1,
-                    bulk=None if self.period is None else self._bulk(self.period), name=self.name)
+        return Pump(
+            self._system(),
+            self.cycle,
+            self.fermi_level,
+            probe=0,
+            drain=None if walled else 1,
+            bulk=None if self.period is None else self._bulk(self.period),
+            name=self.name,
+        )
 
     def _system(self) -> kwant.Builder:
         import kwant

@@ -1,7 +1,7 @@
 """The parts a device is described with: waves, leads, disorder.
 
-All are frozen records of plain numbers, in the energy unit of the device and lattice constants; a device file has the same
-fields under the same names.
+All are frozen records of plain numbers, in the energy unit of the device and lattice constants; a device file has
+the same fields under the same names.
 """
 
 from __future__ import annotations
@@ -58,8 +58,12 @@ class Wave:
     def __post_init__(self) -> None:
         _finite(self, "amplitude", "period", "lag")
         require(self.period > 0, "period", self.period, "a positive number of lattice constants")
-        require(not isinstance(self.amplitude, str) or is_name(self.amplitude), "amplitude", self.amplitude,
-                "a number, or the name of a parameter of the cycle")
+        require(
+            not isinstance(self.amplitude, str) or is_name(self.amplitude),
+            "amplitude",
+            self.amplitude,
+            "a number, or the name of a parameter of the cycle",
+        )
 
     @property
     def needs(self) -> frozenset[str]:

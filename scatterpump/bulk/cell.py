@@ -83,6 +83,9 @@ def bloch_cell(pump: Pump) -> BlochCell:
         If the pump has none: its modulation does not repeat within the device, or no cell was given.
     """
     if pump.bulk is None:
-        raise InputError("the pump has no bulk cell", allowed="a modulation that repeats within the device, or "
-                         "Pump(..., bulk=cell) with one cell of the interior as a kwant Builder with translational symmetry")
+        raise InputError(
+            "the pump has no bulk cell",
+            allowed="a modulation that repeats within the device, or "
+            "Pump(..., bulk=cell) with one cell of the interior as a kwant Builder with translational symmetry",
+        )
     return BlochCell(pump)

@@ -1,8 +1,8 @@
 """Chern number of the filled bands on the (k, phi) torus, by the lattice method.
 
-On a grid, F = Im log of the product of link overlaps round each plaquette, in the order (k, phi), and C = sum F / 2 pi:
-an integer by construction, the right one once no plaquette comes near half a turn.  With this orientation C is the winding that an
-endless pump would show, C = +W.
+On a grid, F = Im log of the product of link overlaps round each plaquette, in the order (k, phi), and C = sum F / 2
+pi: an integer by construction, the right one once no plaquette comes near half a turn.  With this orientation C is
+the winding that an endless pump would show, C = +W.
 
 References: T. Fukui, Y. Hatsugai, H. Suzuki, J. Phys. Soc. Jpn. 74, 1674 (2005).
 """

@@ -1,7 +1,8 @@
 """How fast a state at the Fermi level dies out inside the pump.
 
-In the gap every solution of H(k, phi) psi = E psi has a complex k.  The slowest one, beta = e^{ik} with |beta| < 1 largest, rules the leak
-of a pump of n cells: |t|^2 ~ |beta|^(2n).  A propagating solution has |beta| = 1: no length helps.
+In the gap every solution of H(k, phi) psi = E psi has a complex k.  The slowest one, beta = e^{ik} with |beta| < 1
+largest, rules the leak of a pump of n cells: |t|^2 ~ |beta|^(2n).  A propagating solution has |beta| = 1: no length
+helps.
 
 References: W. Kohn, Phys. Rev. 115, 809 (1959) (citation from memory).
 """

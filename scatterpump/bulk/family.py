@@ -186,7 +186,7 @@ def _spline(cell: BlochCell) -> Pieces:
     knots = np.append(np.concatenate(parts), edges[-1])
     values = cell.blocks(knots)
     first = np.arange(0, len(knots) - 1, count)
-    splines = [CubicSpline(knots[i:i + count + 1], values[i:i + count + 1]) for i in first]
+    splines = [CubicSpline(knots[i : i + count + 1], values[i : i + count + 1]) for i in first]
     return Pieces(knots, np.concatenate([spline.c[::-1] for spline in splines], axis=1), first)
 
 

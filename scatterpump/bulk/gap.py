@@ -181,8 +181,18 @@ def _bracketed(bands: _Bands, family: BlochFamily, found: Found, filled: int) ->
     lower = max(0.0, min(upper, max(between, bottom.lower - top.upper)))
     distance_lower = max(0.0, min(bottom.lower - level, level - top.upper))
     distance_upper = max(0.0, min(bottom.upper - level, level - top.lower))
-    return BulkGap(lower, upper, *_angles(found.place[2]), filled, top, bottom, distance_lower, distance_upper,
-                   found.evaluations + bands.solved, family.exact)
+    return BulkGap(
+        lower,
+        upper,
+        *_angles(found.place[2]),
+        filled,
+        top,
+        bottom,
+        distance_lower,
+        distance_upper,
+        found.evaluations + bands.solved,
+        family.exact,
+    )
 
 
 def _direct(energies: list[float], filled: int) -> float:
@@ -198,9 +208,14 @@ def _judged(gap: BulkGap, bands: _Bands, found: Found, floor: float) -> BulkGap:
     place = _meeting(bands, found.place[side], gap.filled - side) if meets else found.place[side]
     energies, (momentum, phase) = bands.at(place), _angles(place)
     return replace(
-        gap, momentum=momentum, phase=phase, evaluations=gap.evaluations + bands.solved - before,
-        lower=0.0, upper=min(gap.upper, _direct(energies, gap.filled)),
-        distance_lower=0.0, distance_upper=min(gap.distance_upper, *map(abs, energies)),
+        gap,
+        momentum=momentum,
+        phase=phase,
+        evaluations=gap.evaluations + bands.solved - before,
+        lower=0.0,
+        upper=min(gap.upper, _direct(energies, gap.filled)),
+        distance_lower=0.0,
+        distance_upper=min(gap.distance_upper, *map(abs, energies)),
     )
 
 

@@ -196,8 +196,10 @@ def _measured(family: Family, centre: Reals, half: Reals, stretch: NDArray[np.in
     """Solve one eigenproblem at each centre, some thousands at a time."""
     bands = family(centre[:1]).shape[-1]
     size = max(1, CHUNK // bands**2)
-    parts = [_solved(family, centre[i:i + size], half[i:i + size], stretch[i:i + size], filled)
-             for i in range(0, max(1, len(centre)), size)]
+    parts = [
+        _solved(family, centre[i : i + size], half[i : i + size], stretch[i : i + size], filled)
+        for i in range(0, max(1, len(centre)), size)
+    ]
     return _Boxes._make(map(np.concatenate, zip(*parts, strict=True)))
 
 
@@ -231,7 +233,9 @@ def _side(levels: Reals, slopes: NDArray[np.complex128], size: int) -> tuple[Rea
     beyond = weight[..., ::-1].cumsum(axis=3)[..., ::-1].cumsum(axis=2)
     coupling = np.diagonal(beyond, offset=1, axis1=2, axis2=3)
     pad = size - states
-    norms = [np.sqrt(np.pad(part, ((0, 0), (0, 0), (0, size - part.shape[2])), constant_values=fill)).swapaxes(1, 2)
-             for part, fill in ((mixing, np.inf), (coupling, 0.0))]
+    norms = [
+        np.sqrt(np.pad(part, ((0, 0), (0, 0), (0, size - part.shape[2])), constant_values=fill)).swapaxes(1, 2)
+        for part, fill in ((mixing, np.inf), (coupling, 0.0))
+    ]
     ahead = np.pad(levels[:, 1:] - levels[:, :1], ((0, 0), (0, 1 + pad)), constant_values=np.inf)
     return levels[:, 0], slope, norms[0], norms[1], ahead

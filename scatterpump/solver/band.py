@@ -1,13 +1,15 @@
 """Banded matrices: solving with them, and proving that their singular values are not small (arrays only).
 
-A matrix of n rows and half-bandwidth b is held as ``band``, shape (2b+1, n), with ``band[b + i - j, j] = A_ij``; places outside the
-matrix are zero.  A Hermitian one is also held as ``lower``, shape (d+1, n), with ``lower[i - j, j] = M_ij`` for i >= j.
+A matrix of n rows and half-bandwidth b is held as ``band``, shape (2b+1, n), with ``band[b + i - j, j] = A_ij``;
+places outside the matrix are zero.  A Hermitian one is also held as ``lower``, shape (d+1, n), with ``lower[i - j,
+j] = M_ij`` for i >= j.
 
-A proof of positivity is one Cholesky factorisation.  If it runs through in floating point, M + E is positive definite for some
-|E_ij| <= gamma sqrt(M_ii M_jj) with gamma = (d+3) eps, hence |E| <= gamma (2d+1) max M_ii; the callers' shifts include that.
+A proof of positivity is one Cholesky factorisation.  If it runs through in floating point, M + E is positive
+definite for some |E_ij| <= gamma sqrt(M_ii M_jj) with gamma = (d+3) eps, hence |E| <= gamma (2d+1) max M_ii; the
+callers' shifts include that.
 
-References: N. J. Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed., SIAM 2002, theorem 10.3; S. M. Rump, BIT 46,
-433 (2006) (citations from memory).
+References: N. J. Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed., SIAM 2002, theorem 10.3; S. M.
+Rump, BIT 46, 433 (2006) (citations from memory).
 """
 
 from __future__ import annotations

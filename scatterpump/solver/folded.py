@@ -2,12 +2,14 @@
 
     A(phi) = E - H(phi) - Sigma_p - Sigma_d,     Gamma_p = i (Sigma_p - Sigma_p^+) = W W^+,     r = -1 + i W^+ A^-1 W.
 
-Only orbitals whose row of H changes along the cycle matter to how r turns; stretches of still orbitals between them and a lead are eliminated once.
-That multiplies r by a constant unitary matrix (if r_Q is what the still stretch reflects when cut off, r = -r_Q r_folded), so
-windings and singular values stay as they are.  The basis of the probe's channels is that of W; its overall phase is physical: an eigenvalue
-+1 of r_folded marks a level of the device that is closed towards the probe.
+Only orbitals whose row of H changes along the cycle matter to how r turns; stretches of still orbitals between them
+and a lead are eliminated once. That multiplies r by a constant unitary matrix (if r_Q is what the still stretch
+reflects when cut off, r = -r_Q r_folded), so windings and singular values stay as they are.  The basis of the
+probe's channels is that of W; its overall phase is physical: an eigenvalue +1 of r_folded marks a level of the
+device that is closed towards the probe.
 
-Orbitals are ordered so that the matrix is a narrow band (reverse Cuthill-McKee); parts that no path connects to the probe are dropped.
+Orbitals are ordered so that the matrix is a narrow band (reverse Cuthill-McKee); parts that no path connects to the
+probe are dropped.
 
 References: D. S. Fisher, P. A. Lee, Phys. Rev. B 23, 6851 (1981) (citation from memory).
 """
@@ -98,8 +100,9 @@ class FoldedDevice:
         change = 0.5j * (good @ good.conj().T - self.probe @ self.probe.conj().T)
         rows, columns = np.nonzero(change)
         still = self.still + pack(rows, columns, change[rows, columns], self.size, self.half)
-        device = FoldedDevice(self.size, self.half, self.rows, self.columns, self.path, still, good, self.drain,
-                              self.distance, 0)
+        device = FoldedDevice(
+            self.size, self.half, self.rows, self.columns, self.path, still, good, self.drain, self.distance, 0
+        )
         return device, width / strength
 
 
@@ -168,7 +171,7 @@ def _orbital_offsets(system: Any) -> Indices:
 
 
 def _structure(system: Any) -> Any:
-    """Places where H may have elements, whatever their values at some phase: every site and every hopping of the system."""
+    """Places where H may have elements, whatever their values at some phase: all sites and hoppings of the system."""
     from scipy.sparse import coo_matrix
 
     offsets = _orbital_offsets(system)
@@ -195,8 +198,14 @@ def _moving(path: Path, rows: Indices, size: int) -> NDArray[np.bool_]:
     return moves
 
 
-def _eliminate(energy: float, structure: Any, hamiltonian: Any, leads: dict[int, Any],
-               channels: dict[int, int], moves: NDArray[np.bool_]) -> tuple[Indices, dict[int, Any]]:
+def _eliminate(
+    energy: float,
+    structure: Any,
+    hamiltonian: Any,
+    leads: dict[int, Any],
+    channels: dict[int, int],
+    moves: NDArray[np.bool_],
+) -> tuple[Indices, dict[int, Any]]:
     """Fold the still stretches that touch one lead only into its self-energy, if it touches nothing else.
 
     Returns the orbitals that are left and the self-energies of all leads.
@@ -255,8 +264,16 @@ def _order(structure: Any, leads: dict[int, Any], alive: Indices, probe: int) ->
     return np.asarray(alive[kept[order]], dtype=int)
 
 
-def _assemble(pump: Pump, path: Path, rows: Indices, columns: Indices, leads: dict[int, Any],
-              channels: dict[int, int], order: Indices, samples: int) -> FoldedDevice:
+def _assemble(
+    pump: Pump,
+    path: Path,
+    rows: Indices,
+    columns: Indices,
+    leads: dict[int, Any],
+    channels: dict[int, int],
+    order: Indices,
+    samples: int,
+) -> FoldedDevice:
     size, place = len(order), np.full(leads[pump.probe].shape[0], -1)
     place[order] = np.arange(size)
     kept = np.flatnonzero((place[rows] >= 0) & (place[columns] >= 0))

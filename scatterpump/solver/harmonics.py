@@ -1,8 +1,8 @@
 """A periodic array as a few Fourier coefficients: f(phi) = sum_k c_k exp(i k phi).
 
 Most pumps are trigonometric polynomials of low degree in phi.  Then 2K+1 samples say all there is to know, and the
-bounds a proof needs on the change of H are exact.  The degree is found by doubling, and every candidate is verified at angles that
-the fit has not seen.
+bounds a proof needs on the change of H are exact.  The degree is found by doubling, and every candidate is verified
+at angles that the fit has not seen.
 """
 
 from __future__ import annotations
@@ -75,7 +75,9 @@ def fit(sample: Callable[[float], NDArray[Any]]) -> Harmonics | None:
         values = np.array([sample(float(angle)) for angle in angles], dtype=complex)
         spent += count
         found = Harmonics(np.fft.fftshift(np.fft.fft(values, axis=0) / count, axes=0), spent)
-        if all(np.abs(found.at(p) - v).max(initial=0.0) < TOLERANCE * scale for p, v in zip(CHECKS, checks, strict=True)):
+        if all(
+            np.abs(found.at(p) - v).max(initial=0.0) < TOLERANCE * scale for p, v in zip(CHECKS, checks, strict=True)
+        ):
             return found
         degree = max(1, 2 * degree)
     return None

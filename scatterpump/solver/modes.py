@@ -33,8 +33,10 @@ def with_modes(pump: Pump) -> Any:
     try:
         system = pump.finalized.precalculate(pump.fermi_level, params=pump.parameters(0.0), what="modes")
     except Exception as cause:  # kwant meets modes without velocity at a band edge, or a user's value function fails
-        raise InputError(f"the modes of the leads cannot be computed at the Fermi level {pump.fermi_level:g} ({cause})",
-                         allowed="an energy away from every lead's band edges") from cause
+        raise InputError(
+            f"the modes of the leads cannot be computed at the Fermi level {pump.fermi_level:g} ({cause})",
+            allowed="an energy away from every lead's band edges",
+        ) from cause
     propagating, _ = system.leads[pump.probe].modes(pump.fermi_level)
     if len(propagating.momenta) == 0:
         raise ClosedProbeError(pump.fermi_level, pump.probe)

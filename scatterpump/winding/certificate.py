@@ -1,23 +1,24 @@
 """The proof: a winding number that covers every phi, or an honest refusal.
 
-Looks at the device are spread over the cycle, each next one in the middle of what is still open or where a look expects a resonance.  One look
-proves an interval around it in which r stays invertible and turns in a known way (see `radius`).  Where the intervals of two neighbours
-meet, the turn between them is exact; once the cycle is covered, so is the winding.  A narrow level cannot hide: from far away |G| already
-grows like one over the distance to it.
+Looks at the device are spread over the cycle, each next one in the middle of what is still open or where a look
+expects a resonance.  One look proves an interval around it in which r stays invertible and turns in a known way
+(see `radius`).  Where the intervals of two neighbours meet, the turn between them is exact; once the cycle is
+covered, so is the winding.  A narrow level cannot hide: from far away |G| already grows like one over the distance
+to it.
 
-A level narrower than rounding allows cannot be resolved at the actual contact.  The same device behind a good contact has the same winding
-as long as less leaks to the drain than the contact lets through (see `reference`), and there nothing is narrow.  Without any drain A and B are adjoint to each
-other, so det r = (-1)^m det B / det A winds minus twice as often as det A, which does not wind at all: the number is 0.
+A level narrower than rounding allows cannot be resolved at the actual contact.  The same device behind a good
+contact has the same winding as long as less leaks to the drain than the contact lets through (see `reference`), and
+there nothing is narrow.  Without any drain A and B are adjoint to each other, so det r = (-1)^m det B / det A winds
+minus twice as often as det A, which does not wind at all: the number is 0.
 
-Proven: everything above, in exact arithmetic about matrices within the stated noise of the given ones, if the bounds on the change of H are exact
-(`Winding.exact`).  Resting on floating point: that noise, 20 eps |A| plus the residuals met.  Estimated: the change of H along cycles that are neither
-trigonometric nor straight between corners.
+Proven: everything above, in exact arithmetic about matrices within the stated noise of the given ones, if the
+bounds on the change of H are exact (`Winding.exact`).  Resting on floating point: that noise, 20 eps |A| plus the
+residuals met.  Estimated: the change of H along cycles that are neither trigonometric nor straight between corners.
 """
 
 from __future__ import annotations
 
 import numpy as np
-from numpy.typing import NDArray
 
 from scatterpump.errors import InputError, SingularReflectionError
 from scatterpump.pump import Pump
@@ -79,7 +80,8 @@ def certify(pump: Pump, *, budget: int = 400, progress: Progress | None = None) 
 def behind_good_contact(pump: Pump) -> int | None:
     """Return the winding that the same device would have behind a good contact, or None if it cannot be proven.
 
-    Where it differs from the winding at the actual contact, more leaks through the device than that contact lets through.
+    Where it differs from the winding at the actual contact, more leaks through the device than that contact lets
+    through.
     """
     device = fold(pump)
     good, _ = device.with_broadening(GOOD_CONTACT * _scale(device))
@@ -134,13 +136,25 @@ def _proven(device: FoldedDevice, cover: Cover, seen: Reference, looks: int, con
     turns = sum(join(centres)) / TURN + 0.0
     number = round(turns)
     if abs(turns - number) > WHOLE:
-        return _refused(device, cover, seen, looks, f"the parts of the proof add up to {turns:.6f} turns, which is no integer")
+        return _refused(
+            device, cover, seen, looks, f"the parts of the proof add up to {turns:.6f} turns, which is no integer"
+        )
     smallest = float(np.sqrt(1 - seen.leak))
     if contact is None:
         smallest = max(smallest, smallest_over(centres))
     return Winding(
-        number, True, looks, turns, find_crossings(device, centres, contact), covering(centres), (), "", smallest,
-        Leak(seen.leak, seen.evaluations), device.path.exact, "contact" if contact is None else "open reference",
+        number,
+        True,
+        looks,
+        turns,
+        find_crossings(device, centres, contact),
+        covering(centres),
+        (),
+        "",
+        smallest,
+        Leak(seen.leak, seen.evaluations),
+        device.path.exact,
+        "contact" if contact is None else "open reference",
     )
 
 
@@ -148,24 +162,63 @@ def _refused(device: FoldedDevice, cover: Cover, seen: Reference, looks: int, re
     centres = list(cover.centres)
     turns = sum(join(centres)) / TURN if centres else 0.0
     unproven = tuple((gap.start, gap.end) for gap in open_gaps(centres)) if centres else ((0.0, TURN),)
-    return Winding(None, False, looks, turns, (), covering(centres), unproven, reason, float(np.sqrt(1 - seen.leak)),
-                   Leak(seen.leak, seen.evaluations), device.path.exact, "contact")
+    return Winding(
+        None,
+        False,
+        looks,
+        turns,
+        (),
+        covering(centres),
+        unproven,
+        reason,
+        float(np.sqrt(1 - seen.leak)),
+        Leak(seen.leak, seen.evaluations),
+        device.path.exact,
+        "contact",
+    )
 
 
 def _by_absence_of_drain(device: FoldedDevice, cover: Cover) -> Winding:
-    return Winding(0, True, cover.looks, 0.0, (), covering(list(cover.centres)), (), "", 1.0, Leak(0.0, 0), device.path.exact,
-                   "no drain")
+    return Winding(
+        0,
+        True,
+        cover.looks,
+        0.0,
+        (),
+        covering(list(cover.centres)),
+        (),
+        "",
+        1.0,
+        Leak(0.0, 0),
+        device.path.exact,
+        "no drain",
+    )
 
 
-def _at_open_reference(device: FoldedDevice, good: FoldedDevice, contact: Contact, slopes: Slopes, here: Cover,
-                       budget: int, progress: Progress | None) -> Winding:
+def _at_open_reference(
+    device: FoldedDevice,
+    good: FoldedDevice,
+    contact: Contact,
+    slopes: Slopes,
+    here: Cover,
+    budget: int,
+    progress: Progress | None,
+) -> Winding:
     """Prove the winding behind a good contact, and that the actual one does not change it."""
-    seen = survey(good, slopes, contact, goal=LEAK_GOAL, need_winding=True, budget=min(budget - here.looks, REFERENCE_BUDGET))
+    seen = survey(
+        good, slopes, contact, goal=LEAK_GOAL, need_winding=True, budget=min(budget - here.looks, REFERENCE_BUDGET)
+    )
     looks = here.looks + (seen.needed or seen.evaluations)
     if not seen.same_winding:
-        return _refused(device, here, seen, looks, f"{here.reason}, and what leaks behind a good contact is not proven to be less than "
-                        f"the share {contact.transparency:.1e} that the actual one lets through; a longer device or a stronger "
-                        "contact may close the proof")
+        return _refused(
+            device,
+            here,
+            seen,
+            looks,
+            f"{here.reason}, and what leaks behind a good contact is not proven to be less than "
+            f"the share {contact.transparency:.1e} that the actual one lets through; a longer device or a stronger "
+            "contact may close the proof",
+        )
     there = cover_cycle(good, slopes, budget=budget, progress=progress, seeds=seen.looks)
     if not there.closed:
         return _refused(device, there, seen, looks + there.looks, there.reason)

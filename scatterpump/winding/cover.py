@@ -15,8 +15,20 @@ from scatterpump.winding.radius import RIGHT_ANGLE, Model, Rates, length_limit, 
 from scatterpump.winding.unwrap import turn
 
 __all__ = [
-    "START", "Arm", "Centre", "Cover", "Gap", "Progress", "centre", "centre_of", "cover_cycle", "covering", "join", "neighbours",
-    "open_gaps", "smallest_over",
+    "START",
+    "Arm",
+    "Centre",
+    "Cover",
+    "Gap",
+    "Progress",
+    "centre",
+    "centre_of",
+    "cover_cycle",
+    "covering",
+    "join",
+    "neighbours",
+    "open_gaps",
+    "smallest_over",
 ]
 
 Floats = NDArray[np.float64]
@@ -76,8 +88,9 @@ class Cover:
         return not self.reason
 
 
-def cover_cycle(device: FoldedDevice, slopes: Slopes, *, budget: int, progress: Progress | None = None,
-                seeds: tuple[Look, ...] = ()) -> Cover:
+def cover_cycle(
+    device: FoldedDevice, slopes: Slopes, *, budget: int, progress: Progress | None = None, seeds: tuple[Look, ...] = ()
+) -> Cover:
     """Take rounds of looks until nothing is open, the budget is spent, or a look proves nothing.
 
     `seeds` are looks at this device already taken; without any, five are spread over the cycle.
@@ -98,8 +111,9 @@ def cover_cycle(device: FoldedDevice, slopes: Slopes, *, budget: int, progress: 
             return Cover(tuple(centres), looks, reason)
 
 
-def _reason_to_stop(centres: list[Centre], found: list[Centre | None], gaps: list[Gap], places: list[float], looks: int,
-                    budget: int) -> str | None:
+def _reason_to_stop(
+    centres: list[Centre], found: list[Centre | None], gaps: list[Gap], places: list[float], looks: int, budget: int
+) -> str | None:
     """Empty if the cycle is covered, a reason if it cannot be, None to go on."""
     if centres and not gaps:
         return ""
@@ -193,7 +207,7 @@ def neighbours(centres: list[Centre]) -> list[tuple[Centre, Centre, float]]:
 
 
 def _places(left: Centre, right: Centre, end: float, start: float, stop: float) -> tuple[float, ...]:
-    """Resonances that a neighbour expects inside the gap, else as many even places as its neighbours' reach suggests."""
+    """A resonance that a neighbour expects inside the gap, else as many even places as the reach of both suggests."""
     expected = [left.phase + p for p in left.above.poles] + [end + p for p in right.below.poles]
     inside = sorted(p for p in expected if start < p < stop)
     if inside:
@@ -213,7 +227,8 @@ def covering(centres: list[Centre]) -> tuple[tuple[float, float], ...]:
 def smallest_over(centres: list[Centre]) -> float:
     """Return a lower bound on the smallest singular value of r over a covered cycle.
 
-    Over a reach of rule L, r = U r_i where the smallest singular value of U is at least exp(-pi/2); rule S gives its own floor.
+    Over a reach of rule L, r = U r_i where the smallest singular value of U is at least exp(-pi/2); rule S gives
+    its own floor.
     """
     return min(arm.floor for c in centres for arm in (c.below, c.above))
 
@@ -221,8 +236,9 @@ def smallest_over(centres: list[Centre]) -> float:
 def join(centres: list[Centre]) -> list[float]:
     """Return the change of arg det r from each centre to the next one round the cycle, in radians.
 
-    Proven where the two reaches overlap; elsewhere the same formula at the middle of the gap is only a guess.  The models of a centre's two
-    arms agree at the centre up to its noise only, so the step between them is taken like any other.
+    Proven where the two reaches overlap; elsewhere the same formula at the middle of the gap is only a guess.  The
+    models of a centre's two arms agree at the centre up to its noise only, so the step between them is taken like
+    any other.
     """
     steps = []
     for left, right, end in neighbours(centres):

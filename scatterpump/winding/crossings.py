@@ -1,8 +1,9 @@
 """Where levels cross the Fermi level, read off a finished proof.
 
-In the basis of the probe's broadening r = -1 + i W^+ G W = -(1 - iK/2)/(1 + iK/2) with K = W^+ (E - H - Re Sigma_p - Sigma_d)^-1 W: an eigenvalue of r
-is +1 exactly where the device, closed towards the probe, has a level at E, whatever the contact.  Between two looks the proof
-knows the turn of det r exactly, and so the number of eigenvalues that passed +1; bisection finds the places.
+In the basis of the probe's broadening r = -1 + i W^+ G W = -(1 - iK/2)/(1 + iK/2) with K = W^+ (E - H - Re Sigma_p
+- Sigma_d)^-1 W: an eigenvalue of r is +1 exactly where the device, closed towards the probe, has a level at E,
+whatever the contact.  Between two looks the proof knows the turn of det r exactly, and so the number of eigenvalues
+that passed +1; bisection finds the places.
 """
 
 from __future__ import annotations
@@ -34,14 +35,18 @@ def find_crossings(device: FoldedDevice, centres: list[Centre], contact: Contact
     Parameters
     ----------
     contact : Contact, optional
-        If `device` stands behind a better contact than the actual one, how they compare; widths are then the actual ones.
+        If `device` stands behind a better contact than the actual one, how they compare; widths are then the actual
+        ones.
     """
     found: list[Crossing] = []
     for left, right, end in neighbours(centres):
         count = _Counter(device, left, right, end)
         total = count(end)
         if total:
-            found += [_described(device, phase, number, contact) for phase, number in _located(count, left.phase, 0, end, total)]
+            found += [
+                _described(device, phase, number, contact)
+                for phase, number in _located(count, left.phase, 0, end, total)
+            ]
     return tuple(sorted(found, key=lambda crossing: crossing.phase))
 
 
@@ -65,8 +70,11 @@ class _Counter:
             near, far = meet - self.left.phase, meet - self.end
             here = self.right.seen.reflection if phase == self.end else _reflection(self.device, phase)
             joint = self.right.below.model.at(far)
-            turned = (_turn(self.left.above, near, joint) - self.right.below.model.turned(far)
-                      + _turn(self.right.below, phase - self.end, here))
+            turned = (
+                _turn(self.left.above, near, joint)
+                - self.right.below.model.turned(far)
+                + _turn(self.right.below, phase - self.end, here)
+            )
         change = _angles(here).sum() - _angles(begin).sum()
         return round(float(turned - change) / TURN)
 
@@ -84,10 +92,16 @@ def _angles(reflection: Complex) -> NDArray[np.float64]:
 def _reflection(device: FoldedDevice, phase: float) -> Complex:
     lu = factor(device.matrix(phase))
     size = device.probe.shape[1]
-    return np.eye(size, dtype=complex) if lu is None else 1j * (device.probe.conj().T @ lu.solve(device.probe)) - np.eye(size)
+    return (
+        np.eye(size, dtype=complex)
+        if lu is None
+        else 1j * (device.probe.conj().T @ lu.solve(device.probe)) - np.eye(size)
+    )
 
 
-def _located(count: Callable[[float], int], low: float, at_low: int, high: float, at_high: int) -> list[tuple[float, int]]:
+def _located(
+    count: Callable[[float], int], low: float, at_low: int, high: float, at_high: int
+) -> list[tuple[float, int]]:
     """Bisect for the places where `count` changes, and by how much."""
     if at_low == at_high:
         return []

@@ -1,12 +1,15 @@
 """How little reaches the drain, near one look: t with the decay of the gap built in (arrays only).
 
-With D = diag(e^{alpha n}), n the number of hops from the probe, A^alpha = D A D^-1 is the same banded matrix with hoppings times e^{+-alpha}, and
-t = W_R^+ G W = (W_R^+ D^-1) G^alpha W.  The first factor is as small as e^{-alpha N}, so
+With D = diag(e^{alpha n}), n the number of hops from the probe, A^alpha = D A D^-1 is the same banded matrix with
+hoppings times e^{+-alpha}, and t = W_R^+ G W = (W_R^+ D^-1) G^alpha W.  The first factor is as small as e^{-alpha
+N}, so
 
-    |t(phi_i + s)| <= |t_i| + |W_R^+ D^-1 G_i^alpha| |G_i^alpha W| x / (1 - g x),   x >= |A^alpha(phi_i + s) - A^alpha_i|,  g = |G_i^alpha|
+    |t(phi_i + s)| <= |t_i| + |W_R^+ D^-1 G_i^alpha| |G_i^alpha W| x / (1 - g x),   x >= |A^alpha(phi_i + s) -
+    A^alpha_i|,  g = |G_i^alpha|
 
-is a small number as soon as g x < 1 (the argument of J. M. Combes, L. Thomas, Commun. Math. Phys. 34, 251 (1973), citation from memory).
-g is proven by a Cholesky factorisation; t_i and the columns rest on floating point, whose noise is part of x.
+is a small number as soon as g x < 1 (the argument of J. M. Combes, L. Thomas, Commun. Math. Phys. 34, 251 (1973),
+citation from memory). g is proven by a Cholesky factorisation; t_i and the columns rest on floating point, whose
+noise is part of x.
 """
 
 from __future__ import annotations
@@ -78,8 +81,14 @@ def damped(device: FoldedDevice, band: Complex, alpha: float, sideways: float) -
         return None
     small = float(np.exp(-alpha * hops))
     residual = _norm(apply(scaled, right) - device.probe) / max(_norm(right), 1e-300)
-    return Damped(alpha, small * _norm(leaving.conj().T @ right), small * _norm(left) * _norm(right), g_norm,
-                  2 * float(np.sinh(alpha)) * sideways, ROUNDING * EPS * row_sum_norm(scaled) + residual)
+    return Damped(
+        alpha,
+        small * _norm(leaving.conj().T @ right),
+        small * _norm(left) * _norm(right),
+        g_norm,
+        2 * float(np.sinh(alpha)) * sideways,
+        ROUNDING * EPS * row_sum_norm(scaled) + residual,
+    )
 
 
 def sideways_slope(device: FoldedDevice) -> float:

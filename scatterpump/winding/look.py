@@ -1,9 +1,10 @@
 """One look at the device: everything a single factorisation at one phi tells a proof.
 
-Proven here (by Cholesky factorisations, in floating point with a rounding allowance): lower bounds on the smallest singular values of
-A and of B = A - i Gamma, and on the next ones once the k smallest are split off.  Estimated only to propose values for those proofs:
-the singular vectors, whose residual is handed on as part of `noise`.  Resting on floating point: r and the columns W^+ G, G W are those of
-a matrix within `noise` of A; `noise` is 20 eps |A| plus what the residuals show.
+Proven here (by Cholesky factorisations, in floating point with a rounding allowance): lower bounds on the smallest
+singular values of A and of B = A - i Gamma, and on the next ones once the k smallest are split off.  Estimated only
+to propose values for those proofs: the singular vectors, whose residual is handed on as part of `noise`.  Resting
+on floating point: r and the columns W^+ G, G W are those of a matrix within `noise` of A; `noise` is 20 eps |A|
+plus what the residuals show.
 """
 
 from __future__ import annotations
@@ -28,8 +29,8 @@ REGULAR = 0.3
 class Split:
     """The k smallest singular values taken out of A (k is the length of `sigma`).
 
-    With A = U diag(sigma) V^+ and G_c = A^-1 without its k largest parts: left = W^+ G_c, right = G_c W, far = -1 + i W^+ G_c W,
-    into = W^+ V_k, out = U_k^+ W.
+    With A = U diag(sigma) V^+ and G_c = A^-1 without its k largest parts: left = W^+ G_c, right = G_c W, far = -1 +
+    i W^+ G_c W, into = W^+ V_k, out = U_k^+ W.
 
     Attributes
     ----------
@@ -123,9 +124,15 @@ def look(phase: float, band: Complex, probe: Complex, *, splitting: bool = True)
     squared = gram(band)
     half = len(band) // 2
     return Look(
-        phase, reflection,
-        inverse_norm(squared, sigma[0], half), inverse_norm(gram(other), sigma_b[0], half),
-        a_columns, b_columns, _norm(left), _norm(right), noise,
+        phase,
+        reflection,
+        inverse_norm(squared, sigma[0], half),
+        inverse_norm(gram(other), sigma_b[0], half),
+        a_columns,
+        b_columns,
+        _norm(left),
+        _norm(right),
+        noise,
         _split(band, lu, squared, probe, sigma, v, noise) if splitting else None,
     )
 
@@ -147,7 +154,7 @@ def _residual(band: Complex, solution: Complex, right: Complex) -> float:
 
 
 def small_singular(band: Complex, lu: BandLU) -> tuple[NDArray[np.float64], Complex]:
-    """Upper estimates of the smallest singular values of A with right vectors, from a block Krylov space of (A^+ A)^-1."""
+    """Upper estimates of the smallest singular values of A, with right vectors, from a Krylov space of (A^+ A)^-1."""
     n = band.shape[1]
     block = np.random.default_rng(11).standard_normal((n, min(BLOCK, n))).astype(complex)
     blocks = []
@@ -168,8 +175,9 @@ def inverse_norm(squared: Complex, estimate: float, half: int) -> float:
     return float("inf")
 
 
-def _split(band: Complex, lu: BandLU, squared: Complex, probe: Complex, sigma: NDArray[np.float64], v: Complex,
-           noise: float) -> Split | None:
+def _split(
+    band: Complex, lu: BandLU, squared: Complex, probe: Complex, sigma: NDArray[np.float64], v: Complex, noise: float
+) -> Split | None:
     candidates = sigma[: min(4, len(sigma))]
     if len(candidates) < 2:
         return None
@@ -181,12 +189,22 @@ def _split(band: Complex, lu: BandLU, squared: Complex, probe: Complex, sigma: N
     residual = _norm(apply(band, v) - u * smallest) + _norm(apply_adjoint(band, u) - v * smallest)
     right = _deflated(lu, probe, u, v, adjoint=False)
     left = _deflated(lu, probe, v, u, adjoint=True)
-    return Split(smallest, u, v, next_sigma, _norm(left), _norm(right), 1j * (probe.conj().T @ right) - np.eye(probe.shape[1]),
-                 probe.conj().T @ v, u.conj().T @ probe, noise + residual)
+    return Split(
+        smallest,
+        u,
+        v,
+        next_sigma,
+        _norm(left),
+        _norm(right),
+        1j * (probe.conj().T @ right) - np.eye(probe.shape[1]),
+        probe.conj().T @ v,
+        u.conj().T @ probe,
+        noise + residual,
+    )
 
 
 def _refined(band: Complex, lu: BandLU, v: Complex) -> tuple[Complex, Complex, NDArray[np.float64]]:
-    """Sharpen singular vectors by inverse iteration; u = A v / sigma alone would lose as many digits as sigma is small."""
+    """Sharpen singular vectors by inverse iteration; u = A v / sigma alone loses as many digits as sigma is small."""
     for _ in range(2):
         u = np.linalg.qr(lu.solve(v, adjoint=True))[0]
         v = np.linalg.qr(lu.solve(u))[0]
@@ -206,8 +224,9 @@ def _deflated(lu: BandLU, right: Complex, u: Complex, v: Complex, *, adjoint: bo
 def _next_sigma(squared: Complex, v: Complex, estimate: float, half: int) -> float:
     """Proven lower bound on the (k+1)-th smallest singular value, 0 if none was found.
 
-    If A^+ A + R is larger than mu^2 for an R of rank k, then by interlacing at most k singular values of A lie below mu.  R is made of the
-    vectors v cut to the window that holds most of their weight, so that the matrix stays banded.
+    If A^+ A + R is larger than mu^2 for an R of rank k, then by interlacing at most k singular values of A lie
+    below mu.  R is made of the vectors v cut to the window that holds most of their weight, so that the matrix
+    stays banded.
     """
     lifted = _lifted(squared, _localised(v), 10 * estimate**2)
     for share in LADDER:

@@ -2,16 +2,18 @@
 
 Notation: x is an upper bound on |A(phi + s) - A_i|, the path length of H plus the noise of the look.
 
-Rule L (path length).  r^-1 r' = -i W^+ B^-1 H' G W, so while x < 1/max(g, b) the matrix r_i^-1 r(phi + s) turns every vector by at most
-w_a w_b ln((1 - g x)/(1 - b x)) / (b - g), with g = |G_i|, b = |B_i^-1| and w_a, w_b the norms of the columns.  Below a right angle it
-is accretive, and then the principal arguments of its eigenvalues add up to exactly the turn of det r.
+Rule L (path length).  r^-1 r' = -i W^+ B^-1 H' G W, so while x < 1/max(g, b) the matrix r_i^-1 r(phi + s) turns
+every vector by at most w_a w_b ln((1 - g x)/(1 - b x)) / (b - g), with g = |G_i|, b = |B_i^-1| and w_a, w_b the
+norms of the columns.  Below a right angle it is accretive, and then the principal arguments of its eigenvalues add
+up to exactly the turn of det r.
 
-Rule S (split).  With the k smallest singular values split off, r is close to r_m(s) = r_c + i X (S - sK)^-1 Y, a rational function
-of s; Schur's complement bounds the rest, and where |r_m^-1| times that rest stays below 1, r_m^-1 r is accretive.  Then det r turns as
-det r_m does, whose zeros and poles are those of k x k pencils.  Near a resonance of width gamma the rest is of order gamma: the reach does
-not shrink with the width.
+Rule S (split).  With the k smallest singular values split off, r is close to r_m(s) = r_c + i X (S - sK)^-1 Y, a
+rational function of s; Schur's complement bounds the rest, and where |r_m^-1| times that rest stays below 1, r_m^-1
+r is accretive.  Then det r turns as det r_m does, whose zeros and poles are those of k x k pencils.  Near a
+resonance of width gamma the rest is of order gamma: the reach does not shrink with the width.
 
-Both are theorems in exact arithmetic about the matrix that the look is exact for; floating point enters through the noise alone.
+Both are theorems in exact arithmetic about the matrix that the look is exact for; floating point enters through the
+noise alone.
 """
 
 from __future__ import annotations
@@ -120,9 +122,10 @@ class Model:
         return float(np.angle(1 - s * zeros).sum() - np.angle(1 - s * poles).sum())
 
 
-def split_reach(split: Split, rates: Rates, length: Callable[[Floats], Floats], side: int,
-                limit: float) -> tuple[float, float]:
-    """Return how far to one side rule S holds, at most `limit` (radians), and the smallest singular value r keeps there.
+def split_reach(
+    split: Split, rates: Rates, length: Callable[[Floats], Floats], side: int, limit: float
+) -> tuple[float, float]:
+    """Return how far to one side rule S holds, at most `limit` radians, and a floor of the singular values of r there.
 
     Parameters
     ----------
@@ -155,8 +158,15 @@ def _pieces(model: Model, side: int, limit: float) -> Floats:
     return every[(every > 0) & (every <= limit)]
 
 
-def _floors(split: Split, rates: Rates, model: Model, length: Callable[[Floats], Floats], side: int, starts: Floats,
-            ends: Floats) -> Floats:
+def _floors(
+    split: Split,
+    rates: Rates,
+    model: Model,
+    length: Callable[[Floats], Floats],
+    side: int,
+    starts: Floats,
+    ends: Floats,
+) -> Floats:
     """Check rule S on each piece: growing bounds at its far end, the model's resonance at its nearest point.
 
     Returns sigma_min(r_m) - |r - r_m|, a lower bound on the smallest singular value of r; 0 where the rule fails.
@@ -173,9 +183,14 @@ def _floors(split: Split, rates: Rates, model: Model, length: Callable[[Floats],
     q, x_over_q, y_over_q = _over_pieces(model.sigma, side * model.core, model.into, model.out, starts, ends)
     known = inside & (q > q_rest * (1 + 1e-9))
     room = np.where(known, 1 - q_rest / np.where(known, q, 1.0), 1.0)
-    error = (background + x_over_q * y_over_q * q_rest / room
-             + (change_in * y_over_q + x_over_q * change_out + change_in * change_out / np.where(known, q, 1.0)) / room)
-    least = np.maximum(_by_zeros(model, side, starts, ends), _by_middles(model, side, starts, ends, x_over_q * y_over_q))
+    error = (
+        background
+        + x_over_q * y_over_q * q_rest / room
+        + (change_in * y_over_q + x_over_q * change_out + change_in * change_out / np.where(known, q, 1.0)) / room
+    )
+    least = np.maximum(
+        _by_zeros(model, side, starts, ends), _by_middles(model, side, starts, ends, x_over_q * y_over_q)
+    )
     return np.where(known & (error < least * (1 - 1e-6)), least - error, 0.0)
 
 
@@ -188,7 +203,7 @@ def _by_zeros(model: Model, side: int, starts: Floats, ends: Floats) -> Floats:
 
 
 def _by_middles(model: Model, side: int, starts: Floats, ends: Floats, square: Floats) -> Floats:
-    """The same, by r_m in the middle of each piece; `square` bounds |X q^-1| |q^-1 Y|, and with |K| the slope of r_m."""
+    """The same, by r_m in the middle of each piece; `square` bounds |X q^-1| |q^-1 Y|, which times |K| is its slope."""
     middles = side * (starts + ends) / 2
     q = model.sigma - middles[:, None, None] * model.core
     singular = np.abs(np.linalg.det(q)) == 0
@@ -198,12 +213,14 @@ def _by_middles(model: Model, side: int, starts: Floats, ends: Floats, square: F
     return np.where(singular, 0.0, least)
 
 
-def _over_pieces(constant: Complex, slope: Complex, left: Complex, right: Complex, starts: Floats,
-                 ends: Floats) -> tuple[Floats, Floats, Floats]:
+def _over_pieces(
+    constant: Complex, slope: Complex, left: Complex, right: Complex, starts: Floats, ends: Floats
+) -> tuple[Floats, Floats, Floats]:
     """Bounds that hold over each piece t in [start, end], for q = constant - t slope.
 
-    Returns a lower bound on the smallest singular value of q, and upper bounds on |left q^-1| and |q^-1 right|.  For one split
-    level q is a number and the nearest point of a straight line to 0 is known; else q^-1 is expanded around the middle of the piece.
+    Returns a lower bound on the smallest singular value of q, and upper bounds on |left q^-1| and |q^-1 right|.
+    For one split level q is a number and the nearest point of a straight line to 0 is known; else q^-1 is expanded
+    around the middle of the piece.
     """
     if len(constant) == 1:
         a, k = complex(constant[0, 0]), complex(slope[0, 0])

@@ -1,12 +1,14 @@
 """The same device behind a good contact: a bound on the leak, and the winding of contacts too weak to resolve.
 
-If the actual contact has broadenings smaller by factors s_j, an exact Moebius map leads from one r to the other, with a_j = (s_j-1)/(s_j+1),
+If the actual contact has broadenings smaller by factors s_j, an exact Moebius map leads from one r to the other,
+with a_j = (s_j-1)/(s_j+1),
 
     r = q^-1 (r_S - a) (1 - a r_S)^-1 q,     t = t_S (1 - a r_S)^-1 q,     q = (1 - a^2)^(1/2),
 
-so a bound on t_S and on how far r_S stays from 1/a bounds t.  And no winding is lost between the two contacts if r_S - u a is invertible for
-all u in [0, 1] and all phi: a zero of det B at the contact belonging to u a would be a scattering state with r_S beta = u a beta.  At each phi one of two tests
-suffices: less leaks than the contact lets through, |t_S|^2 < min_j 4 s_j / (1+s_j)^2 = 1 - max a_j^2, or r_S stays away from the segment.
+so a bound on t_S and on how far r_S stays from 1/a bounds t.  And no winding is lost between the two contacts if
+r_S - u a is invertible for all u in [0, 1] and all phi: a zero of det B at the contact belonging to u a would be a
+scattering state with r_S beta = u a beta.  At each phi one of two tests suffices: less leaks than the contact lets
+through, |t_S|^2 < min_j 4 s_j / (1+s_j)^2 = 1 - max a_j^2, or r_S stays away from the segment.
 
 Both tests are made on stretches around looks, as everywhere, and looks are added until they pass.
 """
@@ -66,7 +68,9 @@ class Contact:
         """Lower bound on the smallest singular value of `reflection` - u a over u in [0, 1]."""
         u = np.linspace(0.0, 1.0, SEGMENT_POINTS)
         stack = reflection - u[:, None, None] * np.diag(self.a)
-        return float(np.linalg.svd(stack, compute_uv=False)[:, -1].min()) - float(np.abs(self.a).max()) / (2 * SEGMENT_POINTS - 2)
+        return float(np.linalg.svd(stack, compute_uv=False)[:, -1].min()) - float(np.abs(self.a).max()) / (
+            2 * SEGMENT_POINTS - 2
+        )
 
 
 @dataclass(frozen=True)
@@ -108,11 +112,13 @@ class _Stop:
         return self.seen.out_columns * self.seen.in_columns * x / room if room > 0 else float("inf")
 
 
-def survey(device: FoldedDevice, slopes: Slopes, contact: Contact, *, goal: float, need_winding: bool, budget: int) -> Reference:
+def survey(
+    device: FoldedDevice, slopes: Slopes, contact: Contact, *, goal: float, need_winding: bool, budget: int
+) -> Reference:
     """Look along the cycle at a device behind a good contact.
 
-    Looks are added in the middle of every stretch whose bound on the leak exceeds both `goal` and four times what is met at the looks, or, if
-    `need_winding`, where neither test passes; until none is left or `budget` is spent.
+    Looks are added in the middle of every stretch whose bound on the leak exceeds both `goal` and four times what
+    is met at the looks, or, if `need_winding`, where neither test passes; until none is left or `budget` is spent.
     """
     if device.drain.shape[1] == 0:
         return Reference(0.0, True, (), 0, 0)
@@ -136,8 +142,13 @@ def survey(device: FoldedDevice, slopes: Slopes, contact: Contact, *, goal: floa
             needed = needed or len(phases)
             open_ones = [i for i, (leak, _) in enumerate(stretches) if leak > wanted]
         if not open_ones or len(phases) + len(open_ones) > budget:
-            return Reference(min(1.0, max(leak for leak, _ in stretches)), all(same for _, same in stretches),
-                             tuple(stop.seen for stop in stops if stop is not None), len(phases), needed)
+            return Reference(
+                min(1.0, max(leak for leak, _ in stretches)),
+                all(same for _, same in stretches),
+                tuple(stop.seen for stop in stops if stop is not None),
+                len(phases),
+                needed,
+            )
         new = [(phases[i] + _after(phases, i)) / 2 for i in open_ones]
 
 
@@ -167,7 +178,9 @@ def _met(stop: _Stop, contact: Contact) -> float:
     return contact.amplified(through**2, stop.seen.reflection, 0.0)
 
 
-def _stretch(phases: list[float], stops: list[_Stop | None], i: int, slopes: Slopes, contact: Contact) -> tuple[float, bool]:
+def _stretch(
+    phases: list[float], stops: list[_Stop | None], i: int, slopes: Slopes, contact: Contact
+) -> tuple[float, bool]:
     """Bound on |t|^2 at the actual contact, and whether a test passes, between phase i and the next."""
     start, end = phases[i], _after(phases, i)
     middle = (start + end) / 2

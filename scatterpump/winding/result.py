@@ -52,7 +52,8 @@ class Winding:
     Attributes
     ----------
     number : int or None
-        The proven winding, which is the number of charges carried from probe to drain in a cycle; None where there is no proof.
+        The proven winding, which is the number of charges carried from probe to drain in a cycle; None where there
+        is no proof.
     certified : bool
         True if the proof covers every phi; exactly then there is a number.
     evaluations : int
@@ -73,8 +74,9 @@ class Winding:
     exact : bool
         True if the bounds on the change of H are exact; False if they are estimated from differences.
     method : "contact" or "open reference" or "no drain"
-        Where the proof was made: at the device as it is; at the same device behind a good contact, whose winding is the same because less leaks
-        than the contact lets through; or by the absence of any drain, which makes the number 0.
+        Where the proof was made: at the device as it is; at the same device behind a good contact, whose winding is
+        the same because less leaks than the contact lets through; or by the absence of any drain, which makes the
+        number 0.
     """
 
     number: int | None
