@@ -55,7 +55,7 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
         raise InputError(f"the file is not valid TOML: {error}", allowed="TOML 1.0", where=str(path)) from error
     except (ValueError, RecursionError) as error:
         raise InputError(
-            "the file holds a number of thousands of digits, or lists nested without end",
+            "the file is no usable TOML: a number of thousands of digits, or lists nested without end",
             allowed="the values of a device",
             where=str(path),
         ) from error
@@ -172,7 +172,7 @@ def _cycle(table: Any, folder: Path) -> Cycle:
 
 
 def _called(function: Callable[..., Cycle], arguments: dict[str, Any], key: str = "") -> Cycle:
-    """Call a method of `Cycle`, its arguments checked against its signature; `key` is the file's word for the only one."""
+    """Call a method of `Cycle`, its arguments checked against its signature; `key` is the file's word for one."""
     from pydantic import ValidationError, validate_call
 
     frozen = {key: tuple(value) if isinstance(value, list) else value for key, value in arguments.items()}

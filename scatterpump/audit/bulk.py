@@ -28,8 +28,8 @@ def fermi_level_in_gap(evidence: Evidence) -> Finding | None:
             gap.distance_upper,
             0.0,
             "E",
-            f"A bulk band meets the Fermi level {level:g} or comes within {max(gap.distance_upper, FLOOR / 2):.1e} of it, "
-            "so the pump is not gapped and any integer is an accident.",
+            f"A bulk band meets the Fermi level {level:g} or comes within "
+            f"{max(gap.distance_upper, FLOOR / 2):.1e} of it, so it is not gapped and any integer is an accident.",
             "Move the Fermi level into a gap, or change the cycle so that the gap stays open.",
             where,
         )

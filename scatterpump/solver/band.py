@@ -110,7 +110,7 @@ def is_positive(lower: Complex, shift: float, half: int | None = None) -> bool:
     moved = np.array(lower, order="F")
     moved[0] -= shift + rounding
     _, info = lapack.zpbtrf(moved, lower=1, overwrite_ab=1)
-    return bool(info == 0)
+    return bool(info == 0 and np.isfinite(moved[0]).all())
 
 
 def row_sum_norm(band: Complex) -> float:

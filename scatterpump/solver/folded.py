@@ -116,10 +116,11 @@ def fold(pump: Pump) -> FoldedDevice:
     """
     system = with_modes(pump)
     sample = _Sampler(pump)
-    structure = _structure(system).tocoo()
+    _, offsets = sample.with_orbitals(0.0)
+    structure = _structure(system, offsets).tocoo()
     rows, columns = structure.row.astype(int), structure.col.astype(int)
     path = follow(lambda phase: np.asarray(sample(phase)[rows, columns]).ravel().astype(complex), pump.cycle)
-    leads = _lead_self_energies(pump, system, structure.shape[0])
+    leads = _lead_self_energies(pump, system, offsets)
     channels = {i: len(lead.modes(pump.fermi_level)[0].momenta) // 2 for i, lead in enumerate(system.leads)}
     moves = _moving(path, rows, structure.shape[0])
     alive, folded = _eliminate(pump.fermi_level, structure.tocsr(), sample(0.0), leads, channels, moves)
@@ -134,47 +135,42 @@ class _Sampler:
         self.pump, self.calls = pump, 0
 
     def __call__(self, phase: float) -> Any:
+        return self.with_orbitals(phase)[0]
+
+    def with_orbitals(self, phase: float) -> tuple[Any, Indices]:
+        """Return H and, for every site, the number of its first orbital, with the total at the end."""
         parameters = self.pump.parameters(phase)
         self.calls += 1
         try:
-            found = self.pump.finalized.hamiltonian_submatrix(params=parameters, sparse=True).tocsr()
+            found, count, _ = self.pump.finalized.hamiltonian_submatrix(
+                params=parameters, sparse=True, return_norb=True
+            )
         except Exception as cause:  # a user's value function may raise anything
             raise SolverError(phase, parameters, cause) from cause
         if not np.isfinite(found.data).all():
             raise SolverError(phase, parameters, ValueError("the Hamiltonian has elements that are not finite"))
-        return found
+        return found.tocsr(), np.concatenate([[0], np.cumsum(count)])
 
 
-def _lead_self_energies(pump: Pump, system: Any, size: int) -> dict[int, Any]:
+def _lead_self_energies(pump: Pump, system: Any, offsets: Indices) -> dict[int, Any]:
     """Self-energy of every lead as a sparse matrix over all orbitals."""
     from scipy.sparse import coo_matrix
 
-    offsets = _orbital_offsets(system)
     result = {}
     for number, (lead, interface) in enumerate(zip(system.leads, system.lead_interfaces, strict=True)):
         orbitals = np.concatenate([np.arange(offsets[site], offsets[site + 1]) for site in interface])
         sigma = lead.modes(pump.fermi_level)[1].selfenergy()
         rows, columns = np.meshgrid(orbitals, orbitals, indexing="ij")
-        result[number] = coo_matrix((sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(size, size)).tocsr()
+        result[number] = coo_matrix(
+            (sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(offsets[-1], offsets[-1])
+        ).tocsr()
     return result
 
 
-def _orbital_offsets(system: Any) -> Indices:
-    count = system.graph.num_nodes
-    if system.site_ranges is None:  # no orbital numbers were given: ask the Hamiltonian
-        return np.arange(count + 1)
-    offsets = np.zeros(count + 1, dtype=int)
-    for (first, norbs, offset), (after, _, end) in zip(system.site_ranges, system.site_ranges[1:], strict=False):
-        offsets[first : after + 1] = offset + norbs * np.arange(after - first + 1)
-        offsets[after] = end
-    return offsets
-
-
-def _structure(system: Any) -> Any:
+def _structure(system: Any, offsets: Indices) -> Any:
     """Places where H may have elements, whatever their values at some phase: all sites and hoppings of the system."""
     from scipy.sparse import coo_matrix
 
-    offsets = _orbital_offsets(system)
     edges = np.array(list(system.graph), dtype=int).reshape(-1, 2)
     sites = np.arange(len(offsets) - 1)
     pairs = np.concatenate([edges, np.stack([sites, sites], axis=1)])
@@ -294,6 +290,8 @@ def _assemble(
 def _broadening(sigma: Any, size: int, channels: int) -> Complex:
     """W with W W^+ = i (Sigma - Sigma^+), shape (size, channels): one orthogonal column for each open channel."""
     touched, strength, states = _strengths(sigma)
+    if len(touched) < channels:  # nothing connects this lead to the probe
+        return np.zeros((size, 0), dtype=complex)
     column = np.zeros((size, channels), dtype=complex)
     first = len(strength) - channels
     column[touched] = states[:, first:] * np.sqrt(np.maximum(strength[first:], 0.0))

@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 __all__ = ["HIGHEST", "Harmonics", "fit"]
 
-CHECKS = tuple(2 * math.pi * ((i + 0.5) * 0.6180339887498949 % 1) for i in range(7))  # far from any even spacing
+CHECKS = tuple(2 * math.pi * ((i + 0.5) * 0.6180339887498949 % 1) for i in range(16))  # far from any even spacing
 TOLERANCE = 1e-11
 HIGHEST = 16
 
