@@ -43,7 +43,7 @@ class BlochCell:
     @cached_property
     def harmonics(self) -> Harmonics | None:
         """Fourier coefficients of the stack (h, V), shape (2K+1, 2, q, q), or None if phi enters otherwise."""
-        return fit(self._sample)
+        return fit(lambda phases: np.array([self._sample(float(phase)) for phase in phases]))
 
     @property
     def bands(self) -> int:

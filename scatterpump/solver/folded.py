@@ -22,9 +22,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.errors import SolverError
 from scatterpump.pump import Pump
 from scatterpump.solver.band import EPS, pack
+from scatterpump.solver.hamiltonian import DrivenHamiltonian
 from scatterpump.solver.modes import with_modes
 from scatterpump.solver.path import Path, Side, follow
 
@@ -114,42 +114,18 @@ def fold(pump: Pump) -> FoldedDevice:
     ClosedProbeError, InputError, SolverError
         As `scatterpump.reflect`.
     """
-    system = with_modes(pump)
-    sample = _Sampler(pump)
-    _, offsets = sample.with_orbitals(0.0)
-    structure = _structure(system, offsets).tocoo()
-    rows, columns = structure.row.astype(int), structure.col.astype(int)
-    path = follow(lambda phase: np.asarray(sample(phase)[rows, columns]).ravel().astype(complex), pump.cycle)
-    leads = _lead_self_energies(pump, system, offsets)
+    from scipy.sparse import csr_matrix
+
+    system, driven = with_modes(pump), DrivenHamiltonian(pump)
+    size, rows, columns = driven.size, driven.rows, driven.columns
+    path = follow(driven.many, pump.cycle)
+    leads = _lead_self_energies(pump, system, driven.offsets)
     channels = {i: len(lead.modes(pump.fermi_level)[0].momenta) // 2 for i, lead in enumerate(system.leads)}
-    moves = _moving(path, rows, structure.shape[0])
-    alive, folded = _eliminate(pump.fermi_level, structure.tocsr(), sample(0.0), leads, channels, moves)
-    order = _order(structure.tocsr(), folded, alive, pump.probe)
-    return _assemble(pump, path, rows, columns, folded, channels, order, sample.calls)
-
-
-class _Sampler:
-    """H(phi) as a sparse matrix, with failures told where they happened."""
-
-    def __init__(self, pump: Pump) -> None:
-        self.pump, self.calls = pump, 0
-
-    def __call__(self, phase: float) -> Any:
-        return self.with_orbitals(phase)[0]
-
-    def with_orbitals(self, phase: float) -> tuple[Any, Indices]:
-        """Return H and, for every site, the number of its first orbital, with the total at the end."""
-        parameters = self.pump.parameters(phase)
-        self.calls += 1
-        try:
-            found, count, _ = self.pump.finalized.hamiltonian_submatrix(
-                params=parameters, sparse=True, return_norb=True
-            )
-        except Exception as cause:  # a user's value function may raise anything
-            raise SolverError(phase, parameters, cause) from cause
-        if not np.isfinite(found.data).all():
-            raise SolverError(phase, parameters, ValueError("the Hamiltonian has elements that are not finite"))
-        return found.tocsr(), np.concatenate([[0], np.cumsum(count)])
+    moves = _moving(path, rows, size)
+    structure = csr_matrix((np.ones(len(rows)), (rows, columns)), shape=(size, size))
+    alive, folded = _eliminate(pump.fermi_level, structure, driven.matrix(0.0), leads, channels, moves)
+    order = _order(structure, folded, alive, pump.probe)
+    return _assemble(pump, path, rows, columns, folded, channels, order, driven.calls)
 
 
 def _lead_self_energies(pump: Pump, system: Any, offsets: Indices) -> dict[int, Any]:
@@ -165,25 +141,6 @@ def _lead_self_energies(pump: Pump, system: Any, offsets: Indices) -> dict[int, 
             (sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(offsets[-1], offsets[-1])
         ).tocsr()
     return result
-
-
-def _structure(system: Any, offsets: Indices) -> Any:
-    """Places where H may have elements, whatever their values at some phase: all sites and hoppings of the system."""
-    from scipy.sparse import coo_matrix
-
-    edges = np.array(list(system.graph), dtype=int).reshape(-1, 2)
-    sites = np.arange(len(offsets) - 1)
-    pairs = np.concatenate([edges, np.stack([sites, sites], axis=1)])
-    count = np.diff(offsets)
-    rows, columns = [], []
-    for i in range(int(count.max(initial=0))):
-        for j in range(int(count.max(initial=0))):
-            fits = (i < count[pairs[:, 0]]) & (j < count[pairs[:, 1]])
-            rows.append(offsets[pairs[fits, 0]] + i)
-            columns.append(offsets[pairs[fits, 1]] + j)
-    places = np.concatenate(rows), np.concatenate(columns)
-    size = int(offsets[-1])
-    return coo_matrix((np.ones(len(places[0])), places), shape=(size, size)).tocsr()
 
 
 def _moving(path: Path, rows: Indices, size: int) -> NDArray[np.bool_]:

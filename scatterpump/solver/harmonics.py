@@ -7,7 +7,6 @@ at angles that the fit has not seen.
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -17,7 +16,7 @@ from numpy.typing import NDArray
 
 __all__ = ["HIGHEST", "Harmonics", "fit"]
 
-CHECKS = tuple(2 * math.pi * ((i + 0.5) * 0.6180339887498949 % 1) for i in range(16))  # far from any even spacing
+CHECKS = 2 * np.pi * ((np.arange(16) + 0.5) * 0.6180339887498949 % 1)  # far from any even spacing
 TOLERANCE = 1e-11
 HIGHEST = 16
 
@@ -30,12 +29,9 @@ class Harmonics:
     ----------
     coefficients : (2K+1, ...) complex array
         c_-K ... c_K.
-    evaluations : int
-        Samples spent on finding and verifying them.
     """
 
     coefficients: NDArray[np.complex128]
-    evaluations: int = 0
 
     @property
     def degree(self) -> int:
@@ -52,32 +48,41 @@ class Harmonics:
         waves = np.exp(1j * np.multiply.outer(np.asarray(phases, dtype=float), self.orders))
         return np.tensordot(waves, self.coefficients, axes=(-1, 0))
 
+    def trimmed(self, tolerance: float) -> Harmonics:
+        """Return the same without outer harmonics whose coefficients are all below `tolerance`."""
+        size = np.abs(self.coefficients).reshape(len(self.coefficients), -1).max(axis=1, initial=0.0)
+        large = np.flatnonzero(size > tolerance)
+        degree = int(np.abs(large - self.degree).max(initial=0))
+        return Harmonics(self.coefficients[self.degree - degree : self.degree + degree + 1])
+
     def derivative(self) -> Harmonics:
         """Return d/dphi."""
         shape = (-1,) + (1,) * (self.coefficients.ndim - 1)
         return Harmonics(1j * self.orders.reshape(shape) * self.coefficients)
 
 
-def fit(sample: Callable[[float], NDArray[Any]]) -> Harmonics | None:
+def fit(sample: Callable[[NDArray[np.float64]], NDArray[Any]]) -> Harmonics | None:
     """Find the Fourier coefficients of `sample`, or None if they do not end at degree 16.
 
     Parameters
     ----------
     sample : callable
-        phi in radians to an array whose shape does not depend on phi.
+        Phases in radians, shape (n,), to values of shape (n, ...).
     """
-    checks = [np.asarray(sample(phase), dtype=complex) for phase in CHECKS]
-    scale = max(1e-300, *(float(np.abs(value).max(initial=0.0)) for value in checks))
-    spent, degree = len(CHECKS), 0
-    while degree <= HIGHEST:
-        count = 2 * degree + 1
-        angles = 2 * np.pi * np.arange(count) / count
-        values = np.array([sample(float(angle)) for angle in angles], dtype=complex)
-        spent += count
-        found = Harmonics(np.fft.fftshift(np.fft.fft(values, axis=0) / count, axes=0), spent)
-        if all(
-            np.abs(found.at(p) - v).max(initial=0.0) < TOLERANCE * scale for p, v in zip(CHECKS, checks, strict=True)
-        ):
-            return found
-        degree = max(1, 2 * degree)
-    return None
+    known = np.asarray(sample(np.concatenate([_even(1), CHECKS])), dtype=complex)
+    checks, scale = known[3:], max(1e-300, float(np.abs(known).max(initial=0.0)))
+    values, degree = known[:3], 1
+    while True:
+        found = Harmonics(np.fft.fftshift(np.fft.fft(values, axis=0) / len(values), axes=0))
+        if np.abs(found.at(CHECKS) - checks).max(initial=0.0) < TOLERANCE * scale:
+            return found.trimmed(TOLERANCE * scale)
+        degree *= 2
+        if degree > HIGHEST:
+            return None
+        values = np.asarray(sample(_even(degree)), dtype=complex)
+
+
+def _even(degree: int) -> NDArray[np.float64]:
+    """Angles that determine a trigonometric polynomial of `degree`."""
+    count = 2 * degree + 1
+    return 2 * np.pi * np.arange(count) / count

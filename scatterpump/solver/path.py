@@ -26,6 +26,7 @@ __all__ = ["Path", "SampledPath", "Slopes", "StraightPath", "TrigonometricPath",
 Entries = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 Norm = Callable[[Entries], float]
+Sample = Callable[[Floats], Entries]
 Side = Literal[-1, 1]
 TURN = 2 * np.pi
 STRAIGHT_TOLERANCE = 1e-10
@@ -46,6 +47,9 @@ class Path(Protocol):
 
     def at(self, phase: float) -> Entries:
         """Return H at `phase`."""
+
+    def many(self, phases: Floats) -> Entries:
+        """Return H at each of `phases`, shape (n, nnz)."""
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return the derivative of `order` 1 or 2 at `phase`, from above (+1) or below (-1)."""
@@ -117,6 +121,10 @@ class TrigonometricPath:
         """Return H at `phase`."""
         return np.asarray(self.harmonics.at(phase))
 
+    def many(self, phases: Floats) -> Entries:
+        """Return H at each of `phases`, shape (n, nnz)."""
+        return np.asarray(self.harmonics.at(phases))
+
     def derivative(self, phase: float, side: Side = 1, order: int = 1) -> Entries:
         """Return the derivative of `order` at `phase`."""
         return self._derivatives[order - 1].at(phase)
@@ -171,6 +179,10 @@ class StraightPath:
         piece, inside = self._piece(phase, 1)
         return np.asarray(self.points[piece] + inside * self._slope(piece))
 
+    def many(self, phases: Floats) -> Entries:
+        """Return H at each of `phases`, shape (n, nnz)."""
+        return np.array([self.at(phase) for phase in phases.tolist()])
+
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return the slope on the given side of `phase`; second derivatives vanish."""
         piece, _ = self._piece(phase, side)
@@ -207,7 +219,7 @@ class StraightPath:
 class SampledPath:
     """H as a function to be asked, its derivatives by differences between `nodes`."""
 
-    sample: Callable[[float], Entries]
+    sample: Sample
     corners: Floats
     nodes: Floats
     exact: bool = False
@@ -217,11 +229,15 @@ class SampledPath:
 
     def at(self, phase: float) -> Entries:
         """Return H at `phase`."""
-        return self.sample(phase)
+        return np.asarray(self.sample(np.array([phase]))[0])
+
+    def many(self, phases: Floats) -> Entries:
+        """Return H at each of `phases`, shape (n, nnz)."""
+        return self.sample(phases)
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return a one-sided difference quotient."""
-        here, near, far = (self.sample(phase + side * self.STEP * k) for k in range(3))
+        here, near, far = self.sample(phase + side * self.STEP * np.arange(3))
         if order == 1:
             return side * (4 * near - far - 3 * here) / (2 * self.STEP)
         return (here - 2 * near + far) / self.STEP**2
@@ -240,25 +256,26 @@ class SampledPath:
 
     def only(self, chosen: NDArray[np.int64]) -> SampledPath:
         """Return the path of the chosen elements alone."""
-        return SampledPath(lambda phase: self.sample(phase)[chosen], self.corners, self.nodes)
+        return SampledPath(lambda phases: self.sample(phases)[:, chosen], self.corners, self.nodes)
 
     @cached_property
     def _values(self) -> Entries:
-        return np.array([self.sample(float(node)) for node in self.nodes])
+        return np.asarray(self.sample(self.nodes))
 
 
 def _quotients(values: Entries, steps: Floats, order: int) -> Entries:
     """Difference quotients of `order`, for steps that change slowly."""
+    found = values
     for _ in range(order):
-        values = np.diff(values, axis=0) / steps[: len(values) - 1, None]
-    return values
+        found = np.asarray(np.diff(found, axis=0) / steps[: len(found) - 1, None])
+    return found
 
 
-def follow(sample: Callable[[float], Entries], cycle: Cycle) -> Path:
-    """Find out what kind of path H takes along `cycle`, from samples of its matrix elements."""
+def follow(sample: Sample, cycle: Cycle) -> Path:
+    """Find out what kind of path H takes along `cycle`, from samples of its matrix elements, shape (n, nnz)."""
     corners = np.array(cycle.corners)
     if cycle.straight and corners.size:
-        straight = StraightPath(corners, np.array([sample(float(corner)) for corner in corners]))
+        straight = StraightPath(corners, sample(corners))
         if _is_straight(straight, sample):
             return straight
     elif not corners.size and _plain(cycle) and (harmonics := fit(sample)) is not None:
@@ -266,11 +283,11 @@ def follow(sample: Callable[[float], Entries], cycle: Cycle) -> Path:
     return SampledPath(sample, corners, _nodes(cycle, corners))
 
 
-def _is_straight(path: StraightPath, sample: Callable[[float], Entries]) -> bool:
+def _is_straight(path: StraightPath, sample: Sample) -> bool:
     scale = max(1e-300, float(np.abs(path.points).max(initial=0.0)))
     inside = path.corners + 0.37 * np.diff(np.append(path.corners, path.corners[0] + TURN))
-    misses = (np.abs(path.at(p) - sample(p)).max(initial=0.0) for p in inside.tolist())
-    return all(miss <= STRAIGHT_TOLERANCE * scale for miss in misses)
+    straight = np.array([path.at(phase) for phase in inside.tolist()])
+    return bool(np.abs(straight - sample(inside)).max(initial=0.0) <= STRAIGHT_TOLERANCE * scale)
 
 
 def _parameters(cycle: Cycle) -> Floats:
