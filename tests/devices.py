@@ -33,8 +33,9 @@ def fixed(delta: float, stagger: float) -> Cycle:
 
 def rice_mele(cycle: Cycle, *, cells: int = 30, energy: float = 0.0, probe: Lead = WIDE, drain: Lead = WIDE) -> Pump:
     """Return the dimerised chain with staggered levels: bonds 1 + (-1)^x delta, sites (-1)^x stagger."""
-    return ModulatedChain(sites=2 * cells, fermi_level=energy, cycle=cycle, onsite=[STAGGER], bonds=[DELTA],
-                          probe=probe, drain=drain).pump()
+    return ModulatedChain(
+        sites=2 * cells, fermi_level=energy, cycle=cycle, onsite=[STAGGER], bonds=[DELTA], probe=probe, drain=drain
+    ).pump()
 
 
 @dataclass(frozen=True)
@@ -81,8 +82,9 @@ def harper(gap: HarperGap, *, harmonic: int = 1, sites: int | None = None) -> Pu
     The literature writes + phi, which is harmonic -1; with harmonic 1 the potential slides away from the probe.
     """
     wave = Wave(gap.strength, gap.q / gap.p, harmonic=harmonic)
-    return ModulatedChain(sites=sites or gap.sites, fermi_level=gap.energy, onsite=[wave],
-                          probe=WIDE, drain=WIDE).pump()
+    return ModulatedChain(
+        sites=sites or gap.sites, fermi_level=gap.energy, onsite=[wave], probe=WIDE, drain=WIDE
+    ).pump()
 
 
 # Loops of the dimerised chain in the plane (delta, stagger), and how often each goes round the gapless origin.

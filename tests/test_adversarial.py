@@ -22,7 +22,8 @@ def test_two_resonances_closer_than_any_grid_sees() -> None:
     """The edge level dips below the Fermi level for 2e-4 of a cycle: filled and emptied again, and both are found."""
     cycle = Cycle.ellipse(x=("delta", -0.5, 0.3), y=("stagger", 0.2 + 0.3 * np.cos(1e-4), -0.3))
     winding = certify(rice_mele(cycle, energy=0.2, probe=Lead(2.0, contact=1e-5)))
-    # derived: the edge level of the dimerised chain lies at the stagger, which is the Fermi level twice, at pi/2 -+ 1e-4
+    # derived: the edge level of the dimerised chain lies at the stagger, which is the Fermi level twice, at pi/2 -+
+    # 1e-4
     assert (winding.number, winding.certified) == (0, True)
     phases = [crossing.phase for crossing in winding.crossings]
     assert phases == pytest.approx([np.pi / 2 - 1e-4, np.pi / 2 + 1e-4], abs=1e-6)
@@ -49,10 +50,13 @@ def test_gap_of_a_millionth() -> None:
     cycle = Cycle.ellipse(x=("delta", 0.5 - 5e-7, 0.5), y=("stagger", 0.0, 0.5))
     pump = rice_mele(cycle, energy=0.0, cells=30)
     gap = bulk_gap(pump)
-    # derived: the half-gap 2 |delta| at phi = pi is 1e-6, and 30 cells are far too few to tell on which side of the origin the loop runs
+    # derived: the half-gap 2 |delta| at phi = pi is 1e-6, and 30 cells are far too few to tell on which side of the
+    # origin the loop runs
     assert not gap.is_open or gap.upper <= 2.1e-6
     winding = certify(pump)
-    assert winding.number is None or winding.leak.bound > 0.1  # whatever number comes, nobody is told that it is quantised
+    assert (
+        winding.number is None or winding.leak.bound > 0.1
+    )  # whatever number comes, nobody is told that it is quantised
 
 
 def test_one_cell_whose_reflection_vanishes() -> None:
@@ -64,8 +68,9 @@ def test_one_cell_whose_reflection_vanishes() -> None:
 
 @pytest.mark.parametrize("cells", [6, 10, 40])
 def test_hard_wall_winds_zero(cells: int) -> None:
-    pump = ModulatedChain(sites=2 * cells, cycle=loop(), fermi_level=0.05, onsite=[STAGGER], bonds=[DELTA], probe=WIDE,
-                          drain="wall").pump()
+    pump = ModulatedChain(
+        sites=2 * cells, cycle=loop(), fermi_level=0.05, onsite=[STAGGER], bonds=[DELTA], probe=WIDE, drain="wall"
+    ).pump()
     winding = certify(pump)
     # derived: without a drain B is the adjoint of A, and det A does not wind
     assert (winding.number, winding.certified) == (0, True)
@@ -107,8 +112,11 @@ def test_disorder_within_the_gap_changes_nothing(seed: int) -> None:
     width = 0.99 * gap * (seed + 1) / 50
     noisy = Disorder(onsite=width, bonds=width / 2, seed=seed)
     assert noisy.norm < gap
-    dirty = ModulatedChain(sites=60, cycle=loop(), onsite=[STAGGER], bonds=[DELTA], probe=WIDE, drain=WIDE, disorder=noisy)
-    # H. Weyl, Math. Ann. 71, 441 (1912) (citation from memory): levels move by at most the norm of the disorder, so the gap stays open
+    dirty = ModulatedChain(
+        sites=60, cycle=loop(), onsite=[STAGGER], bonds=[DELTA], probe=WIDE, drain=WIDE, disorder=noisy
+    )
+    # H. Weyl, Math. Ann. 71, 441 (1912) (citation from memory): levels move by at most the norm of the disorder, so
+    # the gap stays open
     winding = certify(dirty.pump())
     assert (winding.number, winding.certified) == (1, True)
 
@@ -119,7 +127,9 @@ def _proven_distance(pump: Pump) -> float:
 
 def test_three_lead_harmonics_still_count() -> None:
     """A wave with an overtone: two harmonics in H, bounds still exact."""
-    chain = ModulatedChain(sites=60, fermi_level=-1.2, onsite=[Wave(1.5, 3), Wave(0.2, 3, harmonic=2, lag=0.7)], probe=WIDE, drain=WIDE)
+    chain = ModulatedChain(
+        sites=60, fermi_level=-1.2, onsite=[Wave(1.5, 3), Wave(0.2, 3, harmonic=2, lag=0.7)], probe=WIDE, drain=WIDE
+    )
     winding = certify(chain.pump())
     # derived: the overtone is smaller than the gap, so the wave still carries one filled level a period
     assert (winding.number, winding.exact) == (1, True)

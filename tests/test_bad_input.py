@@ -21,9 +21,16 @@ from scatterpump.cli import main
 
 NAN, INF = float("nan"), float("inf")
 GOOD: dict[str, Any] = {
-    "name": "wave", "sites": 12, "hopping": 1.0, "level": 0.0, "fermi_level": -1.2,
-    "onsite": [{"amplitude": 1.5, "period": 3}], "bonds": [],
-    "probe": {"hopping": 2.0}, "drain": {"hopping": 2.0}, "disorder": {"onsite": 0.0},
+    "name": "wave",
+    "sites": 12,
+    "hopping": 1.0,
+    "level": 0.0,
+    "fermi_level": -1.2,
+    "onsite": [{"amplitude": 1.5, "period": 3}],
+    "bonds": [],
+    "probe": {"hopping": 2.0},
+    "drain": {"hopping": 2.0},
+    "disorder": {"onsite": 0.0},
 }
 TRACE = "left,right\n0,0\n1,0\n1,1\n0,1\n0,0\n"
 ELLIPSE = {"kind": "ellipse", "x": ["left", 0.0, 1.0], "y": ["right", 0.0, 1.0]}
@@ -248,10 +255,19 @@ def test_folder_is_no_device(tmp_path: Path) -> None:
     complaint(call(tmp_path), str(tmp_path), "allowed: ")
 
 
-@pytest.mark.parametrize(("content", "words"), [
-    (bytes(range(256)), "UTF-8"), (b"sites = ", "TOML"), (b"sites = 3\nsites = 4", "TOML"), (b"sites 3", "line 1"),
-    (b"", "sites"), (b"sites = 3\n\x00", "TOML"), (b"sites = " + b"9" * 5000, "digits"),
-    (b"sites = " + b"[" * 3000 + b"]" * 3000, "TOML")])
+@pytest.mark.parametrize(
+    ("content", "words"),
+    [
+        (bytes(range(256)), "UTF-8"),
+        (b"sites = ", "TOML"),
+        (b"sites = 3\nsites = 4", "TOML"),
+        (b"sites 3", "line 1"),
+        (b"", "sites"),
+        (b"sites = 3\n\x00", "TOML"),
+        (b"sites = " + b"9" * 5000, "digits"),
+        (b"sites = " + b"[" * 3000 + b"]" * 3000, "TOML"),
+    ],
+)
 def test_file_that_is_no_device_is_one_line(tmp_path: Path, content: bytes, words: str) -> None:
     (tmp_path / "device.toml").write_bytes(content)
     # derived: the project's own promise
@@ -261,19 +277,40 @@ def test_file_that_is_no_device_is_one_line(tmp_path: Path, content: bytes, word
 # --- --set ---
 
 
-@pytest.mark.parametrize(("change", "words"), [
-    ("sites", "'sites'"), ("=3", "'=3'"), ("", "''"), (" =3", "' =3'"), ("onsite.7.amplitude=1", "'7'"),
-    ("onsite.-1.amplitude=1", "'-1'"), ("onsite.first.amplitude=1", "'first'"), ("onsite.1=1", "'1'"),
-    ("onsite.\u00b2.amplitude=1", "onsite"), ("sites.x=1", "'x'"), ("name.0=1", "'0'")])
+@pytest.mark.parametrize(
+    ("change", "words"),
+    [
+        ("sites", "'sites'"),
+        ("=3", "'=3'"),
+        ("", "''"),
+        (" =3", "' =3'"),
+        ("onsite.7.amplitude=1", "'7'"),
+        ("onsite.-1.amplitude=1", "'-1'"),
+        ("onsite.first.amplitude=1", "'first'"),
+        ("onsite.1=1", "'1'"),
+        ("onsite.\u00b2.amplitude=1", "onsite"),
+        ("sites.x=1", "'x'"),
+        ("name.0=1", "'0'"),
+    ],
+)
 def test_bad_set_is_one_line(tmp_path: Path, change: str, words: str) -> None:
     # derived: the project's own promise
     complaint(call(written(tmp_path, device_with()), "--set", change), "--set", words, "allowed: ")
 
 
-@pytest.mark.parametrize(("change", "key"), [
-    ("hoping=1", "hoping"), ("probe.hoping=1", "probe.hoping"), ("onsite.0.perod=1", "onsite.0.perod"),
-    ("gate.x=1", "gate"), ("sites=many", "sites"), ("sites=", "sites"), ("fermi_level=nan", "fermi_level"),
-    ("cycle.kind=circle", "cycle: kind")])
+@pytest.mark.parametrize(
+    ("change", "key"),
+    [
+        ("hoping=1", "hoping"),
+        ("probe.hoping=1", "probe.hoping"),
+        ("onsite.0.perod=1", "onsite.0.perod"),
+        ("gate.x=1", "gate"),
+        ("sites=many", "sites"),
+        ("sites=", "sites"),
+        ("fermi_level=nan", "fermi_level"),
+        ("cycle.kind=circle", "cycle: kind"),
+    ],
+)
 def test_set_to_something_wrong_is_one_line(tmp_path: Path, change: str, key: str) -> None:
     # derived: the project's own promise
     complaint(call(written(tmp_path, device_with()), "--set", change), "device.toml", key, "allowed: ")
@@ -309,12 +346,14 @@ TEXT = st.text(st.characters(codec="utf-8", exclude_categories=("Cc", "Zl", "Zp"
 WORDS = st.sampled_from(["wall", "phi", "left", "angle", "ellipse", "trace.csv", "spline"])
 PLAIN = st.one_of(st.booleans(), st.integers(-20, 20), st.floats(), TEXT, WORDS)
 VALUES = st.recursive(
-    PLAIN, lambda inner: st.lists(inner, max_size=3) | st.dictionaries(TEXT, inner, max_size=3), max_leaves=6)
+    PLAIN, lambda inner: st.lists(inner, max_size=3) | st.dictionaries(TEXT, inner, max_size=3), max_leaves=6
+)
 KEYS = st.one_of(st.sampled_from([*GOOD, "kind", "cycle"]), TEXT)
 WAVE_KEYS = st.one_of(st.sampled_from(["amplitude", "period", "lag", "harmonic"]), TEXT)
 LEAD_KEYS = st.one_of(st.sampled_from(["hopping", "level", "contact"]), TEXT)
 CYCLE_KEYS = st.one_of(
-    st.sampled_from(["kind", "x", "y", "name", "table", "curve", "reversed", "repeated", "started_at"]), TEXT)
+    st.sampled_from(["kind", "x", "y", "name", "table", "curve", "reversed", "repeated", "started_at"]), TEXT
+)
 CYCLES = st.sampled_from([{"kind": "angle"}, ELLIPSE, TABLE])
 ROWS = st.text("0123456789.,-+e\n#naif \"';", max_size=60)
 

@@ -25,8 +25,13 @@ RADII = st.floats(0.05, 0.9)
 
 def rice_mele(cycle, fermi_level=0.0):
     return ModulatedChain(
-        sites=80, fermi_level=fermi_level, cycle=cycle, onsite=[Wave("stagger", 2, harmonic=0)],
-        bonds=[Wave("delta", 2, lag=-pi / 2, harmonic=0)], probe=Lead(2.0), drain=Lead(2.0),
+        sites=80,
+        fermi_level=fermi_level,
+        cycle=cycle,
+        onsite=[Wave("stagger", 2, harmonic=0)],
+        bonds=[Wave("delta", 2, lag=-pi / 2, harmonic=0)],
+        probe=Lead(2.0),
+        drain=Lead(2.0),
     ).pump()
 
 
@@ -86,12 +91,23 @@ def test_samples_of_the_period_three_chain_solve_its_cubic():
     assert_allclose(gap.upper_edge.upper, levels(gap.upper_edge.momentum, gap.upper_edge.phase)[1], atol=1e-7)
 
 
-@pytest.mark.parametrize(("p", "q", "band", "height", "low", "high"), [
-    (1, 3, 1, 1.5, -1.7500, -0.6712), (1, 3, 2, 1.5, 0.6712, 1.7500), (2, 3, 1, 1.5, -1.7500, -0.6712),
-    (2, 3, 2, 1.5, 0.6712, 1.7500), (1, 4, 1, 1.5, -2.2905, -1.0018), (1, 4, 3, 1.5, 1.0018, 2.2905),
-    (1, 5, 1, 1.8, -2.7580, -1.2901), (1, 5, 2, 1.8, -0.8580, -0.3694), (1, 5, 3, 1.8, 0.3694, 0.8580),
-    (1, 5, 4, 1.8, 1.2901, 2.7580), (2, 5, 2, 1.8, -1.6251, -0.1708), (2, 5, 3, 1.8, 0.1708, 1.6251),
-])
+@pytest.mark.parametrize(
+    ("p", "q", "band", "height", "low", "high"),
+    [
+        (1, 3, 1, 1.5, -1.7500, -0.6712),
+        (1, 3, 2, 1.5, 0.6712, 1.7500),
+        (2, 3, 1, 1.5, -1.7500, -0.6712),
+        (2, 3, 2, 1.5, 0.6712, 1.7500),
+        (1, 4, 1, 1.5, -2.2905, -1.0018),
+        (1, 4, 3, 1.5, 1.0018, 2.2905),
+        (1, 5, 1, 1.8, -2.7580, -1.2901),
+        (1, 5, 2, 1.8, -0.8580, -0.3694),
+        (1, 5, 3, 1.8, 0.3694, 0.8580),
+        (1, 5, 4, 1.8, 1.2901, 2.7580),
+        (2, 5, 2, 1.8, -1.6251, -0.1708),
+        (2, 5, 3, 1.8, 0.1708, 1.6251),
+    ],
+)
 def test_harper_windows(p, q, band, height, low, high):
     """Energies that lie in the gap for all k and phi, from a brute-force grid with other code, to four decimals."""
     # D. J. Thouless, M. Kohmoto, M. P. Nightingale, M. den Nijs, Phys. Rev. Lett. 49, 405 (1982): the gaps;
@@ -151,7 +167,10 @@ def levels(coefficients, k, phi):
 
 
 def extremes(coefficients, filled):
-    """Direct gap, top of the filled and bottom of the empty bands: a 64 x 64 grid, then ever finer ones about its best."""
+    """Direct gap.
+
+    Top of the filled and bottom of the empty bands: a 64 x 64 grid, then ever finer ones about its best.
+    """
     dk, dphi = (axis.ravel() for axis in np.meshgrid(*[np.linspace(-1, 1, 7)] * 2))
     grid = np.array([axis.ravel() for axis in np.meshgrid(*[2 * pi * np.arange(64) / 64] * 2)])
     energies, found = levels(coefficients, *grid), []
@@ -166,7 +185,10 @@ def extremes(coefficients, filled):
 
 @pytest.mark.parametrize("seed", range(200))
 def test_random_cells_are_bracketed(seed):
-    """Brute force: dense grid and local refinement by numpy alone; 2 to 5 orbitals, real and complex, 1 or 2 harmonics."""
+    """Brute force.
+
+    Dense grid and local refinement by numpy alone; 2 to 5 orbitals, real and complex, 1 or 2 harmonics.
+    """
     coefficients = random_coefficients(seed)
     filled = 1 + seed % (coefficients.shape[-1] - 1)
     direct, top, bottom = extremes(coefficients, filled)
@@ -212,7 +234,11 @@ def test_bound_of_a_single_box_is_below_all_levels_in_it(seed, size, shape):
     points = np.concatenate([rng.uniform(-1, 1, (2, 300)), [[-1, -1, 1, 1], [-1, 1, -1, 1]]], axis=1)
     k, phi = centre[:, None] + half[:, None] * points
     inside = levels(coefficients, k, phi)
-    smallest = [inside[:, filled].min(), -inside[:, filled - 1].max(), (inside[:, filled] - inside[:, filled - 1]).min()]
+    smallest = [
+        inside[:, filled].min(),
+        -inside[:, filled - 1].max(),
+        (inside[:, filled] - inside[:, filled - 1]).min(),
+    ]
     assert (found.lower <= np.array(smallest) + 1e-9).all()
 
 
@@ -231,11 +257,14 @@ def test_degenerate_bands_cost_no_more():
 # ---- work ------------------------------------------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize(("pump", "gap_width", "plain", "most"), [
-    (rice_mele(ellipse(0.6, 0.6)), 1.2, 538, 150),
-    (rice_mele(ellipse(0.6, 0.2)), 0.4, 584, 100),
-    (harper(2, 5, 1.8, -2.1448), 0.147957, 3544, 450),
-])
+@pytest.mark.parametrize(
+    ("pump", "gap_width", "plain", "most"),
+    [
+        (rice_mele(ellipse(0.6, 0.6)), 1.2, 538, 150),
+        (rice_mele(ellipse(0.6, 0.2)), 0.4, 584, 100),
+        (harper(2, 5, 1.8, -2.1448), 0.147957, 3544, 450),
+    ],
+)
 def test_work_stays_within_budget(pump, gap_width, plain, most):
     """All three brackets together, against a plain second-order search for the direct gap alone (other code)."""
     gap = bulk_gap(pump, accuracy=0.01)
@@ -301,7 +330,7 @@ def test_fermi_level_at_a_band_edge_is_not_open():
 
 @pytest.mark.parametrize("corners", [4, 8, 50])
 def test_broken_line_is_exact(corners):
-    """2 sqrt(D^2 + 4 d^2) is twice the distance from the origin in the plane (2d, D), least on a side of the polygon."""
+    """2 sqrt(D^2 + 4 d^2) is twice the distance from the origin in the plane (2d, D), least on a side of it."""
     table = polygon(corners)
     points = np.column_stack([2 * np.array(table["delta"]), table["stagger"]])
     start, along = points[:-1], np.diff(points, axis=0)
@@ -354,10 +383,16 @@ def test_gap_does_not_depend_on_how_the_loop_is_run(start, backwards, times):
     assert gap.upper - gap.lower <= 0.008 + 1e-8
 
 
-@pytest.mark.parametrize(("options", "message"), [
-    ({"accuracy": 0.0}, "accuracy"), ({"accuracy": 1.0}, "accuracy"), ({"floor": 0.0}, "floor"),
-    ({"floor": np.inf}, "floor"), ({"budget": 0}, "budget"),
-])
+@pytest.mark.parametrize(
+    ("options", "message"),
+    [
+        ({"accuracy": 0.0}, "accuracy"),
+        ({"accuracy": 1.0}, "accuracy"),
+        ({"floor": 0.0}, "floor"),
+        ({"floor": np.inf}, "floor"),
+        ({"budget": 0}, "budget"),
+    ],
+)
 def test_arguments_out_of_range_are_refused(options, message):
     """Common practice: a tolerance is positive and finite."""
     with pytest.raises(InputError, match=message):

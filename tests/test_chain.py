@@ -54,10 +54,16 @@ NUMBERS = st.floats(-3, 3)
 PERIODS = st.sampled_from([1.0, 2.0, 3.0, 2.5, 5 / 3, (1 + 5**0.5) / 2, 7.3])
 WAVES = st.builds(Wave, st.one_of(NUMBERS, st.just("depth")), PERIODS, NUMBERS, st.integers(-2, 2))
 CHAINS = st.builds(
-    ModulatedChain, sites=st.integers(1, 9), hopping=NUMBERS, level=NUMBERS, onsite=st.lists(WAVES, max_size=3),
-    bonds=st.lists(WAVES, max_size=3), probe=st.builds(Lead, st.just(1.0), NUMBERS, st.floats(0.1, 2)),
+    ModulatedChain,
+    sites=st.integers(1, 9),
+    hopping=NUMBERS,
+    level=NUMBERS,
+    onsite=st.lists(WAVES, max_size=3),
+    bonds=st.lists(WAVES, max_size=3),
+    probe=st.builds(Lead, st.just(1.0), NUMBERS, st.floats(0.1, 2)),
     drain=st.builds(Lead, st.just(1.0), NUMBERS, st.floats(0.1, 2)),
-    cycle=st.just(Cycle(lambda phase: {"depth": 1.3 + np.cos(phase), "phi": phase})))
+    cycle=st.just(Cycle(lambda phase: {"depth": 1.3 + np.cos(phase), "phi": phase})),
+)
 
 
 @settings(derandomize=True, deadline=None)
@@ -164,8 +170,14 @@ def test_disorder_norm_bounds_its_part_of_the_hamiltonian(onsite: float, bonds: 
 
 
 def test_disorder_weaker_than_the_gap_leaves_the_integer() -> None:
-    chain = ModulatedChain(sites=45, fermi_level=-1.211, onsite=[Wave(1.5, 3)], probe=Lead(2.0), drain=Lead(2.0),
-                           disorder=Disorder(0.4, 0.1, 2))
+    chain = ModulatedChain(
+        sites=45,
+        fermi_level=-1.211,
+        onsite=[Wave(1.5, 3)],
+        probe=Lead(2.0),
+        drain=Lead(2.0),
+        disorder=Disorder(0.4, 0.1, 2),
+    )
     # derived: the Fermi level is more than 0.53 away from every band, the disorder's norm is 0.3
     assert chain.disorder.norm == pytest.approx(0.3)
     assert certify(chain.pump()).number == 1
@@ -174,10 +186,25 @@ def test_disorder_weaker_than_the_gap_leaves_the_integer() -> None:
 # --- period ---
 
 
-@pytest.mark.parametrize(("periods", "sites", "expected"), [
-    ([], 5, 1), ([3.0], 30, 3), ([2.5], 30, 5), ([1.5], 30, 3), ([2.0, 3.0], 30, 6), ([4.0, 6.0], 30, 12),
-    ([0.5], 30, 1), ([1 / 3], 30, 1), ([5 / 3], 30, 5), ([3.0], 2, None), ([2.0, 3.0], 5, None),
-    ([(1 + 5**0.5) / 2], 30, None), ([7.3], 30, None), ([7.3], 80, 73)])
+@pytest.mark.parametrize(
+    ("periods", "sites", "expected"),
+    [
+        ([], 5, 1),
+        ([3.0], 30, 3),
+        ([2.5], 30, 5),
+        ([1.5], 30, 3),
+        ([2.0, 3.0], 30, 6),
+        ([4.0, 6.0], 30, 12),
+        ([0.5], 30, 1),
+        ([1 / 3], 30, 1),
+        ([5 / 3], 30, 5),
+        ([3.0], 2, None),
+        ([2.0, 3.0], 5, None),
+        ([(1 + 5**0.5) / 2], 30, None),
+        ([7.3], 30, None),
+        ([7.3], 80, 73),
+    ],
+)
 def test_period_is_the_smallest_common_one(periods: list[float], sites: int, expected: int | None) -> None:
     chain = ModulatedChain(sites=sites, onsite=[Wave(1.0, period) for period in periods])
     # derived: least common multiple of the numerators, None if the chain is shorter
@@ -228,21 +255,24 @@ def test_wave_without_its_parameter_is_refused() -> None:
     refused("cycle", onsite=[Wave(1.0, 3)], cycle=Cycle.angle("flux"))
 
 
-@pytest.mark.parametrize(("make", "arguments", "field"), [
-    (Wave, {"amplitude": 1.0, "period": 0.0}, "period"),
-    (Wave, {"amplitude": 1.0, "period": -2.0}, "period"),
-    (Wave, {"amplitude": 1.0, "period": float("inf")}, "period"),
-    (Wave, {"amplitude": float("nan"), "period": 3.0}, "amplitude"),
-    (Wave, {"amplitude": "two words", "period": 3.0}, "amplitude"),
-    (Wave, {"amplitude": 1.0, "period": 3.0, "lag": float("nan")}, "lag"),
-    (Lead, {"hopping": 0.0}, "hopping"),
-    (Lead, {"hopping": -1.0}, "hopping"),
-    (Lead, {"contact": 0.0}, "contact"),
-    (Lead, {"level": float("inf")}, "level"),
-    (Disorder, {"onsite": -0.1}, "onsite"),
-    (Disorder, {"bonds": -0.1}, "bonds"),
-    (Disorder, {"onsite": float("nan")}, "onsite"),
-])
+@pytest.mark.parametrize(
+    ("make", "arguments", "field"),
+    [
+        (Wave, {"amplitude": 1.0, "period": 0.0}, "period"),
+        (Wave, {"amplitude": 1.0, "period": -2.0}, "period"),
+        (Wave, {"amplitude": 1.0, "period": float("inf")}, "period"),
+        (Wave, {"amplitude": float("nan"), "period": 3.0}, "amplitude"),
+        (Wave, {"amplitude": "two words", "period": 3.0}, "amplitude"),
+        (Wave, {"amplitude": 1.0, "period": 3.0, "lag": float("nan")}, "lag"),
+        (Lead, {"hopping": 0.0}, "hopping"),
+        (Lead, {"hopping": -1.0}, "hopping"),
+        (Lead, {"contact": 0.0}, "contact"),
+        (Lead, {"level": float("inf")}, "level"),
+        (Disorder, {"onsite": -0.1}, "onsite"),
+        (Disorder, {"bonds": -0.1}, "bonds"),
+        (Disorder, {"onsite": float("nan")}, "onsite"),
+    ],
+)
 def test_parts_out_of_range_are_refused(make: Any, arguments: dict[str, Any], field: str) -> None:
     with pytest.raises(InputError, match=field) as caught:
         make(**arguments)

@@ -50,8 +50,12 @@ class Dimer:
     height: float
 
     def pump(self) -> Pump:
-        return rice_mele(loop(delta=(0, self.width), stagger=(0, self.height)), cells=60, energy=self.energy,
-                         probe=Lead(self.hopping, contact=self.contact))
+        return rice_mele(
+            loop(delta=(0, self.width), stagger=(0, self.height)),
+            cells=60,
+            energy=self.energy,
+            probe=Lead(self.hopping, contact=self.contact),
+        )
 
     def reflection(self, phases: NDArray[np.float64]) -> NDArray[np.complex128]:
         level, delta = self.height * np.sin(phases), self.width * np.cos(phases)
@@ -64,8 +68,9 @@ class Dimer:
         return np.asarray(reflection(lead_amplitude(self.energy, self.hopping), self.contact, over, under))
 
 
-def decay_of_dimer(energy: float, level: NDArray[np.float64], inside: NDArray[np.float64],
-                   between: NDArray[np.float64]) -> NDArray[np.float64]:
+def decay_of_dimer(
+    energy: float, level: NDArray[np.float64], inside: NDArray[np.float64], between: NDArray[np.float64]
+) -> NDArray[np.float64]:
     """Return the root of decay + 1 / decay = X with |decay| < 1, as 1 over the large root."""
     half = (energy**2 - level**2 - inside**2 - between**2) / (2 * inside * between)
     return np.asarray(1 / (half + np.sign(half) * np.sqrt(half**2 - 1)))
@@ -88,9 +93,16 @@ def test_reflection_of_the_dimerised_chain(dimer: Dimer) -> None:
 
 
 def test_reflection_of_the_dimerised_chain_by_value() -> None:
-    expected = [1, 0.991727400687 + 0.128361842952j, 0.952975774279 + 0.303046487585j, 0.345113413427 + 0.938560989959j,
-                -0.948549152049 + 0.316629919854j, 0.006483069394 - 0.999978984685j, 0.88949527249 - 0.456944373221j,
-                0.997519332058 - 0.070393054849j]
+    expected = [
+        1,
+        0.991727400687 + 0.128361842952j,
+        0.952975774279 + 0.303046487585j,
+        0.345113413427 + 0.938560989959j,
+        -0.948549152049 + 0.316629919854j,
+        0.006483069394 - 0.999978984685j,
+        0.88949527249 - 0.456944373221j,
+        0.997519332058 - 0.070393054849j,
+    ]
     found = absolute_reflection(DIMERS[1].pump(), [0, 0.5, 1, 2, 3, 4, 5, 6])
     # derived: the formula above, evaluated independently
     np.testing.assert_allclose(found, expected, rtol=0, atol=EXACT)
@@ -126,8 +138,7 @@ def test_reflection_of_the_sliding_cosine(gap: HarperGap) -> None:
     np.testing.assert_allclose(found, [cosine_reflection(gap, phase) for phase in phases], rtol=0, atol=EXACT)
 
 
-@pytest.mark.parametrize(("index", "expected"),
-                         [(0, 0.965829224 - 0.259179301j), (7, 0.9869742982 + 0.160878012j)])
+@pytest.mark.parametrize(("index", "expected"), [(0, 0.965829224 - 0.259179301j), (7, 0.9869742982 + 0.160878012j)])
 def test_reflection_of_the_sliding_cosine_by_value(index: int, expected: complex) -> None:
     found = absolute_reflection(harper(HARPER_GAPS[index]), [0.0])
     # derived: the transfer matrices above, evaluated independently and printed to nine decimals
@@ -206,8 +217,15 @@ def transmission(cells: int, energy: float) -> float:
     return float(reflect(still_dimer(cells, energy), [0.0]).leakage[0])
 
 
-@pytest.mark.parametrize(("energy", "cells", "expected", "relative"), [
-    (0.0, 4, 0.273028, 2e-6), (0.0, 8, 0.271768680, 2e-9), (0.0, 12, 0.271761813, 2e-9), (0.25, 12, 0.301218586, 2e-9)])
+@pytest.mark.parametrize(
+    ("energy", "cells", "expected", "relative"),
+    [
+        (0.0, 4, 0.273028, 2e-6),
+        (0.0, 8, 0.271768680, 2e-9),
+        (0.0, 12, 0.271761813, 2e-9),
+        (0.25, 12, 0.301218586, 2e-9),
+    ],
+)
 def test_one_more_cell_lets_less_through(energy: float, cells: int, expected: float, relative: float) -> None:
     ratio = transmission(cells + 1, energy) / transmission(cells, energy)
     # derived; computed independently and printed to as many decimals as `relative` says
@@ -291,8 +309,10 @@ def test_an_edge_level_turns_the_phase_once_round(contact: float, turn: float) -
     assert steps(against_wall[:, None, None]).turns == pytest.approx(turn, abs=1e-9)
 
 
-@pytest.mark.parametrize(("contact", "peak", "height", "relative"), [
-    (0.3, 0.10445, 3.984, 3e-4), (0.1, 0.10045, 35.855, 3e-5), (0.05, 0.10011, 143.42, 4e-5)])
+@pytest.mark.parametrize(
+    ("contact", "peak", "height", "relative"),
+    [(0.3, 0.10445, 3.984, 3e-4), (0.1, 0.10045, 35.855, 3e-5), (0.05, 0.10011, 143.42, 4e-5)],
+)
 def test_delay_on_an_edge_level(contact: float, peak: float, height: float, relative: float) -> None:
     def phase(energy: float) -> float:
         return float(np.angle(edge_resonance(contact, np.array([energy]))[0]))

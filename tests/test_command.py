@@ -142,18 +142,30 @@ def test_no_place_for_json_is_bad_input(device: Path, tmp_path: Path) -> None:
     assert "out.json" in result.stderr
 
 
-@pytest.mark.parametrize(("change", "field", "value"), [
-    ("sites=45", "sites", 45), ("sites = 45", "sites", 45), ("fermi_level=1.2", "fermi_level", 1.2),
-    ("name=short", "name", "short"), ('name="with spaces"', "name", "with spaces"), ("drain=wall", "drain", "wall")])
+@pytest.mark.parametrize(
+    ("change", "field", "value"),
+    [
+        ("sites=45", "sites", 45),
+        ("sites = 45", "sites", 45),
+        ("fermi_level=1.2", "fermi_level", 1.2),
+        ("name=short", "name", "short"),
+        ('name="with spaces"', "name", "with spaces"),
+        ("drain=wall", "drain", "wall"),
+    ],
+)
 def test_set_changes_a_key(device: Path, change: str, field: str, value: object) -> None:
     # derived
     assert getattr(load_device(device, [change]), field) == value
 
 
-@pytest.mark.parametrize(("change", "read"), [
-    ("probe.contact=0.1", lambda chain: chain.probe.contact),
-    ("onsite.0.amplitude=0.1", lambda chain: chain.onsite[0].amplitude),
-    ("disorder.onsite=0.1", lambda chain: chain.disorder.onsite)])
+@pytest.mark.parametrize(
+    ("change", "read"),
+    [
+        ("probe.contact=0.1", lambda chain: chain.probe.contact),
+        ("onsite.0.amplitude=0.1", lambda chain: chain.onsite[0].amplitude),
+        ("disorder.onsite=0.1", lambda chain: chain.disorder.onsite),
+    ],
+)
 def test_set_reaches_into_tables_and_lists(device: Path, change: str, read: Any) -> None:
     # derived
     assert read(load_device(device, [change])) == 0.1
@@ -166,8 +178,10 @@ def test_set_reaches_the_verdict(device: Path) -> None:
     assert (found["name"], found["fermi_level"], found["winding"]["number"]) == ("upper gap", 1.2, -1)
 
 
-@pytest.mark.parametrize(("change", "word"), [
-    ("drain=wall", "hard wall"), ("sites=3", "reach another lead"), ("fermi_level=0.3", "Fermi level in gap")])
+@pytest.mark.parametrize(
+    ("change", "word"),
+    [("drain=wall", "hard wall"), ("sites=3", "reach another lead"), ("fermi_level=0.3", "Fermi level in gap")],
+)
 def test_alarm_is_exit_code_one(device: Path, change: str, word: str) -> None:
     """A closed far end, a chain of one period, a Fermi level inside a band."""
     result = told(device, change)

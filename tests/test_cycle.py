@@ -100,14 +100,17 @@ def test_trace_from_a_file_is_the_trace_from_its_columns(tmp_path: Path) -> None
         assert same(Cycle.through(path).at(phase), Cycle.through(SQUARE).at(phase))
 
 
-@pytest.mark.parametrize(("table", "message"), [
-    ({"x": [0.0, 1.0, 2.0, 1.0]}, "open: 'x' starts at 0 and ends at 1"),
-    ({"x": [0.0, 1.0, 0.0]}, "at least four rows"),
-    ({"x": [0.0, 1.0, 2.0, 0.0], "y": [0.0, 1.0, 2.0, 3.0, 0.0]}, "equal length"),
-    ({"x": [0.0, float("nan"), 1.0, 0.0]}, "row 2, column 'x' is not finite"),
-    ({"x": [0.0, 1.0, float("inf"), 0.0]}, "row 3, column 'x' is not finite"),
-    ({}, "named columns"),
-])
+@pytest.mark.parametrize(
+    ("table", "message"),
+    [
+        ({"x": [0.0, 1.0, 2.0, 1.0]}, "open: 'x' starts at 0 and ends at 1"),
+        ({"x": [0.0, 1.0, 0.0]}, "at least four rows"),
+        ({"x": [0.0, 1.0, 2.0, 0.0], "y": [0.0, 1.0, 2.0, 3.0, 0.0]}, "equal length"),
+        ({"x": [0.0, float("nan"), 1.0, 0.0]}, "row 2, column 'x' is not finite"),
+        ({"x": [0.0, 1.0, float("inf"), 0.0]}, "row 3, column 'x' is not finite"),
+        ({}, "named columns"),
+    ],
+)
 def test_trace_that_is_no_cycle_is_refused(table: dict[str, list[float]], message: str) -> None:
     with pytest.raises(InputError, match=message):
         Cycle.through(table)
@@ -150,13 +153,15 @@ def test_started_at_shifts_the_phase(cycle: Cycle, phase: float, start: float) -
     assert cycle.started_at(start).at(phase) == cycle.at(phase + start)
 
 
-CHANGES = st.sampled_from([
-    lambda cycle: cycle,
-    lambda cycle: cycle.reversed(),
-    lambda cycle: cycle.repeated(3),
-    lambda cycle: cycle.started_at(0.3),
-    lambda cycle: cycle.repeated(2).started_at(1.1).reversed(),
-])
+CHANGES = st.sampled_from(
+    [
+        lambda cycle: cycle,
+        lambda cycle: cycle.reversed(),
+        lambda cycle: cycle.repeated(3),
+        lambda cycle: cycle.started_at(0.3),
+        lambda cycle: cycle.repeated(2).started_at(1.1).reversed(),
+    ]
+)
 
 
 @given(CHANGES)

@@ -37,8 +37,9 @@ def swinging(a: Any, b: Any, phi: float) -> complex:
     return -1.0 - 0.4 * np.sin(phi + a.tag[0]) + 0.3j * np.cos(phi)
 
 
-def lead(direction: Sequence[int], sites: Sequence[Any], *, hopping: Any = -1.6, level: Any = 0.0,
-         across: complex = -1.0) -> kwant.Builder:
+def lead(
+    direction: Sequence[int], sites: Sequence[Any], *, hopping: Any = -1.6, level: Any = 0.0, across: complex = -1.0
+) -> kwant.Builder:
     """A straight wire whose cell is `sites`, neighbours in the list being joined."""
     wire = kwant.Builder(kwant.TranslationalSymmetry(tuple(direction)))
     for site in sites:
@@ -181,6 +182,22 @@ def uncoupled_row_in_the_lead() -> Pump:
     return Pump(system, Cycle.angle(), 0.4)
 
 
+def closed_row_in_the_lead() -> Pump:
+    """Two rows that do not see each other, of which the lead opens only one at this energy."""
+    system = kwant.Builder()
+    for y in range(2):
+        for x in range(9):
+            system[SQUARE(x, y)] = sliding if 2 <= x < 7 else 0.1
+        for x in range(8):
+            system[SQUARE(x, y), SQUARE(x + 1, y)] = -1
+    system[SQUARE(4, 0), SQUARE(4, 1)] = -0.3
+    for direction in (-1, 1):
+        wire = lead((direction, 0), [SQUARE(0, 0), SQUARE(0, 1)], across=0.0)
+        wire[SQUARE(0, 1)] = 6.0
+        system.attach_lead(wire)
+    return Pump(system, Cycle.angle(), 0.4)
+
+
 def narrow_neck() -> Pump:
     """Three open modes of the probe, one site to the driven part."""
     system = kwant.Builder()
@@ -242,6 +259,7 @@ GEOMETRIES: dict[str, Callable[[], Pump]] = {
     "lead in the middle": lead_in_the_middle,
     "both on one side": both_leads_on_one_side,
     "uncoupled row": uncoupled_row_in_the_lead,
+    "closed row": closed_row_in_the_lead,
     "narrow neck": narrow_neck,
     "two orbitals": two_orbitals,
     "one and two orbitals": mixed_orbitals,
@@ -315,10 +333,21 @@ def test_hops_from_the_probe_are_steps_of_at_most_one(build: Callable[[], Pump])
     assert device.distance.max() < device.size
 
 
-@pytest.mark.parametrize(("build", "size"), [
-    (plain_chain, 9), (long_still_stretches, 8), (hard_wall, 15), (dimerised_leads, 7), (still_side_branch, 14),
-    (island, 9), (wide, 15), (both_leads_on_one_side, 36), (two_orbitals, 12)],
-    ids=["chain", "long", "wall", "cells", "branch", "island", "ribbon", "one side", "orbitals"])
+@pytest.mark.parametrize(
+    ("build", "size"),
+    [
+        (plain_chain, 9),
+        (long_still_stretches, 8),
+        (hard_wall, 15),
+        (dimerised_leads, 7),
+        (still_side_branch, 14),
+        (island, 9),
+        (wide, 15),
+        (both_leads_on_one_side, 36),
+        (two_orbitals, 12),
+    ],
+    ids=["chain", "long", "wall", "cells", "branch", "island", "ribbon", "one side", "orbitals"],
+)
 def test_only_what_must_stay_stays(build: Callable[[], Pump], size: int) -> None:
     device = fold(build())
     # derived: driven orbitals, and still ones that touch no lead or two
@@ -349,8 +378,10 @@ def test_orbitals_that_join_only_for_a_part_of_the_cycle_are_kept() -> None:
         system.attach_lead(lead((direction,), [CHAIN(0)], hopping=-1.0))
     pump = Pump(system, Cycle.angle(), 0.0)
     device = fold(pump)
-    ratio = [np.linalg.det(a) / np.linalg.det(folded_reflection(device, float(p)))
-             for a, p in zip(actual_reflection(pump), PHASES, strict=True)]
+    ratio = [
+        np.linalg.det(a) / np.linalg.det(folded_reflection(device, float(p)))
+        for a, p in zip(actual_reflection(pump), PHASES, strict=True)
+    ]
     # block elimination
     assert_allclose(ratio, ratio[0], rtol=0, atol=1e-10)
 
@@ -363,24 +394,24 @@ def dimerised(a: Any, b: Any, delta: float, stagger: float) -> float:
     return -1 - (-1) ** min(a.tag[0], b.tag[0]) * delta
 
 
-def dimer_rows(contacts: Sequence[float], *, cells: int, barrier: int = 0) -> Pump:
-    """Dimerised chains side by side, each behind a contact of its own, and one drain behind a still barrier."""
-    system, rows = kwant.Builder(), range(len(contacts))
+def dimer_rows(contacts: Sequence[float], *, cells: int, barrier: int = 0, rows: int = 0) -> Pump:
+    """Dimerised chains side by side, the first ones behind contacts, and one drain behind a still barrier."""
+    system, rows = kwant.Builder(), rows or len(contacts)
     end = 2 * cells
-    for y in rows:
+    for y in range(rows):
         for x in range(end):
             system[SQUARE(x, y)] = staggered
         for x in range(end - 1):
             system[SQUARE(x, y), SQUARE(x + 1, y)] = dimerised
-        for x in range(end, end + barrier):
-            system[SQUARE(x, y)], system[SQUARE(x, y), SQUARE(x - 1, y)] = 3.0, -1.0
-        end_site = SQUARE(end + barrier, y)
-        system[SQUARE(-1, y)] = system[end_site] = 0.0
-        system[SQUARE(-1, y), SQUARE(0, y)] = -contacts[y]
-        system[end_site, SQUARE(end + barrier - 1, y)] = -1.0
-    for direction in (-1, 1):
+        for x in range(end, end + barrier + 1):
+            system[SQUARE(x, y)] = 3.0 if x < end + barrier else 0.0
+            system[SQUARE(x, y), SQUARE(x - 1, y)] = -1.0
+    for y, contact in enumerate(contacts):
+        system[SQUARE(-1, y)] = 0.0
+        system[SQUARE(-1, y), SQUARE(0, y)] = -contact
+    for direction, width in ((-1, len(contacts)), (1, rows)):
         wire = kwant.Builder(kwant.TranslationalSymmetry((direction, 0)))
-        for y in rows:
+        for y in range(width):
             wire[SQUARE(0, y)], wire[SQUARE(0, y), SQUARE(1, y)] = 0.0, -2.0
         system.attach_lead(wire)
     return Pump(system, Cycle.ellipse(x=("delta", 0.0, 0.5), y=("stagger", 0.0, 0.5)), 0.0)
@@ -407,6 +438,17 @@ def test_a_drain_behind_a_barrier_is_still_a_drain(cells: int, barrier: int) -> 
     # derived: e^{-2 kappa barrier}, 2 cosh kappa = 3, against (1/3)^(2 cells); r computed with 90 digits winds once
     assert found.number in {1, None}
     assert found.method != "no drain"
+
+
+@pytest.mark.parametrize("contact", [1.0, 1e-3, 1e-8])
+def test_a_drain_of_which_only_a_part_belongs_to_the_device_is_still_a_drain(contact: float) -> None:
+    """Three rows end in one drain whose rows do not see each other; the probe sits at the first row alone."""
+    pump = dimer_rows([contact], cells=24, rows=3)
+    assert fold(pump).drain.shape[1] == 1
+    found = certify(pump)
+    # derived: rows that are not coupled do not matter, and one row pumps one charge
+    assert (found.number, found.method != "no drain") == (1, True)
+    assert found.leak.bound > 0
 
 
 def test_a_drain_that_nothing_connects_to_the_probe_is_none() -> None:

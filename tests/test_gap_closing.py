@@ -146,9 +146,18 @@ def test_open_gap_and_enough_length_are_trusted(centre: float, cells: int, integ
     assert verdict.winding.number == verdict.chern == integer
 
 
-@pytest.mark.parametrize(("centre", "cells", "smallest", "digit"), [
-    (0.40, 20, 0.9968, 1e-4), (0.45, 20, 0.851, 1e-3), (0.45, 60, 0.99995, 1e-5), (0.49, 20, 0.294, 1e-3),
-    (0.49, 60, 0.460, 1e-3), (0.51, 20, 0.794, 1e-3), (0.51, 60, 0.955, 1e-3)])
+@pytest.mark.parametrize(
+    ("centre", "cells", "smallest", "digit"),
+    [
+        (0.40, 20, 0.9968, 1e-4),
+        (0.45, 20, 0.851, 1e-3),
+        (0.45, 60, 0.99995, 1e-5),
+        (0.49, 20, 0.294, 1e-3),
+        (0.49, 60, 0.460, 1e-3),
+        (0.51, 20, 0.794, 1e-3),
+        (0.51, 60, 0.955, 1e-3),
+    ],
+)
 def test_smallest_reflection_of_a_thin_gap(centre: float, cells: int, smallest: float, digit: float) -> None:
     trace = reflect(rice_mele(loop(delta=(centre, 0.5)), cells=cells), [np.pi])
     # derived, to the printed digits; the gap is thinnest at half a cycle
@@ -166,8 +175,9 @@ drain = {{hopping = 2.0}}
 """
 
 
-@pytest.mark.parametrize(("centre", "sites", "energy", "code"), [
-    (0.5, 80, 1e-9, 1), (0.49, 40, 0.0, 1), (0.4, 40, 0.0, 0)])
+@pytest.mark.parametrize(
+    ("centre", "sites", "energy", "code"), [(0.5, 80, 1e-9, 1), (0.49, 40, 0.0, 1), (0.4, 40, 0.0, 0)]
+)
 def test_exit_code_tells_a_closing_gap(tmp_path: Path, centre: float, sites: int, energy: float, code: int) -> None:
     device = tmp_path / "loop.toml"
     device.write_text(DEVICE.format(centre=centre, sites=sites, energy=energy))

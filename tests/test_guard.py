@@ -1,4 +1,7 @@
-"""Rounding: where double precision cannot tell, the proof refuses or takes another way, and never states a wrong number."""
+"""Rounding.
+
+Where double precision cannot tell, the proof refuses or takes another way, and never states a wrong number.
+"""
 
 from __future__ import annotations
 
@@ -37,7 +40,8 @@ def noisy(device: FoldedDevice, seed: int) -> NoisyDevice:
 
 @pytest.mark.parametrize("width", [1e-13, 1e-14, 1e-15, 1e-16])
 def test_noise_never_makes_a_wrong_number(width: float) -> None:
-    # derived: half-width contact^2 (8/9) / (lead hopping * 0.5) of the resonance; the loop goes round the gapless origin once
+    # derived: half-width contact^2 (8/9) / (lead hopping * 0.5) of the resonance; the loop goes round the gapless
+    # origin once
     pump = rice_mele(loop(), cells=20, probe=Lead(2.0, contact=float(np.sqrt(width * 9 / 8))))
     device = fold(pump)
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))

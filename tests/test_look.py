@@ -84,11 +84,18 @@ def at_level(device: Device, distance: float) -> Device:
 
 
 GENERAL = [*map(disordered, range(25)), *(disordered(seed, size=12, channels=1, half=1) for seed in range(15))]
-NARROW = [at_level(disordered(seed, channels=1 + seed % 2), 10.0**-exponent)
-          for seed, exponent in enumerate((2, 3, 4, 5, 6, 7, 8, 9))]
+NARROW = [
+    at_level(disordered(seed, channels=1 + seed % 2), 10.0**-exponent)
+    for seed, exponent in enumerate((2, 3, 4, 5, 6, 7, 8, 9))
+]
 ENDS = [dimers(12, contact=c, far=f, level=v) for c in (1.0, 1e-2, 1e-4) for f in (1.0, 1e-3) for v in (0.3, 1e-5, 0.0)]
-COPIES = [dimers(10, contact=c, far=0.5, level=v, copies=k, apart=d)
-          for c in (1.0, 1e-2, 1e-4) for k in (2, 3) for v in (0.2, 0.0) for d in (0.0, 1e-12, 1e-6, 1e-2)]
+COPIES = [
+    dimers(10, contact=c, far=0.5, level=v, copies=k, apart=d)
+    for c in (1.0, 1e-2, 1e-4)
+    for k in (2, 3)
+    for v in (0.2, 0.0)
+    for d in (0.0, 1e-12, 1e-6, 1e-2)
+]
 ALL = [*GENERAL, *NARROW, *ENDS, *COPIES]
 
 

@@ -13,13 +13,19 @@ from numpy.testing import assert_allclose
 from numpy.typing import NDArray
 
 from scatterpump.cycle import Cycle
-from scatterpump.solver.path import SampledPath, StraightPath, TrigonometricPath, follow
+from scatterpump.solver.path import Path, SampledPath, StraightPath, TrigonometricPath
+from scatterpump.solver.path import follow as follow_many
 
 Entries = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 TURN = 2 * np.pi
 SIZE = 3
 TRACE = {"a": [0.0, 1.0, 0.3, -1.0, 0.0], "b": [1.0, 0.0, -1.5, 0.2, 1.0]}
+
+
+def follow(sample: Callable[[float], Entries], cycle: Cycle) -> Path:
+    """Follow a Hamiltonian given phase by phase."""
+    return follow_many(lambda phases: np.array([sample(float(phase)) for phase in phases]), cycle)
 
 
 def norm(entries: Entries) -> float:
@@ -152,7 +158,7 @@ def test_opposite_phases_of_a_single_harmonic_are_told_apart() -> None:
 
 
 @pytest.mark.parametrize("centre", np.linspace(0.1, TURN, 15))
-@pytest.mark.parametrize("width", [0.4, 0.8])
+@pytest.mark.parametrize("width", [0.2, 0.4, 0.8])
 def test_a_pulse_in_the_hamiltonian_is_not_taken_for_rest(centre: float, width: float) -> None:
     """A value function of phi may rest almost all round the cycle: what is called exact has to know the pulse."""
     still, moved = (hermitian(np.random.default_rng(seed)) for seed in (1, 2))
@@ -168,6 +174,24 @@ def test_a_pulse_in_the_hamiltonian_is_not_taken_for_rest(centre: float, width: 
     assert not path.exact
     assert miss < 1e-12
     assert path.slopes(norm).largest >= norm(moved) * np.pi / (2 * width) * 1.29  # sup of |d cos^4| is 1.299
+
+
+@pytest.mark.parametrize("wall", [1.0, 1e4, 1e8])
+@pytest.mark.parametrize("kind", ["round", "straight"])
+def test_a_strong_still_element_does_not_hide_what_a_weak_one_does(kind: str, wall: float) -> None:
+    """A hard wall inside the device must not coarsen what is called exact elsewhere."""
+    cycle = Cycle.angle() if kind == "round" else Cycle.through({"phi": [0.0, 2.0, 1.0, 0.0]})
+    still, moved = (hermitian(np.random.default_rng(seed)) for seed in (1, 2))
+    still[0], moved[0] = wall, 0.0
+
+    def sample(phase: float) -> Entries:
+        return still + moved / (1.2 + np.cos(cycle.at(phase)["phi"]))
+
+    path = follow(sample, cycle)
+    miss = max(float(np.abs(path.at(p) - sample(p)).max()) for p in np.linspace(0, TURN, 50).tolist())
+    # derived: this function has all harmonics, and no straight piece
+    assert not path.exact
+    assert miss < 1e-12 * max(1.0, wall)
 
 
 @settings(derandomize=True, deadline=None)
@@ -269,11 +293,15 @@ def test_a_spline_is_only_estimated_with_a_safety_factor() -> None:
     assert norm(bend) <= slopes.second
 
 
-@pytest.mark.parametrize("cycle", [
-    Cycle.ellipse(x=("a", 0.1, 0.7), y=("b", -0.2, 0.4)),
-    Cycle.through(TRACE),
-    Cycle.through(TRACE, curve="spline"),
-], ids=["ellipse", "straight", "spline"])
+@pytest.mark.parametrize(
+    "cycle",
+    [
+        Cycle.ellipse(x=("a", 0.1, 0.7), y=("b", -0.2, 0.4)),
+        Cycle.through(TRACE),
+        Cycle.through(TRACE, curve="spline"),
+    ],
+    ids=["ellipse", "straight", "spline"],
+)
 @pytest.mark.parametrize("change", ["reversed", "repeated", "begun elsewhere", "all"])
 def test_paths_of_cycles_derived_from_another(cycle: Cycle, change: str) -> None:
     moved, where, rate = {
@@ -304,6 +332,7 @@ def test_some_elements_alone_move_as_they_did(wave: Wave, chosen: list[int]) -> 
     part = path.only(np.array(chosen))
     values = wave(np.linspace(0, TURN, 200))
     mean = (wave.parts[0] + wave.parts[0].conj().T).ravel()
+    assert_allclose(path.many(np.array([1.1, 7.0])), [path.at(1.1), path.at(7.0)], rtol=0, atol=1e-13)
     # derived: the moduli of the harmonics add up to at least what the element strays from its mean
     assert (path.variation() >= np.abs(values - mean).max(axis=0) * (1 - 1e-12)).all()
     assert_allclose(part.at(1.1), path.at(1.1)[chosen], rtol=0, atol=1e-13)

@@ -19,9 +19,9 @@ from scatterpump.solver.reflect import reflect
 from scatterpump.winding.certificate import certify
 from scatterpump.winding.unwrap import steps
 
-# Contact amplitude and the most looks allowed: 12 behind an open contact, 16 down to 1e-6, 32 below (the project's own budget).
-# The winding is 1, that of the loop round the gapless origin: M. J. Rice, E. J. Mele, Phys. Rev. Lett. 49, 1455 (1982)
-# (citation from memory).
+# Contact amplitude and the most looks allowed: 12 behind an open contact, 16 down to 1e-6, 32 below (the project's
+# own budget). The winding is 1, that of the loop round the gapless origin: M. J. Rice, E. J. Mele, Phys. Rev. Lett.
+# 49, 1455 (1982) (citation from memory).
 AMPLITUDES = [(1.0, 12), *((10.0**-k, 16) for k in range(1, 7)), *((10.0**-k, 32) for k in range(7, 11))]
 
 
@@ -33,9 +33,9 @@ def test_forty_cells_wind_once_at_every_contact(amplitude: float, budget: int) -
     assert [crossing.direction for crossing in winding.crossings] == [1]
 
 
-# Contact amplitudes at which a grid of 401 points that straddles the resonance still sees it, and at which it does not; the
-# half-width in phi is w = contact^2 (8/9) / (lead hopping * 0.5), and a turn is lost when w < h/2 (derived: a resonance between
-# two samples of distance h).
+# Contact amplitudes at which a grid of 401 points that straddles the resonance still sees it, and at which it does
+# not; the half-width in phi is w = contact^2 (8/9) / (lead hopping * 0.5), and a turn is lost when w < h/2 (derived:
+# a resonance between two samples of distance h).
 GRID_READS = [(0.2, 1), (0.07, 1), (0.06, 0), (0.03, 0), (0.01, 0)]
 
 
@@ -81,8 +81,14 @@ def two_band_strip(layers: int, contact: float) -> Pump:
     return wired(system, lattice, layers, -contact * np.eye(2), 0.0, Cycle.angle())
 
 
-def wired(system: kwant.Builder, lattice: kwant.lattice.Monatomic, sites: int, contact: np.ndarray, energy: float,
-          cycle: Cycle) -> Pump:
+def wired(
+    system: kwant.Builder,
+    lattice: kwant.lattice.Monatomic,
+    sites: int,
+    contact: np.ndarray,
+    energy: float,
+    cycle: Cycle,
+) -> Pump:
     """Attach a lead-like site and a lead of hopping 2 to both ends."""
     one = np.eye(2)
     system[lattice(-1)], system[lattice(sites)] = 0 * one, 0 * one
@@ -95,16 +101,25 @@ def wired(system: kwant.Builder, lattice: kwant.lattice.Monatomic, sites: int, c
 
 
 def sliding(period: int, energy: float, depth: float, sites: int, contact: float) -> Pump:
-    return ModulatedChain(sites=sites, fermi_level=energy, onsite=[Wave(depth, period)], probe=Lead(2.0, contact=contact),
-                          drain=WIDE).pump()
+    return ModulatedChain(
+        sites=sites, fermi_level=energy, onsite=[Wave(depth, period)], probe=Lead(2.0, contact=contact), drain=WIDE
+    ).pump()
 
 
 def disordered(width: float, contact: float) -> Pump:
-    return ModulatedChain(sites=50, cycle=loop(), onsite=[STAGGER], bonds=[DELTA], probe=Lead(2.0, contact=contact), drain=WIDE,
-                          disorder=Disorder(onsite=width, seed=1)).pump()
+    return ModulatedChain(
+        sites=50,
+        cycle=loop(),
+        onsite=[STAGGER],
+        bonds=[DELTA],
+        probe=Lead(2.0, contact=contact),
+        drain=WIDE,
+        disorder=Disorder(onsite=width, seed=1),
+    ).pump()
 
 
-# The looks a dense prototype needed at contacts 1, 0.1, 0.01, 1e-4, 1e-6 (the project's own record); ours may take 1.3 times as many.
+# The looks a dense prototype needed at contacts 1, 0.1, 0.01, 1e-4, 1e-6 (the project's own record); ours may take
+# 1.3 times as many.
 SYSTEMS = {
     "ten dimers": (lambda c: rice_mele(loop(), cells=10, probe=Lead(2.0, contact=c)), 1, (10, 9, 9, 10)),
     "coupled pair": (lambda c: coupled_pair(12, c), 2, (14, 13, 14, 15)),
@@ -129,8 +144,8 @@ def test_looks_stay_few_on_other_systems(name: str) -> None:
 
 
 def test_contact_weaker_than_the_leak_winds_zero() -> None:
-    # derived: behind a contact of 1e-6 on ten cells the edge level fills and drains through the far end; the change happens at 3.16e-6
-    # for these leads' broadening scale, between the two contacts below.
+    # derived: behind a contact of 1e-6 on ten cells the edge level fills and drains through the far end; the change
+    # happens at 3.16e-6 for these leads' broadening scale, between the two contacts below.
     strong, weak = (certify(rice_mele(loop(), cells=10, probe=Lead(2.0, contact=c))) for c in (1e-4, 1e-6))
     assert (strong.number, weak.number) == (1, 0)
 

@@ -302,7 +302,8 @@ def test_models_turn_as_their_zeros_and_poles_say(kind: str, seed: int) -> None:
             for end in (arm.reach, 0.37 * arm.reach):
                 # determinant of a pencil: textbook; along a straight line from 1 principal arguments are exact
                 assert arm.model.turned(side * end) == pytest.approx(whole_turn(arm.model, side, end), abs=1e-6)
-                assert_allclose(arm.model.at(side * end), models(arm.model, np.array([side * end]))[0], rtol=1e-9, atol=1e-12)
+                (value,) = models(arm.model, np.array([side * end]))
+                assert_allclose(arm.model.at(side * end), value, rtol=1e-9, atol=1e-12)
 
 
 def test_random_cases_reach_every_regime() -> None:

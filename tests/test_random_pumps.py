@@ -1,4 +1,7 @@
-"""The proof against a count that shares nothing with it: random pumps, dense matrices, steps small enough by a textbook bound."""
+"""The proof against a count that shares nothing with it.
+
+Random pumps, dense matrices, steps small enough by a textbook bound.
+"""
 
 from __future__ import annotations
 
@@ -24,7 +27,10 @@ MOST_STEPS = 15_000
 
 @dataclass(frozen=True)
 class RandomPump:
-    """A chain of `sites` sites with m orbitals each, H(phi) = H_0 + e^{i phi} H_1 + h.c., between two wires of m channels."""
+    """A chain of `sites` sites with m orbitals each.
+
+    H(phi) = H_0 + e^{i phi} H_1 + h.c., between two wires of m channels.
+    """
 
     seed: int
     channels: int
@@ -43,7 +49,7 @@ class RandomPump:
         return onsite * np.array([1.0, *([0.6] * self.degree)])[:, None, None, None], hopping
 
     def pump(self, *, cycle: Cycle | None = None, shift: float = 0.0, rotation: Complex | None = None) -> Pump:
-        """Build it in kwant; `shift` moves the energy zero, `rotation` is a constant unitary on the probe wire's orbitals."""
+        """Build it in kwant; `shift` moves the energy zero, `rotation` a constant unitary on the probe wire."""
         onsite, hopping = self.blocks()
         lattice, system, one = kwant.lattice.chain(norbs=self.channels), kwant.Builder(), np.eye(self.channels)
 
@@ -56,7 +62,10 @@ class RandomPump:
 
         system[(lattice(x) for x in range(self.sites))] = level
         system[((lattice(x + 1), lattice(x)) for x in range(self.sites - 1))] = bond
-        for end, inside, direction, contact in ((-1, 0, -1, self.contact), (self.sites, self.sites - 1, 1, self.far_contact)):
+        for end, inside, direction, contact in (
+            (-1, 0, -1, self.contact),
+            (self.sites, self.sites - 1, 1, self.far_contact),
+        ):
             turned = rotation if rotation is not None and end < 0 else one
             system[lattice(end)] = shift * one
             system[lattice(inside), lattice(end)] = contact * turned
@@ -68,8 +77,9 @@ class RandomPump:
     def brute_force(self) -> int | None:
         """Walk round the cycle in steps that cannot miss a turn; None if that takes too many or r is singular.
 
-        From one point r^-1 r(phi + s) stays within 1 of the identity while s < 1/(l (|G| + |r^-1| w^2)), l = sup |H'| (von Neumann's
-        series, any textbook of linear algebra), so half of that keeps every eigenphase below a quarter turn.
+        From one point r^-1 r(phi + s) stays within 1 of the identity while s < 1/(l (|G| + |r^-1| w^2)), l = sup
+        |H'| (von Neumann's series, any textbook of linear algebra), so half of that keeps every eigenphase below a
+        quarter turn.
         """
         onsite, hopping = self.blocks()
         size, m = self.sites * self.channels, self.channels
@@ -98,7 +108,10 @@ class RandomPump:
 
 
 def _assembled(onsite: Complex, hopping: Complex, constant: bool) -> Complex:
-    """One harmonic as a matrix; hoppings carry their Hermitian partners only in the constant one (the caller adds them else)."""
+    """One harmonic as a matrix.
+
+    Hoppings carry their Hermitian partners only in the constant one (the caller adds them else).
+    """
     sites, m, _ = onsite.shape
     matrix = np.zeros((sites * m, sites * m), dtype=complex)
     for x in range(sites):
@@ -125,8 +138,14 @@ def proven(pump: Pump) -> Winding | None:
 
 
 PUMPS = st.builds(
-    RandomPump, seed=st.integers(0, 10**6), channels=st.integers(1, 3), sites=st.integers(2, 12),
-    contact=st.sampled_from([1.2, 0.6, 0.3, 0.15]), far_contact=st.sampled_from([1.2, 0.5, 0.05]), degree=st.integers(1, 2))
+    RandomPump,
+    seed=st.integers(0, 10**6),
+    channels=st.integers(1, 3),
+    sites=st.integers(2, 12),
+    contact=st.sampled_from([1.2, 0.6, 0.3, 0.15]),
+    far_contact=st.sampled_from([1.2, 0.5, 0.05]),
+    degree=st.integers(1, 2),
+)
 CHECKED = settings(derandomize=True, deadline=None, max_examples=30)
 FEWER = settings(derandomize=True, deadline=None, max_examples=6)
 
@@ -181,8 +200,9 @@ def test_energy_zero_does_not_matter(pump: RandomPump, shift: float) -> None:
 @FEWER
 @given(pump=PUMPS)
 def test_basis_of_the_modes_does_not_matter(pump: RandomPump) -> None:
-    rotation = np.linalg.qr(np.random.default_rng(pump.seed).standard_normal((2, pump.channels, pump.channels)).T
-                            @ np.array([1, 1j]))[0]
+    rotation = np.linalg.qr(
+        np.random.default_rng(pump.seed).standard_normal((2, pump.channels, pump.channels)).T @ np.array([1, 1j])
+    )[0]
     # derived: det(u r v) winds as det r for constant unitary u, v
     _agree(proven(pump.pump()), proven(pump.pump(rotation=rotation.reshape(pump.channels, pump.channels))), 1)
 

@@ -38,8 +38,10 @@ def charge_through_a_bond(period: float, *, sense: int = 1, momenta: int = 400, 
         energy = np.sqrt(np.abs(off) ** 2 + level**2)
         turn, over = np.cos(energy * step / 2), -1j * np.sin(energy * step / 2) / energy
         for half in range(2):  # the current is taken in the middle of the exact step
-            upper, lower = ((turn + over * level) * upper + over * off * lower,
-                            over * off.conj() * upper + (turn - over * level) * lower)
+            upper, lower = (
+                (turn + over * level) * upper + over * off * lower,
+                over * off.conj() * upper + (turn - over * level) * lower,
+            )
             if half == 0:
                 charge += step * np.mean(2 * np.real(upper.conj() * slope * lower))
     return charge

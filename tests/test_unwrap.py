@@ -48,8 +48,10 @@ def test_argument_principle_counts_zeros_inside_the_circle(count: int, conjugate
     assert turns_of_function(values) == pytest.approx(count - conjugated, abs=1e-12)
 
 
-@pytest.mark.parametrize(("turns", "intervals", "read"), [
-    (3, 5, -2), (3, 7, 3), (7, 13, -6), (7, 15, 7), (1, 3, 1), (-3, 7, -3), (-3, 5, 2), (5, 11, 5), (5, 9, -4)])
+@pytest.mark.parametrize(
+    ("turns", "intervals", "read"),
+    [(3, 5, -2), (3, 7, 3), (7, 13, -6), (7, 15, 7), (1, 3, 1), (-3, 7, -3), (-3, 5, 2), (5, 11, 5), (5, 9, -4)],
+)
 def test_too_few_samples_are_read_as_the_nearest_alias(turns: int, intervals: int, read: int) -> None:
     # sampling theorem, common practice: right if and only if there are more than two samples a turn
     assert turns_of_function(np.exp(1j * turns * circle(intervals))) == pytest.approx(read, abs=1e-12)

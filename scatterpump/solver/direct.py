@@ -15,16 +15,16 @@ from scatterpump.solver.trace import ReflectionTrace
 __all__ = ["scattering_matrix", "solve"]
 
 
-def solve(pump: Pump, phases: NDArray[np.float64]) -> ReflectionTrace:
-    """Solve the scattering problem at each of `phases` (radians)."""
+def solve(pump: Pump, phases: NDArray[np.float64], *, transmission: bool = True) -> ReflectionTrace:
+    """Solve the scattering problem at each of `phases` (radians); without `transmission` t is left out (no rows)."""
     system = with_modes(pump)
-    leads = range(len(system.leads))
+    leads = range(len(system.leads)) if transmission else [pump.probe]
     found = [_solve_one(pump, system, phase, list(leads), [pump.probe]) for phase in phases.tolist()]
     others = [lead for lead in leads if lead != pump.probe]
     reflection = np.array([matrix.submatrix(pump.probe, pump.probe) for matrix in found])
-    transmission = [np.vstack([matrix.submatrix(lead, pump.probe) for lead in others]) for matrix in found if others]
+    passed = [np.vstack([matrix.submatrix(lead, pump.probe) for lead in others]) for matrix in found if others]
     none = np.zeros((len(found), 0, reflection.shape[2]), dtype=complex)
-    return ReflectionTrace(phases, reflection, np.array(transmission) if others else none, len(found), "direct")
+    return ReflectionTrace(phases, reflection, np.array(passed) if others else none, len(found), "direct")
 
 
 def scattering_matrix(pump: Pump, phase: float) -> NDArray[np.complex128]:

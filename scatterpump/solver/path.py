@@ -237,14 +237,15 @@ class SampledPath:
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return a one-sided difference quotient."""
-        here, near, far = self.sample(phase + side * self.STEP * np.arange(3))
+        away: Floats = np.array([0.0, side * self.STEP, 2 * side * self.STEP])
+        here, near, far = self.sample(phase + away)
         if order == 1:
-            return side * (4 * near - far - 3 * here) / (2 * self.STEP)
-        return (here - 2 * near + far) / self.STEP**2
+            return np.asarray(side * (4 * near - far - 3 * here) / (2 * self.STEP))
+        return np.asarray((here - 2 * near + far) / self.STEP**2)
 
     def slopes(self, norm: Norm) -> Slopes:
         """Estimate the bounds from difference quotients between the nodes."""
-        steps = np.diff(self.nodes)
+        steps: Floats = np.asarray(np.diff(self.nodes), dtype=float)
         first, second, third = (_quotients(self._values, steps, order) for order in (1, 2, 3))
         rates = self.SAFETY * np.array([norm(value) for value in first])
         curved, twisted = (self.SAFETY * max(norm(v) for v in values) for values in (second, third))
@@ -263,12 +264,12 @@ class SampledPath:
         return np.asarray(self.sample(self.nodes))
 
 
-def _quotients(values: Entries, steps: Floats, order: int) -> Entries:
+def _quotients(values: Entries, steps: Floats, order: int) -> list[Entries]:
     """Difference quotients of `order`, for steps that change slowly."""
-    found = values
+    found: Entries = values
     for _ in range(order):
-        found = np.asarray(np.diff(found, axis=0) / steps[: len(found) - 1, None])
-    return found
+        found = np.asarray(np.diff(found, axis=0) / steps[: len(found) - 1, None], dtype=complex)
+    return list(found)
 
 
 def follow(sample: Sample, cycle: Cycle) -> Path:

@@ -1,4 +1,4 @@
-"""The one entrance to r(phi)."""
+"""The one entrance to r(phi): chooses the engine."""
 
 from __future__ import annotations
 
@@ -11,10 +11,14 @@ from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 from scatterpump.solver.trace import ReflectionTrace
 
-__all__ = ["reflect"]
+__all__ = ["Engine", "reflect"]
+
+Engine = Literal["auto", "layered", "direct"]
+ENGINES = ("auto", "layered", "direct")
+FEW = 4
 
 
-def reflect(pump: Pump, phases: ArrayLike, *, engine: Literal["auto", "direct"] = "auto") -> ReflectionTrace:
+def reflect(pump: Pump, phases: ArrayLike, *, engine: Engine = "auto", transmission: bool = True) -> ReflectionTrace:
     """Solve for reflection and transmission of `pump` at `phases`.
 
     Parameters
@@ -22,8 +26,12 @@ def reflect(pump: Pump, phases: ArrayLike, *, engine: Literal["auto", "direct"] 
     pump : Pump
     phases : (n,) array-like of float
         Radians.
-    engine : "auto" or "direct"
-        "direct" is kwant's own solver, one phi at a time; "auto" leaves the choice to scatterpump.
+    engine : "auto", "layered" or "direct"
+        "direct" is kwant's own solver, one phi at a time: the reference.  "layered" eliminates all phases at once,
+        layer by layer.  "auto" takes "layered", but "direct" for up to four phases and where layers are so wide that a
+        sparse factorisation is cheaper.  The trace says which one ran.
+    transmission : bool
+        Whether t is wanted as well; without it the trace's ``transmission`` has no rows.
 
     Returns
     -------
@@ -38,11 +46,16 @@ def reflect(pump: Pump, phases: ArrayLike, *, engine: Literal["auto", "direct"] 
     SolverError
         If the Hamiltonian or its solution fails at some phase; it says at which.
     """
-    from scatterpump.solver import direct
+    from scatterpump.solver import direct, layered
 
     points = np.atleast_1d(np.asarray(phases, dtype=float))
     if points.ndim != 1 or points.size == 0 or not np.isfinite(points).all():
         raise InputError("the phases are not a list of finite numbers", allowed="one or more angles in radians")
-    if engine not in ("auto", "direct"):
-        raise InputError(f"engine is {engine!r}", allowed='"auto" or "direct"')
-    return direct.solve(pump, points)
+    if engine not in ENGINES:
+        raise InputError(f"engine is {engine!r}", allowed=", ".join(map(repr, ENGINES)))
+    if engine == "direct" or (engine == "auto" and len(points) <= FEW):
+        return direct.solve(pump, points, transmission=transmission)
+    problem = layered.prepare(pump)
+    if engine == "auto" and problem.is_wide:
+        return direct.solve(pump, points, transmission=transmission)
+    return layered.solve_prepared(problem, points, transmission=transmission)
