@@ -146,8 +146,8 @@ PUMPS = st.builds(
     far_contact=st.sampled_from([1.2, 0.5, 0.05]),
     degree=st.integers(1, 2),
 )
-CHECKED = settings(derandomize=True, deadline=None, max_examples=30)
-FEWER = settings(derandomize=True, deadline=None, max_examples=6)
+CHECKED = settings(derandomize=True, deadline=None, max_examples=16)
+FEWER = settings(derandomize=True, deadline=None, max_examples=4)
 
 
 @CHECKED
@@ -162,10 +162,10 @@ def test_certified_number_is_the_brute_force_count(pump: RandomPump) -> None:
 
 def test_most_random_pumps_get_an_answer() -> None:
     """The property above would hold for a proof that always refuses."""
-    pumps = [RandomPump(seed, 1 + seed % 3, 2 + seed % 11, 0.6, 0.5, 1 + seed % 2) for seed in range(12)]
+    pumps = [RandomPump(seed, 1 + seed % 3, 2 + seed % 11, 0.6, 0.5, 1 + seed % 2) for seed in range(8)]
     windings = [proven(pump.pump()) for pump in pumps]
     numbers = [winding.number for winding in windings if winding is not None and winding.certified]
-    assert len(numbers) >= 11
+    assert len(numbers) >= 7
     assert any(numbers)  # and not all of them are 0
 
 

@@ -26,13 +26,12 @@ from scatterpump.pump import Pump
 from scatterpump.solver.band import EPS, pack
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
 from scatterpump.solver.modes import with_modes
-from scatterpump.solver.path import Path, Side, follow
+from scatterpump.solver.path import Path, Side, follow, moving
 
 __all__ = ["FoldedDevice", "fold"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
-STILL = 1e-13
 RESOLVED = 1e3 * EPS
 
 
@@ -121,7 +120,8 @@ def fold(pump: Pump) -> FoldedDevice:
     path = follow(driven.many, pump.cycle)
     leads = _lead_self_energies(pump, system, driven.offsets)
     channels = {i: len(lead.modes(pump.fermi_level)[0].momenta) // 2 for i, lead in enumerate(system.leads)}
-    moves = _moving(path, rows, size)
+    moves = np.zeros(size, dtype=bool)
+    moves[rows[moving(path)]] = True
     structure = csr_matrix((np.ones(len(rows)), (rows, columns)), shape=(size, size))
     alive, folded = _eliminate(pump.fermi_level, structure, driven.matrix(0.0), leads, channels, moves)
     order = _order(structure, folded, alive, pump.probe)
@@ -141,14 +141,6 @@ def _lead_self_energies(pump: Pump, system: Any, offsets: Indices) -> dict[int, 
             (sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(offsets[-1], offsets[-1])
         ).tocsr()
     return result
-
-
-def _moving(path: Path, rows: Indices, size: int) -> NDArray[np.bool_]:
-    """Orbitals whose row of H changes along the cycle."""
-    variation, moves = path.variation(), np.zeros(size, dtype=bool)
-    scale = float(np.abs(path.at(0.0)).max(initial=0.0)) or 1.0
-    moves[rows[variation > STILL * scale]] = True
-    return moves
 
 
 def _eliminate(
@@ -245,13 +237,12 @@ def _assemble(
 
 
 def _broadening(sigma: Any, size: int, channels: int) -> Complex:
-    """W with W W^+ = i (Sigma - Sigma^+), shape (size, channels): one orthogonal column for each open channel."""
+    """W with W W^+ = i (Sigma - Sigma^+): one orthogonal column for each open channel that is seen at all."""
     touched, strength, states = _strengths(sigma)
-    if len(touched) < channels:  # nothing connects this lead to the probe
-        return np.zeros((size, 0), dtype=complex)
-    column = np.zeros((size, channels), dtype=complex)
-    first = len(strength) - channels
-    column[touched] = states[:, first:] * np.sqrt(np.maximum(strength[first:], 0.0))
+    seen = strength > RESOLVED * np.abs(sigma).max() if len(touched) else np.zeros(0, dtype=bool)
+    seen[: max(0, len(strength) - channels)] = False
+    column = np.zeros((size, int(seen.sum())), dtype=complex)
+    column[touched] = states[:, seen] * np.sqrt(strength[seen])
     return column
 
 

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 __all__ = ["HIGHEST", "Harmonics", "fit"]
 
-CHECKS = 2 * np.pi * ((np.arange(16) + 0.5) * 0.6180339887498949 % 1)  # far from any even spacing
+CHECKS = 2 * np.pi * ((np.arange(32) + 0.5) * 0.6180339887498949 % 1)  # far from any even spacing
 TOLERANCE = 1e-11
 HIGHEST = 16
 
@@ -48,10 +48,10 @@ class Harmonics:
         waves = np.exp(1j * np.multiply.outer(np.asarray(phases, dtype=float), self.orders))
         return np.tensordot(waves, self.coefficients, axes=(-1, 0))
 
-    def trimmed(self, tolerance: float) -> Harmonics:
-        """Return the same without outer harmonics whose coefficients are all below `tolerance`."""
-        size = np.abs(self.coefficients).reshape(len(self.coefficients), -1).max(axis=1, initial=0.0)
-        large = np.flatnonzero(size > tolerance)
+    def trimmed(self, tolerance: NDArray[np.float64]) -> Harmonics:
+        """Return the same without outer harmonics of which no element exceeds its own `tolerance`."""
+        above = (np.abs(self.coefficients) > tolerance).reshape(len(self.coefficients), -1).any(axis=1)
+        large = np.flatnonzero(above)
         degree = int(np.abs(large - self.degree).max(initial=0))
         return Harmonics(self.coefficients[self.degree - degree : self.degree + degree + 1])
 
@@ -70,12 +70,12 @@ def fit(sample: Callable[[NDArray[np.float64]], NDArray[Any]]) -> Harmonics | No
         Phases in radians, shape (n,), to values of shape (n, ...).
     """
     known = np.asarray(sample(np.concatenate([_even(1), CHECKS])), dtype=complex)
-    checks, scale = known[3:], max(1e-300, float(np.abs(known).max(initial=0.0)))
+    checks, tolerance = known[3:], TOLERANCE * np.abs(known).max(axis=0) + 1e-300
     values, degree = known[:3], 1
     while True:
         found = Harmonics(np.fft.fftshift(np.fft.fft(values, axis=0) / len(values), axes=0))
-        if np.abs(found.at(CHECKS) - checks).max(initial=0.0) < TOLERANCE * scale:
-            return found.trimmed(TOLERANCE * scale)
+        if (np.abs(found.at(CHECKS) - checks) <= tolerance).all():
+            return found.trimmed(tolerance)
         degree *= 2
         if degree > HIGHEST:
             return None

@@ -27,7 +27,7 @@ from scatterpump.solver.elimination import Eliminated, eliminate, eliminate_sing
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
 from scatterpump.solver.layers import Border, Layers, layer, lead_border
 from scatterpump.solver.modes import with_modes
-from scatterpump.solver.path import Path, follow
+from scatterpump.solver.path import Path, follow, moving
 from scatterpump.solver.trace import ReflectionTrace
 
 __all__ = ["Problem", "prepare", "solve", "solve_prepared"]
@@ -114,7 +114,7 @@ def prepare(pump: Pump) -> Problem:
     assert probe is not None  # with_modes has refused a closed probe
     others = [border for i, border in enumerate(borders) if i != pump.probe and border is not None]
     layers, path = layer(driven, probe, others), follow(driven.many, pump.cycle)
-    moves = path.variation() > 0 if path.exact else np.ones(len(driven.rows), dtype=bool)
+    moves = moving(path) if path.exact else np.ones(len(driven.rows), dtype=bool)
     blocks = [_blocks(driven, layers, moves, pump.fermi_level, step) for step in (0, 1, -1)]
     return Problem(path, layers, probe, *blocks)
 

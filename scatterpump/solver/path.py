@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 from scatterpump.cycle import Cycle
 from scatterpump.solver.harmonics import HIGHEST, Harmonics, fit
 
-__all__ = ["Path", "SampledPath", "Slopes", "StraightPath", "TrigonometricPath", "follow"]
+__all__ = ["Path", "SampledPath", "Slopes", "StraightPath", "TrigonometricPath", "follow", "moving"]
 
 Entries = NDArray[np.complex128]
 Floats = NDArray[np.float64]
@@ -30,6 +30,7 @@ Sample = Callable[[Floats], Entries]
 Side = Literal[-1, 1]
 TURN = 2 * np.pi
 STRAIGHT_TOLERANCE = 1e-10
+STILL = 1e-13
 GRID = 192
 FINE = 1024
 
@@ -272,6 +273,11 @@ def _quotients(values: Entries, steps: Floats, order: int) -> list[Entries]:
     return list(found)
 
 
+def moving(path: Path) -> NDArray[np.bool_]:
+    """Tell which elements change along a path by more than the rounding of their own size, shape (nnz,)."""
+    return np.asarray(path.variation() > STILL * np.abs(path.at(0.0)))
+
+
 def follow(sample: Sample, cycle: Cycle) -> Path:
     """Find out what kind of path H takes along `cycle`, from samples of its matrix elements, shape (n, nnz)."""
     corners = np.array(cycle.corners)
@@ -285,10 +291,10 @@ def follow(sample: Sample, cycle: Cycle) -> Path:
 
 
 def _is_straight(path: StraightPath, sample: Sample) -> bool:
-    scale = max(1e-300, float(np.abs(path.points).max(initial=0.0)))
     inside = path.corners + 0.37 * np.diff(np.append(path.corners, path.corners[0] + TURN))
     straight = np.array([path.at(phase) for phase in inside.tolist()])
-    return bool(np.abs(straight - sample(inside)).max(initial=0.0) <= STRAIGHT_TOLERANCE * scale)
+    scale = np.abs(path.points).max(axis=0) + 1e-300
+    return bool((np.abs(straight - sample(inside)) <= STRAIGHT_TOLERANCE * scale).all())
 
 
 def _parameters(cycle: Cycle) -> Floats:
