@@ -23,6 +23,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
+from scatterpump.solver.blocks import Blocks
 from scatterpump.solver.elimination import Eliminated, eliminate, eliminate_single
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
 from scatterpump.solver.layers import Border, Layers, layer, lead_border
@@ -41,33 +42,13 @@ WIDE = 120
 
 
 @dataclass(frozen=True, eq=False)
-class _Block:
-    """One block of E - H and the borders: a fixed part, and the elements of H that are taken off it."""
-
-    fixed: Complex
-    elements: Indices
-    rows: Indices
-    columns: Indices
-    moves: bool
-
-    def at(self, entries: Complex) -> Complex:
-        """Return the block for each row of `entries`, or once if it does not move."""
-        chosen = entries if self.moves else entries[:1]
-        result = np.repeat(self.fixed[None], len(chosen), axis=0)
-        result[:, self.rows, self.columns] -= chosen[:, self.elements]
-        return result
-
-
-@dataclass(frozen=True, eq=False)
 class Problem:
     """Everything about a pump that does not depend on phi, and its path."""
 
     path: Path
     layers: Layers
     probe: Border
-    diagonal: tuple[_Block, ...]
-    lower: tuple[_Block, ...]
-    upper: tuple[_Block, ...]
+    blocks: Blocks
 
     @property
     def single(self) -> bool:
@@ -115,50 +96,13 @@ def prepare(pump: Pump) -> Problem:
     others = [border for i, border in enumerate(borders) if i != pump.probe and border is not None]
     layers, path = layer(driven, probe, others), follow(driven.many, pump.cycle)
     moves = moving(path) if path.exact else np.ones(len(driven.rows), dtype=bool)
-    blocks = [_blocks(driven, layers, moves, pump.fermi_level, step) for step in (0, 1, -1)]
-    return Problem(path, layers, probe, *blocks)
-
-
-def _blocks(
-    driven: DrivenHamiltonian, layers: Layers, moves: NDArray[np.bool_], energy: float, step: int
-) -> tuple[_Block, ...]:
-    """Blocks from every layer to the one `step` further (0: diagonal, 1: lower, -1: upper)."""
-    level, place, widths = layers.level, layers.place, layers.widths
-    elements = _between(level, driven.rows, driven.columns, step, len(widths))
-    border = _between(level, layers.rows, layers.columns, step, len(widths))
-    orbitals = _grouped(np.where(level[: driven.size] >= 0, level[: driven.size], len(widths)), len(widths))
-    found = []
-    for n in range(len(widths) - abs(step)):
-        tall, wide = (n + 1, n) if step == 1 else (n, n - step)
-        fixed = np.zeros((widths[tall], widths[wide]), dtype=complex)
-        if step == 0:
-            fixed[place[orbitals[n]], place[orbitals[n]]] = energy
-        fixed[place[layers.rows[border[n]]], place[layers.columns[border[n]]]] += layers.values[border[n]]
-        mine = elements[n]
-        found.append(
-            _Block(fixed, mine, place[driven.rows[mine]], place[driven.columns[mine]], bool(moves[mine].any()))
-        )
-    return tuple(found)
-
-
-def _between(level: Indices, rows: Indices, columns: Indices, step: int, count: int) -> list[Indices]:
-    """Positions of elements whose row lies `step` layers beyond their column, by the nearer of the two layers."""
-    near = np.minimum(level[rows], level[columns])
-    fits = (level[rows] - level[columns] == step) & (near >= 0)
-    return _grouped(np.where(fits, near, count), count)
-
-
-def _grouped(labels: Indices, count: int) -> list[Indices]:
-    """Positions of every label 0 ... count-1; larger labels are left out."""
-    order = np.argsort(labels, kind="stable")
-    edges = np.searchsorted(labels[order], np.arange(count + 1))
-    return [order[edges[i] : edges[i + 1]] for i in range(count)]
+    blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, moves, driven.size)
+    return Problem(path, layers, probe, blocks)
 
 
 def _bytes_a_phase(problem: Problem) -> int:
     widths = problem.layers.widths.astype(float)
-    elements = sum(len(block.elements) for block in (*problem.diagonal, *problem.lower, *problem.upper))
-    return 16 * int(2 * elements + 4 * (widths**2).max() + (widths**2).sum())
+    return 16 * int(2 * len(problem.blocks.rows) + 4 * (widths**2).max() + (widths**2).sum())
 
 
 def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[Complex, Complex]:
@@ -179,38 +123,40 @@ def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[
 
 
 def _eliminated(problem: Problem, entries: Complex, amplitude: bool) -> Eliminated:
-    diagonal, lower, upper = (
-        [block.at(entries) for block in blocks] for blocks in (problem.diagonal, problem.lower, problem.upper)
-    )
+    blocks, count = problem.blocks, len(entries)
     if problem.single:
-        line, down, up = (_as_rows(blocks, len(entries)) for blocks in (diagonal, lower, upper))
-        return eliminate_single(line, down, up, amplitude=amplitude)
-    diagonal = [np.broadcast_to(block, (len(entries), *block.shape[1:])) for block in diagonal]
-    return eliminate(diagonal, lower, upper, problem.wanted if amplitude else None)
-
-
-def _as_rows(blocks: list[Complex], count: int) -> Complex:
-    """Blocks of one element as rows, shape (L, n)."""
-    return np.array([np.broadcast_to(block[:, 0, 0], count) for block in blocks]).reshape(len(blocks), count)
+        diagonal, lower, upper = (blocks.band(step, entries) for step in (0, 1, -1))
+        line = np.broadcast_to(diagonal, (len(diagonal), count))
+        return eliminate_single(line, lower, upper, amplitude=amplitude)
+    here = [block.at(entries) for block in blocks.diagonal]
+    here = [np.broadcast_to(block, (count, *block.shape[1:])) for block in here]
+    down, up = ([block.at(entries) for block in part] for part in (blocks.lower, blocks.upper))
+    return eliminate(here, down, up, problem.wanted if amplitude else None)
 
 
 def _matched(probe: Border, found: Eliminated, *, single: bool) -> tuple[Complex, Complex]:
     """Match what is left on the interface with the probe's modes."""
     hop, back = probe.hop, probe.hop.conj().T
     inverse = found.q @ np.linalg.inv(found.p + 1j * (hop @ back) @ found.q)
-    kernel = 2j * back @ inverse @ hop - np.eye(hop.shape[1])
-    outward = kernel @ (1j * probe.out - probe.out_bare) + (1j * probe.out + probe.out_bare)
-    inward = kernel @ (1j * probe.into - probe.into_bare) + (1j * probe.into + probe.into_bare)
-    amplitudes: Complex = np.asarray(-np.linalg.solve(outward, inward), dtype=complex)
+    amplitudes, driving = _amplitudes(probe, back @ inverse @ hop)
     reflection = amplitudes[:, : probe.channels]
     if found.amplitudes is None:
         return reflection, np.zeros((len(reflection), 0, probe.channels), dtype=complex)
-    ahead = probe.into + probe.out @ amplitudes
-    behind = probe.into_bare + probe.out_bare @ amplitudes
-    state = inverse @ hop @ (ahead + 1j * behind)
+    state = inverse @ hop @ driving
     if single:
         state = state / found.q
     return reflection, np.asarray(found.amplitudes @ state, dtype=complex)
+
+
+def _amplitudes(probe: Border, response: Complex) -> tuple[Complex, Complex]:
+    """Outgoing amplitudes s, and what psi = (D + i V V^+)^-1 V x is to be formed with; `response` is V^+ (...)^-1 V."""
+    kernel = 2j * response - np.eye(response.shape[-1])
+    outward = kernel @ (1j * probe.out - probe.out_bare) + (1j * probe.out + probe.out_bare)
+    inward = kernel @ (1j * probe.into - probe.into_bare) + (1j * probe.into + probe.into_bare)
+    amplitudes: Complex = np.asarray(-np.linalg.solve(outward, inward), dtype=complex)
+    ahead = probe.into + probe.out @ amplitudes
+    behind = probe.into_bare + probe.out_bare @ amplitudes
+    return amplitudes, np.asarray(ahead + 1j * behind)
 
 
 def _pivoted(problem: Problem, entries: Complex, amplitude: bool) -> tuple[Complex, Complex]:
@@ -222,19 +168,14 @@ def _pivoted(problem: Problem, entries: Complex, amplitude: bool) -> tuple[Compl
     steps = len(widths)
     grid: list[list[Any]] = [[None] * steps for _ in range(steps)]
     for n in range(steps):
-        grid[n][n] = csc_matrix(problem.diagonal[n].at(entries)[0])
+        grid[n][n] = csc_matrix(problem.blocks.diagonal[n].at(entries)[0])
     for n in range(steps - 1):
-        grid[n + 1][n] = csc_matrix(problem.lower[n].at(entries)[0])
-        grid[n][n + 1] = csc_matrix(problem.upper[n].at(entries)[0])
+        grid[n + 1][n] = csc_matrix(problem.blocks.lower[n].at(entries)[0])
+        grid[n][n + 1] = csc_matrix(problem.blocks.upper[n].at(entries)[0])
     grid[0][0] = grid[0][0] + csc_matrix(1j * probe.hop @ probe.hop.conj().T)
     right = np.zeros((int(widths.sum()), probe.hop.shape[1]), dtype=complex)
     right[: widths[0]] = probe.hop
     inverse = splu(bmat(grid, format="csc")).solve(right)
-    kernel = 2j * probe.hop.conj().T @ inverse[: widths[0]] - np.eye(probe.hop.shape[1])
-    outward = kernel @ (1j * probe.out - probe.out_bare) + (1j * probe.out + probe.out_bare)
-    inward = kernel @ (1j * probe.into - probe.into_bare) + (1j * probe.into + probe.into_bare)
-    amplitudes: Complex = np.asarray(-np.linalg.solve(outward, inward), dtype=complex)
-    ahead = probe.into + probe.out @ amplitudes
-    behind = probe.into_bare + probe.out_bare @ amplitudes
+    amplitudes, driving = _amplitudes(probe, probe.hop.conj().T @ inverse[: widths[0]])
     picked = np.hstack(problem.wanted) if amplitude else np.zeros((0, len(inverse)))
-    return amplitudes[: probe.channels], picked @ inverse @ (ahead + 1j * behind)
+    return amplitudes[: probe.channels], picked @ inverse @ driving
