@@ -80,7 +80,8 @@ def _winding(winding: Winding) -> list[str]:
             "level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}"
         )
     if 0 < winding.leak.bound < 1:
-        lines += _row("leak", f"proven to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
+        kind = "proven" if winding.exact else "estimated"
+        lines += _row("leak", f"{kind} to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
     return lines
 
 
