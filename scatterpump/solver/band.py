@@ -20,7 +20,18 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["BandLU", "apply", "apply_adjoint", "factor", "gram", "is_positive", "norm_bound", "pack", "row_sum_norm"]
+__all__ = [
+    "BandLU",
+    "apply",
+    "apply_adjoint",
+    "factor",
+    "gram",
+    "is_positive",
+    "norm_bound",
+    "pack",
+    "row_sum_norm",
+    "spectral_norm",
+]
 
 Complex = NDArray[np.complex128]
 EPS = float(np.finfo(float).eps)
@@ -111,6 +122,15 @@ def is_positive(lower: Complex, shift: float, half: int | None = None) -> bool:
     moved[0] -= shift + rounding
     _, info = lapack.zpbtrf(moved, lower=1, overwrite_ab=1)
     return bool(info == 0 and np.isfinite(moved[0]).all())
+
+
+def spectral_norm(matrix: NDArray[Any]) -> float:
+    """Return the largest singular value of a dense matrix; 0 if it is empty."""
+    if matrix.size == 0:
+        return 0.0
+    if 1 in matrix.shape:
+        return float(np.sqrt(np.vdot(matrix, matrix).real))
+    return float(np.linalg.norm(matrix, ord=2))
 
 
 def row_sum_norm(band: Complex) -> float:

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.solver.band import apply, spectral_norm
 from scatterpump.solver.folded import FoldedDevice
 from scatterpump.solver.path import Side, Slopes
 from scatterpump.winding.look import Look, look
@@ -153,18 +154,19 @@ def _arm(device: FoldedDevice, slopes: Slopes, seen: Look, side: Side) -> Arm:
 
 
 def _rates(device: FoldedDevice, slopes: Slopes, seen: Look, side: Side) -> Rates:
-    from scatterpump.solver.band import apply
-
     assert seen.split is not None
     u, v = seen.split.u, seen.split.v
     first = device.derivative(seen.phase, side)
     into, out = apply(first, v), apply(first, u)
     curved = apply(device.derivative(seen.phase, side, 2), v)
-    return Rates(u.conj().T @ into, _norm(into), _norm(out), _norm(u.conj().T @ curved), slopes.second, slopes.third)
-
-
-def _norm(matrix: NDArray[np.complex128]) -> float:
-    return float(np.linalg.norm(matrix, ord=2))
+    return Rates(
+        u.conj().T @ into,
+        spectral_norm(into),
+        spectral_norm(out),
+        spectral_norm(u.conj().T @ curved),
+        slopes.second,
+        slopes.third,
+    )
 
 
 def _smooth_stretch(corners: Floats, phase: float, side: Side) -> float:

@@ -20,7 +20,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.solver.band import EPS, apply, factor, gram, row_sum_norm
+from scatterpump.solver.band import EPS, apply, factor, gram, row_sum_norm, spectral_norm
 from scatterpump.solver.folded import FoldedDevice
 from scatterpump.winding.look import ROUNDING, inverse_norm, small_singular
 
@@ -80,11 +80,11 @@ def damped(device: FoldedDevice, band: Complex, alpha: float, sideways: float) -
     if not (np.isfinite(g_norm) and np.isfinite(right).all() and np.isfinite(left).all()):
         return None
     small = float(np.exp(-alpha * hops))
-    residual = _norm(apply(scaled, right) - device.probe) / max(_norm(right), 1e-300)
+    residual = spectral_norm(apply(scaled, right) - device.probe) / max(spectral_norm(right), 1e-300)
     return Damped(
         alpha,
-        small * _norm(leaving.conj().T @ right),
-        small * _norm(left) * _norm(right),
+        small * spectral_norm(leaving.conj().T @ right),
+        small * spectral_norm(left) * spectral_norm(right),
         g_norm,
         2 * float(np.sinh(alpha)) * sideways,
         ROUNDING * EPS * row_sum_norm(scaled) + residual,
@@ -109,7 +109,3 @@ def _scaled(band: Complex, exponents: NDArray[Any]) -> Complex:
         columns = np.arange(max(0, half - p), min(n, n + half - p))
         result[p, columns] = band[p, columns] * np.exp(exponents[columns + p - half] - exponents[columns])
     return result
-
-
-def _norm(matrix: Complex) -> float:
-    return float(np.linalg.norm(matrix, ord=2)) if matrix.size else 0.0

@@ -14,7 +14,18 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.solver.band import EPS, BandLU, apply, apply_adjoint, factor, gram, is_positive, pack, row_sum_norm
+from scatterpump.solver.band import (
+    EPS,
+    BandLU,
+    apply,
+    apply_adjoint,
+    factor,
+    gram,
+    is_positive,
+    pack,
+    row_sum_norm,
+    spectral_norm,
+)
 
 __all__ = ["ROUNDING", "Look", "Split", "inverse_norm", "look", "small_singular"]
 
@@ -115,7 +126,7 @@ def look(phase: float, band: Complex, probe: Complex, *, splitting: bool = True)
     if not all(np.isfinite(x).all() for x in (right, left, right_b, left_b)):
         return None
     reflection = 1j * (probe.conj().T @ right) - np.eye(probe.shape[1])
-    pairs = [(_norm(left), _norm(right_b)), (_norm(left_b), _norm(right))]
+    pairs = [(spectral_norm(left), spectral_norm(right_b)), (spectral_norm(left_b), spectral_norm(right))]
     a_columns, b_columns = min(pairs, key=lambda pair: pair[0] * pair[1])
     size = row_sum_norm(band)
     noise = ROUNDING * EPS * size + _residual(band, right, probe) + _residual(other, right_b, probe)
@@ -130,15 +141,11 @@ def look(phase: float, band: Complex, probe: Complex, *, splitting: bool = True)
         inverse_norm(gram(other), sigma_b[0], half),
         a_columns,
         b_columns,
-        _norm(left),
-        _norm(right),
+        spectral_norm(left),
+        spectral_norm(right),
         noise,
         _split(band, lu, squared, probe, sigma, v, noise) if splitting else None,
     )
-
-
-def _norm(matrix: Complex) -> float:
-    return float(np.linalg.norm(matrix, ord=2)) if matrix.size else 0.0
 
 
 def _advanced(band: Complex, probe: Complex) -> Complex:
@@ -150,7 +157,7 @@ def _advanced(band: Complex, probe: Complex) -> Complex:
 
 def _residual(band: Complex, solution: Complex, right: Complex) -> float:
     """Backward error of a solve: the smallest change of A that makes it exact."""
-    return _norm(apply(band, solution) - right) / max(_norm(solution), 1e-300)
+    return spectral_norm(apply(band, solution) - right) / max(spectral_norm(solution), 1e-300)
 
 
 def small_singular(band: Complex, lu: BandLU) -> tuple[NDArray[np.float64], Complex]:
@@ -186,7 +193,7 @@ def _split(
     next_sigma = _next_sigma(squared, v, float(sigma[k]), len(band) // 2)
     if next_sigma == 0.0:
         return None
-    residual = _norm(apply(band, v) - u * smallest) + _norm(apply_adjoint(band, u) - v * smallest)
+    residual = spectral_norm(apply(band, v) - u * smallest) + spectral_norm(apply_adjoint(band, u) - v * smallest)
     right = _deflated(lu, probe, u, v, adjoint=False)
     left = _deflated(lu, probe, v, u, adjoint=True)
     return Split(
@@ -194,8 +201,8 @@ def _split(
         u,
         v,
         next_sigma,
-        _norm(left),
-        _norm(right),
+        spectral_norm(left),
+        spectral_norm(right),
         1j * (probe.conj().T @ right) - np.eye(probe.shape[1]),
         probe.conj().T @ v,
         u.conj().T @ probe,

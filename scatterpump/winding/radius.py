@@ -20,11 +20,11 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.solver.band import spectral_norm
 from scatterpump.winding.look import Look, Split
 
 __all__ = ["RIGHT_ANGLE", "Model", "Rates", "length_limit", "split_reach"]
@@ -198,7 +198,7 @@ def _by_zeros(model: Model, side: int, starts: Floats, ends: Floats) -> Floats:
     """Lower bound on sigma_min(r_m) over each piece, by Woodbury's formula for r_m^-1."""
     inverse = np.linalg.inv(model.far)
     z, x_over_z, _ = _over_pieces(model.zeros_part, side * model.core, inverse @ model.into, model.out, starts, ends)
-    bound = _norm(inverse) + np.where(z > 0, x_over_z, 0.0) * _norm(model.out @ inverse)
+    bound = spectral_norm(inverse) + np.where(z > 0, x_over_z, 0.0) * spectral_norm(model.out @ inverse)
     return np.where(z > 0, 1 / bound, 0.0)
 
 
@@ -209,7 +209,7 @@ def _by_middles(model: Model, side: int, starts: Floats, ends: Floats, square: F
     singular = np.abs(np.linalg.det(q)) == 0
     q[singular] = np.eye(len(model.sigma))
     values = model.far + 1j * model.into @ np.linalg.solve(q, np.broadcast_to(model.out, (len(q), *model.out.shape)))
-    least = np.linalg.svd(values, compute_uv=False)[:, -1] - (ends - starts) / 2 * _norm(model.core) * square
+    least = np.linalg.svd(values, compute_uv=False)[:, -1] - (ends - starts) / 2 * spectral_norm(model.core) * square
     return np.where(singular, 0.0, least)
 
 
@@ -227,10 +227,10 @@ def _over_pieces(
         best = (a * np.conj(k)).real / max(abs(k) ** 2, 1e-300)
         q = np.abs(a - np.clip(best, starts, ends) * k)
         safe = np.maximum(q, 1e-300)
-        return q, _norm(left) / safe, _norm(right) / safe
+        return q, spectral_norm(left) / safe, spectral_norm(right) / safe
     middles, reach = (starts + ends) / 2, (ends - starts) / 2
     stack = constant - middles[:, None, None] * slope
-    q = np.linalg.svd(stack, compute_uv=False)[:, -1] - reach * _norm(slope)
+    q = np.linalg.svd(stack, compute_uv=False)[:, -1] - reach * spectral_norm(slope)
     inverse = np.linalg.inv(np.where((q > 0)[:, None, None], stack, np.eye(len(constant))))
     room = np.maximum(1 - reach * np.maximum(_norms(slope @ inverse), _norms(inverse @ slope)), 1e-300)
     return q, _norms(left @ inverse) / room, _norms(inverse @ right) / room
@@ -238,7 +238,3 @@ def _over_pieces(
 
 def _norms(stack: Complex) -> Floats:
     return np.asarray(np.linalg.norm(stack, ord=2, axis=(-2, -1)), dtype=float)
-
-
-def _norm(matrix: NDArray[Any]) -> float:
-    return float(np.linalg.norm(matrix, ord=2)) if matrix.size else 0.0
