@@ -12,6 +12,7 @@ from numpy.testing import assert_allclose
 from numpy.typing import NDArray
 
 from scatterpump.cycle import Cycle
+from scatterpump.errors import SolverError
 from scatterpump.pump import Pump
 from scatterpump.solver.band import apply, factor
 from scatterpump.solver.folded import FoldedDevice, fold
@@ -386,6 +387,17 @@ def test_orbitals_that_join_only_for_a_part_of_the_cycle_are_kept() -> None:
     assert_allclose(ratio, ratio[0], rtol=0, atol=1e-10)
 
 
+def test_values_that_are_not_finite_are_refused() -> None:
+    """Also if the pole lies at a phase that only the search for harmonics asks for."""
+    system = chain(range(0, 9), range(-1, 10))
+    system[CHAIN(4)] = lambda site, phi: 0.1 / (phi - 2 * np.pi / 3)
+    for direction in (-1, 1):
+        system.attach_lead(lead((direction,), [CHAIN(0)]))
+    # definition: H is finite
+    with pytest.raises(SolverError, match="failed at phi = 2.094"):
+        fold(Pump(system, Cycle.angle(), 0.4))
+
+
 def staggered(site: Any, delta: float, stagger: float) -> float:
     return stagger * (-1) ** site.tag[0]
 
@@ -420,16 +432,16 @@ def dimer_rows(contacts: Sequence[float], *, cells: int, barrier: int = 0, rows:
 @pytest.mark.parametrize(("weak", "answers"), [(1e-2, {2}), (1e-6, {2}), (1e-7, {2, None})])
 def test_a_weak_channel_beside_a_strong_one_is_not_lost(weak: float, answers: set[int | None]) -> None:
     """Two chains that do not see each other pump one charge each, however weak the contact of one is."""
-    pump = dimer_rows([1.0, weak], cells=24)
+    pump = dimer_rows([1.0, weak], cells=20)
     device = fold(pump)
     strength = np.sort(np.linalg.norm(device.probe, axis=0) ** 2)
     assert device.probe.shape[1] == 2
-    assert device.size > 96 or strength[0] / strength[1] == pytest.approx(weak**2, rel=1e-4)
+    assert device.size > 80 or strength[0] / strength[1] == pytest.approx(weak**2, rel=1e-4)
     # derived: windings of blocks that are not coupled add up; so long a chain lets less through than the contact does
     assert certify(pump).number in answers
 
 
-@pytest.mark.parametrize(("cells", "barrier"), [(40, 20), (40, 30), (60, 24)])
+@pytest.mark.parametrize(("cells", "barrier"), [(30, 20), (40, 30)])
 def test_a_drain_behind_a_barrier_is_still_a_drain(cells: int, barrier: int) -> None:
     """The level at the far end leaks through the barrier far faster than through the pump itself."""
     pump = dimer_rows([1.0], cells=cells, barrier=barrier)

@@ -93,7 +93,7 @@ distances = st.floats(1e-3, np.pi)
 sides = st.sampled_from([-1, 1])
 
 
-@settings(derandomize=True, deadline=None)
+@settings(derandomize=True, deadline=None, max_examples=60)
 @given(waves, st.floats(-7, 13))
 def test_trigonometric_path_knows_values_and_derivatives(wave: Wave, phase: float) -> None:
     path = follow(wave, Cycle.angle())
@@ -106,7 +106,7 @@ def test_trigonometric_path_knows_values_and_derivatives(wave: Wave, phase: floa
         assert_allclose(path.derivative(phase, side, 2), wave(phase, 2), rtol=0, atol=1e-10 * scale)
 
 
-@settings(derandomize=True, deadline=None)
+@settings(derandomize=True, deadline=None, max_examples=60)
 @given(waves, phases, distances, sides)
 def test_trigonometric_lengths_are_upper_bounds(wave: Wave, start: float, distance: float, side: int) -> None:
     """Also where the stretch begins below 0 or ends above 2 pi."""
@@ -133,7 +133,7 @@ def test_trigonometric_bounds_hold_and_are_close(wave: Wave) -> None:
     assert whole - error <= slopes.length(0.0, np.array([TURN]))[0] <= 1.03 * whole + error
 
 
-@settings(derandomize=True, deadline=None)
+@settings(derandomize=True, deadline=None, max_examples=30)
 @given(waves, phases)
 def test_lengths_add_up_round_the_cycle(wave: Wave, start: float) -> None:
     slopes = follow(wave, Cycle.angle()).slopes(norm)
@@ -325,7 +325,7 @@ def test_paths_of_cycles_derived_from_another(cycle: Cycle, change: str) -> None
     assert whole == pytest.approx(abs(rate) * once, rel=0.03)
 
 
-@settings(derandomize=True, deadline=None)
+@settings(derandomize=True, deadline=None, max_examples=30)
 @given(waves, st.lists(st.integers(0, SIZE * SIZE - 1), min_size=1, max_size=4, unique=True))
 def test_some_elements_alone_move_as_they_did(wave: Wave, chosen: list[int]) -> None:
     path = follow(wave, Cycle.angle())
