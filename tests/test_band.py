@@ -19,6 +19,7 @@ from scatterpump.solver.band import (
     norm_bound,
     pack,
     row_sum_norm,
+    spectral_norm,
 )
 
 Complex = NDArray[np.complex128]
@@ -181,6 +182,15 @@ def test_row_sums_bound_the_norm(band: Complex) -> None:
     # |A|_2^2 <= |A|_1 |A|_inf: textbook
     assert row_sum_norm(band) == pytest.approx(np.sqrt(full.sum(axis=0).max() * full.sum(axis=1).max()), rel=1e-13)
     assert row_sum_norm(band) >= np.linalg.norm(dense(band), 2) * (1 - 10 * EPS)
+
+
+@pytest.mark.parametrize("shape", [(0, 3), (4, 0), (1, 1), (1, 5), (6, 1), (3, 3), (2, 7)])
+def test_spectral_norm_of_any_shape(shape: tuple[int, int]) -> None:
+    rng = np.random.default_rng(shape)
+    matrix = rng.normal(size=shape) + 1j * rng.normal(size=shape)
+    # largest singular value: definition
+    largest = scipy.linalg.svdvals(matrix).max(initial=0.0) if matrix.size else 0.0
+    assert spectral_norm(matrix) == pytest.approx(largest, rel=1e-14)
 
 
 @settings(derandomize=True, deadline=None)

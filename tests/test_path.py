@@ -194,6 +194,21 @@ def test_a_strong_still_element_does_not_hide_what_a_weak_one_does(kind: str, wa
     assert miss < 1e-12 * max(1.0, wall)
 
 
+def test_an_element_that_is_rounding_does_not_spoil_an_exact_path() -> None:
+    """Far below what a look allows for as noise."""
+    wave = Wave(2, 3)
+    wave.parts[:, 0, 0] = 0.0
+
+    def sample(phase: float) -> Entries:
+        rounding = np.zeros(SIZE * SIZE, dtype=complex)
+        rounding[0] = np.cos(phase) ** 2 + np.sin(phase) ** 2 - 1
+        return np.asarray(wave(phase) + rounding)
+
+    # derived: cos^2 + sin^2 - 1 is 0, or the last digit of 1
+    assert any(sample(phase)[0] != 0 for phase in np.linspace(0, 6, 50).tolist())
+    assert follow(sample, Cycle.angle()).exact
+
+
 @settings(derandomize=True, deadline=None)
 @given(st.floats(-7, 13), sides)
 def test_straight_path_knows_values_and_slopes(phase: float, side: int) -> None:
