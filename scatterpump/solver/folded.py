@@ -32,7 +32,8 @@ __all__ = ["FoldedDevice", "fold"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
-RESOLVED = 1e3 * EPS
+RESONANT = 1e4
+DEPENDENT = 1e2 * EPS
 
 
 @dataclass(frozen=True, eq=False)
@@ -118,28 +119,38 @@ def fold(pump: Pump) -> FoldedDevice:
     system, driven = with_modes(pump), DrivenHamiltonian(pump)
     size, rows, columns = driven.size, driven.rows, driven.columns
     path = follow(driven.many, pump.cycle)
-    leads = _lead_self_energies(pump, system, driven.offsets)
-    channels = {i: len(lead.modes(pump.fermi_level)[0].momenta) // 2 for i, lead in enumerate(system.leads)}
+    leads, widths = _leads(pump, system, driven.offsets)
     moves = np.zeros(size, dtype=bool)
     moves[rows[moving(path)]] = True
     structure = csr_matrix((np.ones(len(rows)), (rows, columns)), shape=(size, size))
-    alive, folded = _eliminate(pump.fermi_level, structure, driven.matrix(0.0), leads, channels, moves)
-    order = _order(structure, folded, alive, pump.probe)
-    return _assemble(pump, path, rows, columns, folded, channels, order, driven.calls)
+    alive, leads, widths = _eliminate(pump.fermi_level, structure, driven.matrix(0.0), leads, widths, moves)
+    order = _order(structure, leads, alive, pump.probe)
+    return _assemble(pump, path, rows, columns, leads, widths, order, driven.calls)
 
 
-def _lead_self_energies(pump: Pump, system: Any, offsets: Indices) -> dict[int, Any]:
-    """Self-energy of every lead as a sparse matrix over all orbitals."""
+def _leads(pump: Pump, system: Any, offsets: Indices) -> tuple[dict[int, Any], dict[int, Complex]]:
+    """Self-energy of every lead as a sparse matrix over all orbitals, and W, one column for each open channel."""
     from scipy.sparse import coo_matrix
 
-    result = {}
+    size = int(offsets[-1])
+    sigmas, widths = {}, {}
     for number, (lead, interface) in enumerate(zip(system.leads, system.lead_interfaces, strict=True)):
         orbitals = np.concatenate([np.arange(offsets[site], offsets[site + 1]) for site in interface])
-        sigma = lead.modes(pump.fermi_level)[1].selfenergy()
+        propagating, stabilized = lead.modes(pump.fermi_level)
+        sigma = stabilized.selfenergy()
         rows, columns = np.meshgrid(orbitals, orbitals, indexing="ij")
-        result[number] = coo_matrix(
-            (sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(offsets[-1], offsets[-1])
-        ).tocsr()
+        sigmas[number] = coo_matrix((sigma.ravel(), (rows.ravel(), columns.ravel())), shape=(size, size)).tocsr()
+        strength, states = np.linalg.eigh(1j * (sigma - sigma.conj().T))
+        first = len(strength) - len(propagating.momenta) // 2
+        broad = states[:, first:] * np.sqrt(np.maximum(strength[first:], 0.0))
+        widths[number] = _placed(broad, orbitals, size)
+    return sigmas, widths
+
+
+def _placed(rows: Complex, orbitals: Indices, size: int) -> Complex:
+    """Return an array of `size` rows with `rows` at `orbitals` and zero elsewhere."""
+    result = np.zeros((size, rows.shape[1]), dtype=complex)
+    result[orbitals] = rows
     return result
 
 
@@ -148,19 +159,19 @@ def _eliminate(
     structure: Any,
     hamiltonian: Any,
     leads: dict[int, Any],
-    channels: dict[int, int],
+    widths: dict[int, Complex],
     moves: NDArray[np.bool_],
-) -> tuple[Indices, dict[int, Any]]:
+) -> tuple[Indices, dict[int, Any], dict[int, Complex]]:
     """Fold the still stretches that touch one lead only into its self-energy, if it touches nothing else.
 
-    Returns the orbitals that are left and the self-energies of all leads.
+    Returns the orbitals that are left, and the self-energies and broadenings of all leads.
     """
     from scipy.sparse.csgraph import connected_components
 
-    folded, gone = dict(leads), np.zeros(len(moves), dtype=bool)
+    folded, widths, gone = dict(leads), dict(widths), np.zeros(len(moves), dtype=bool)
     quiet = np.flatnonzero(~moves)
     if not moves.any() or not quiet.size:
-        return np.flatnonzero(~gone), folded
+        return np.flatnonzero(~gone), folded, widths
     _, piece = connected_components(structure[quiet][:, quiet], directed=False)
     seats = {number: np.unique(sigma.nonzero()[0]) for number, sigma in leads.items()}
     touching = {number: set(piece[np.isin(quiet, seat)]) for number, seat in seats.items()}
@@ -169,14 +180,19 @@ def _eliminate(
         inside = quiet[np.isin(piece, list(own))]
         if not np.isin(seat, inside).all():
             continue
-        sigma = _folded(energy, hamiltonian, leads[number], inside)
-        if sigma is not None and _still_resolves(sigma, channels[number]):
-            folded[number] = sigma
+        found = _folded(energy, hamiltonian, leads[number], widths[number], inside)
+        if found is not None:
+            folded[number], widths[number] = found
             gone[inside] = True
-    return np.flatnonzero(~gone), folded
+    return np.flatnonzero(~gone), folded, widths
 
 
-def _folded(energy: float, hamiltonian: Any, sigma: Any, inside: Indices) -> Any:
+def _folded(energy: float, hamiltonian: Any, sigma: Any, width: Complex, inside: Indices) -> tuple[Any, Complex] | None:
+    """Self-energy C^+ g C and W of a lead as felt next to the stretch `inside`; None if it ends nowhere or resonates.
+
+    C is the coupling and g = (E - H - Sigma)^-1 of the stretch.  Its broadening is C^+ g^+ W, small where little gets
+    through, but with all its digits; the difference Sigma - Sigma^+ would lose them.
+    """
     from scipy.sparse import csr_matrix, identity
     from scipy.sparse.linalg import splu
 
@@ -189,11 +205,21 @@ def _folded(energy: float, hamiltonian: Any, sigma: Any, inside: Indices) -> Any
         reached = splu(block.tocsc()).solve(coupling.astype(complex))
     except RuntimeError:
         return None
-    small = coupling.conj().T @ reached
-    if not np.isfinite(small).all():
+    if not np.abs(reached).max() < RESONANT:  # or it is not a number
         return None
+    broad = _orthogonal(reached.conj().T @ width[inside])
+    shift = coupling.conj().T @ reached
+    small = (shift + shift.conj().T) / 2 - 0.5j * (broad @ broad.conj().T)
     rows, columns = np.meshgrid(outside, outside, indexing="ij")
-    return csr_matrix((small.ravel(), (rows.ravel(), columns.ravel())), shape=hamiltonian.shape)
+    folded = csr_matrix((small.ravel(), (rows.ravel(), columns.ravel())), shape=hamiltonian.shape)
+    return folded, _placed(broad, outside, len(width))
+
+
+def _orthogonal(columns: Complex) -> Complex:
+    """Return orthogonal columns with the same W W^+, as many as are independent of each other beyond rounding."""
+    states, sizes, _ = np.linalg.svd(columns, full_matrices=False)
+    kept = sizes > DEPENDENT * sizes.max(initial=0.0)
+    return np.asarray(states[:, kept] * sizes[kept])
 
 
 def _order(structure: Any, leads: dict[int, Any], alive: Indices, probe: int) -> Indices:
@@ -215,7 +241,7 @@ def _assemble(
     rows: Indices,
     columns: Indices,
     leads: dict[int, Any],
-    channels: dict[int, int],
+    widths: dict[int, Complex],
     order: Indices,
     samples: int,
 ) -> FoldedDevice:
@@ -229,38 +255,17 @@ def _assemble(
     still = pack(np.arange(size), np.arange(size), np.full(size, pump.fermi_level, dtype=complex), size, half)
     for matrix in sigma.values():
         still -= pack(matrix.row, matrix.col, matrix.data, size, half)
-    width = {number: _broadening(s, size, channels[number]) for number, s in sigma.items()}
-    probe = width.pop(pump.probe)
-    drain = np.hstack([np.zeros((size, 0), dtype=complex), *width.values()])
+    left = {number: _what_is_left(width[order]) for number, width in widths.items()}
+    probe = left.pop(pump.probe)
+    drain = np.hstack([np.zeros((size, 0), dtype=complex), *left.values()])
     distance = _distance(places, probe, size)
     return FoldedDevice(size, half, rows, columns, path.only(kept), still, probe, drain, distance, samples)
 
 
-def _broadening(sigma: Any, size: int, channels: int) -> Complex:
-    """W with W W^+ = i (Sigma - Sigma^+): one orthogonal column for each open channel that is seen at all."""
-    touched, strength, states = _strengths(sigma)
-    seen = strength > RESOLVED * np.abs(sigma).max() if len(touched) else np.zeros(0, dtype=bool)
-    seen[: max(0, len(strength) - channels)] = False
-    column = np.zeros((size, int(seen.sum())), dtype=complex)
-    column[touched] = states[:, seen] * np.sqrt(strength[seen])
-    return column
-
-
-def _strengths(sigma: Any) -> tuple[Indices, NDArray[np.float64], Complex]:
-    """Orbitals that a self-energy touches, with the eigenvalues (rising) and eigenvectors of its broadening on them."""
-    places = sigma.tocoo()
-    touched = np.unique(np.concatenate([places.row, places.col])).astype(int)
-    block = sigma.tocsr()[touched][:, touched].toarray()
-    strength, states = np.linalg.eigh(1j * (block - block.conj().T))
-    return touched, strength, states
-
-
-def _still_resolves(sigma: Any, channels: int) -> bool:
-    """Whether all open channels of a lead are still seen through the stretch folded into it, above rounding."""
-    _, strength, _ = _strengths(sigma)
-    if len(strength) < channels:
-        return False
-    return bool((strength[len(strength) - channels :] > RESOLVED * np.abs(sigma).max()).all())
+def _what_is_left(width: Complex) -> Complex:
+    """W of a lead on the orbitals that were kept: no columns if nothing connects it to the probe."""
+    touched = np.flatnonzero(np.abs(width).max(axis=1, initial=0.0))
+    return _placed(_orthogonal(width[touched]), touched, len(width))
 
 
 def _distance(places: list[tuple[Indices, Indices]], probe: Complex, size: int) -> Indices:

@@ -95,6 +95,8 @@ class DrivenHamiltonian:
                 found = _walked(self.pump.finalized, self._pairs, self.offsets, parameters, len(phases))
         except Exception:  # anything: the function was not written for arrays, and is asked phase by phase instead
             return None
+        if not np.isfinite(found).all():  # asked phase by phase, the failure is told where it happens
+            return None
         for i in (0, len(phases) // 2 + 1):
             truth = self.at(float(phases[i]))
             if not np.abs(found[i] - truth).max(initial=0.0) <= AGREES * max(1e-300, np.abs(truth).max(initial=0.0)):

@@ -16,8 +16,9 @@ from numpy.typing import NDArray
 
 __all__ = ["HIGHEST", "Harmonics", "fit"]
 
-CHECKS = 2 * np.pi * ((np.arange(32) + 0.5) * 0.6180339887498949 % 1)  # far from any even spacing
+CHECKS = 2 * np.pi * ((np.arange(64) + 0.5) * 0.6180339887498949 % 1)  # far from any even spacing
 TOLERANCE = 1e-11
+ROUNDING = 1e-15  # of the largest element: less than the noise that a look allows for
 HIGHEST = 16
 
 
@@ -70,7 +71,8 @@ def fit(sample: Callable[[NDArray[np.float64]], NDArray[Any]]) -> Harmonics | No
         Phases in radians, shape (n,), to values of shape (n, ...).
     """
     known = np.asarray(sample(np.concatenate([_even(1), CHECKS])), dtype=complex)
-    checks, tolerance = known[3:], TOLERANCE * np.abs(known).max(axis=0) + 1e-300
+    size = np.abs(known).max(axis=0)
+    checks, tolerance = known[3:], TOLERANCE * size + ROUNDING * size.max(initial=0.0) + 1e-300
     values, degree = known[:3], 1
     while True:
         found = Harmonics(np.fft.fftshift(np.fft.fft(values, axis=0) / len(values), axes=0))

@@ -134,17 +134,18 @@ def look(phase: float, band: Complex, probe: Complex, *, splitting: bool = True)
     sigma_b, _ = small_singular(other, lu_b)
     squared = gram(band)
     half = len(band) // 2
+    g_norm = inverse_norm(squared, sigma[0], half)
     return Look(
         phase,
         reflection,
-        inverse_norm(squared, sigma[0], half),
+        g_norm,
         inverse_norm(gram(other), sigma_b[0], half),
         a_columns,
         b_columns,
         spectral_norm(left),
         spectral_norm(right),
         noise,
-        _split(band, lu, squared, probe, sigma, v, noise) if splitting else None,
+        _split(band, lu, squared, probe, sigma, v, noise, 1 / g_norm) if splitting else None,
     )
 
 
@@ -183,7 +184,14 @@ def inverse_norm(squared: Complex, estimate: float, half: int) -> float:
 
 
 def _split(
-    band: Complex, lu: BandLU, squared: Complex, probe: Complex, sigma: NDArray[np.float64], v: Complex, noise: float
+    band: Complex,
+    lu: BandLU,
+    squared: Complex,
+    probe: Complex,
+    sigma: NDArray[np.float64],
+    v: Complex,
+    noise: float,
+    proven: float,
 ) -> Split | None:
     candidates = sigma[: min(4, len(sigma))]
     if len(candidates) < 2:
@@ -191,9 +199,11 @@ def _split(
     k = 1 + int(np.flatnonzero(candidates[1:] >= REGULAR * candidates[-1])[0])
     u, v, smallest = _refined(band, lu, v[:, :k])
     next_sigma = _next_sigma(squared, v, float(sigma[k]), len(band) // 2)
+    residual = spectral_norm(apply(band, v) - u * smallest) + spectral_norm(apply_adjoint(band, u) - v * smallest)
+    if smallest.max() + residual >= next_sigma:  # the levels split off need not be the smallest ones
+        next_sigma = min(next_sigma, proven)
     if next_sigma == 0.0:
         return None
-    residual = spectral_norm(apply(band, v) - u * smallest) + spectral_norm(apply_adjoint(band, u) - v * smallest)
     right = _deflated(lu, probe, u, v, adjoint=False)
     left = _deflated(lu, probe, v, u, adjoint=True)
     return Split(
