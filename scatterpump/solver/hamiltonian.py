@@ -8,7 +8,6 @@ phase by phase.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from typing import Any
 
 import numpy as np
@@ -149,10 +148,12 @@ def _stacked(parameters: list[dict[str, Any]]) -> dict[str, Any]:
 def _walked(
     system: Any, pairs: list[tuple[int, int]], offsets: Indices, parameters: dict[str, Any], count: int
 ) -> Complex:
+    from kwant.builder import Other
+
     orbitals = np.diff(offsets).tolist()
     sites, blocks = system.sites, []
     caught: dict[int, tuple[Any, ...]] = {}
-    values = [*system.onsites, *(pair for pair in system.hoppings if pair[0] is not _other())]
+    values = [*system.onsites, *(pair for pair in system.hoppings if pair[0] is not Other)]
     for (i, j), (value, names) in zip(pairs, values, strict=True):
         if names is not None:
             key = id(names)
@@ -165,10 +166,3 @@ def _walked(
         if i != j:
             blocks.append(block.conj().swapaxes(1, 2).reshape(count, -1))
     return np.concatenate(blocks, axis=1, dtype=complex)
-
-
-def _other() -> Callable[..., Any] | type:
-    from kwant.builder import Other
-
-    found: type = Other
-    return found

@@ -12,10 +12,10 @@ there nothing is narrow.  Without any drain A and B are adjoint to each other, s
 minus twice as often as det A, which does not wind at all: the number is 0.
 
 Proven: everything above, in exact arithmetic about matrices within the stated noise of the given ones, if the
-bounds on the change of H are exact (`Winding.exact`).  Resting on sampling: that H is the
-trigonometric polynomial or broken line with which each of its elements agrees to 1e-11 or 1e-10 at the angles checked.
-Resting on floating point: that noise, 20 eps |A| plus the
-residuals met.  Estimated: the change of H along cycles that are neither trigonometric nor straight between corners.
+bounds on the change of H are exact (`Winding.exact`). Resting on sampling: that H is the trigonometric polynomial
+or broken line with which each of its elements agrees to 1e-11 or 1e-10 at the angles checked. Resting on floating
+point: that noise, 20 eps |A| plus the residuals met. Estimated: the change of H along cycles that are neither
+trigonometric nor straight between corners.
 """
 
 from __future__ import annotations
