@@ -139,8 +139,9 @@ def pump(seed: int) -> Case:
     return case_of(folded(path, probe, drain, float(rng.uniform(-0.3, 0.3))))
 
 
-def twinned(rng: np.random.Generator, path: Path, probe: Complex, drain: Complex, copies: int,
-            apart: float) -> tuple[Path, Complex, Complex]:
+def twinned(
+    rng: np.random.Generator, path: Path, probe: Complex, drain: Complex, copies: int, apart: float
+) -> tuple[Path, Complex, Complex]:
     assert isinstance(path, TrigonometricPath)
     n = len(probe)
     parts = path.harmonics.coefficients.reshape(-1, n, n)
@@ -322,9 +323,14 @@ def test_random_cases_reach_every_regime() -> None:
     assert (stretched > 100).sum() > 20
 
 
-@pytest.mark.parametrize(("kind", "seed"), [
-    *(("pump", seed) for seed in range(40)), *(("wave", 1000 + seed) for seed in range(8)),
-    *(("twins", 1004 + seed) for seed in range(4))])
+@pytest.mark.parametrize(
+    ("kind", "seed"),
+    [
+        *(("pump", seed) for seed in range(40)),
+        *(("wave", 1000 + seed) for seed in range(8)),
+        *(("twins", 1004 + seed) for seed in range(4)),
+    ],
+)
 def test_numbers_of_closed_covers_are_those_of_the_argument_principle(kind: str, seed: int) -> None:
     case = pump(seed) if kind == "pump" else random_case(kind, seed)
     cover = cover_cycle(case.device, case.slopes, budget=80)

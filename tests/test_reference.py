@@ -265,8 +265,9 @@ def test_surveys_are_worth_their_looks() -> None:
     assert all(seen.evaluations <= 48 and seen.needed <= seen.evaluations for seen in found)
 
 
-@pytest.mark.parametrize(("cells", "contact", "number"), [
-    (3, 0.3, 1), (3, 0.1, 0), (3, 1e-3, 0), (4, 0.3, 1), (4, 0.05, 1), (4, 0.03, 0)])
+@pytest.mark.parametrize(
+    ("cells", "contact", "number"), [(3, 0.3, 1), (3, 0.1, 0), (3, 1e-3, 0), (4, 0.3, 1), (4, 0.05, 1), (4, 0.03, 0)]
+)
 def test_winding_that_a_weak_contact_loses_is_not_called_the_same(cells: int, contact: float, number: int) -> None:
     """In a short chain the level at the far end leaks more than a weak contact lets through: the winding is lost."""
     ladder = Ladder((contact,), cells=cells)
@@ -278,8 +279,18 @@ def test_winding_that_a_weak_contact_loses_is_not_called_the_same(cells: int, co
 
 def test_without_a_drain_nothing_leaks() -> None:
     good, contact = behind_good_contact(Ladder((0.1,)))
-    closed = FoldedDevice(good.size, good.half, good.rows, good.columns, good.path, good.still, good.probe,
-                          good.drain[:, :0], good.distance, 0)
+    closed = FoldedDevice(
+        good.size,
+        good.half,
+        good.rows,
+        good.columns,
+        good.path,
+        good.still,
+        good.probe,
+        good.drain[:, :0],
+        good.distance,
+        0,
+    )
     seen = survey(closed, slopes_of(good), contact, goal=1e-7, need_winding=True, budget=10)
     # definition
     assert (seen.leak, seen.same_winding, seen.evaluations) == (0.0, True, 0)
