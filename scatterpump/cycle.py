@@ -44,6 +44,9 @@ class Cycle:
         Phases in [0, 2 pi) where the path is not smooth.
     straight : bool
         True if every parameter is linear in phi between corners.
+    plain : bool
+        True if every parameter is known to be phi itself or a trigonometric polynomial of low degree in it, so that
+        no pulse can hide between samples.
 
     Examples
     --------
@@ -54,6 +57,7 @@ class Cycle:
     function: Callable[[float], Mapping[str, Any]]
     corners: tuple[float, ...] = ()
     straight: bool = False
+    plain: bool = False
 
     def at(self, phase: float) -> Parameters:
         """Return the parameters at `phase` (radians; any real number)."""
@@ -67,7 +71,7 @@ class Cycle:
     @classmethod
     def angle(cls, name: str = "phi") -> Cycle:
         """Return the cycle on which the parameter `name` is the angle itself."""
-        return cls(lambda phase: {name: phase})
+        return cls(lambda phase: {name: phase}, plain=True)
 
     @classmethod
     def ellipse(cls, *, x: tuple[str, float, float], y: tuple[str, float, float]) -> Cycle:
@@ -83,7 +87,10 @@ class Cycle:
             raise InputError(f"both axes of the ellipse are named {x_name!r}", allowed="two different parameters")
         if not all(map(isfinite, (x_centre, x_radius, y_centre, y_radius))):
             raise InputError("the ellipse has a centre or radius that is not finite", allowed="finite numbers")
-        return cls(lambda phase: {x_name: x_centre + x_radius * cos(phase), y_name: y_centre + y_radius * sin(phase)})
+        return cls(
+            lambda phase: {x_name: x_centre + x_radius * cos(phase), y_name: y_centre + y_radius * sin(phase)},
+            plain=True,
+        )
 
     @classmethod
     def through(

@@ -6,6 +6,7 @@ A `Pump` is what every later room takes: H(phi) is ``system`` at ``cycle.at(phi)
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from functools import cached_property
 from math import isfinite
@@ -83,9 +84,26 @@ class Pump:
         """Return all parameters of the Hamiltonian at `phase` (radians)."""
         return {**self.constants, **self.cycle.at(phase)}
 
+    def once(self, name: str, find: Callable[[], Any]) -> Any:
+        """Return what `find` gives, and the same again whenever it is asked for under `name`.
+
+        For what solvers find out about a pump and several of them need: its path, its lead modes.
+        """
+        found = self.__dict__.setdefault("_found", {})
+        if name not in found:
+            found[name] = find()
+        return found[name]
+
+    def __getstate__(self) -> dict[str, Any]:
+        """Leave what was found out behind when the pump is sent elsewhere."""
+        return {key: value for key, value in self.__dict__.items() if key != "_found"}
+
     def at_fermi_level(self, fermi_level: float) -> Pump:
         """Return the same pump at another Fermi level."""
-        return replace(self, system=self.finalized, bulk=self.finalized_bulk, fermi_level=fermi_level)
+        other = replace(self, system=self.finalized, bulk=self.finalized_bulk, fermi_level=fermi_level)
+        if "path" in self.__dict__.get("_found", {}):  # H(phi) does not know the Fermi level
+            other.once("path", lambda: self.__dict__["_found"]["path"])
+        return other
 
     def on(self, cycle: Cycle) -> Pump:
         """Return the same pump driven round another cycle."""

@@ -1,21 +1,24 @@
 """E - H(phi) and the borders of the leads as blocks between layers, for many phases at once (arrays only).
 
-A block has a fixed part (the energy, the borders) from which elements of H are taken off; what does not change with
-phi is formed once. Where every layer is one unknown the blocks are numbers, and three bands hold them all.
+A block has a fixed part (the energy, the borders, the elements of H that stand still) from which the elements that
+change with phi are taken off.  Where every layer is one unknown the blocks are numbers in three bands.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.solver.layers import Layers
 
-__all__ = ["Block", "Blocks"]
+__all__ = ["Band", "Block", "Blocks"]
 
+Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 
@@ -26,25 +29,54 @@ class Block:
 
     Attributes
     ----------
-    fixed : (w, w') complex array
+    fixed : (w, w') array
+        Real if all its elements are.
     elements, rows, columns : int arrays
-        Which elements of H belong to it, and where.
-    moves : bool
-        Whether any of them changes with phi.
+        Which of the moving elements of H belong to it, and where.
     """
 
-    fixed: Complex
+    fixed: Numbers
     elements: Indices
     rows: Indices
     columns: Indices
-    moves: bool
 
-    def at(self, entries: Complex) -> Complex:
-        """Return the block for each row of `entries` (n, nnz), or once if it does not move."""
-        chosen = entries if self.moves else entries[:1]
-        result = np.repeat(self.fixed[None], len(chosen), axis=0)
-        result[:, self.rows, self.columns] -= chosen[:, self.elements]
+    @property
+    def moves(self) -> bool:
+        """Whether any element changes with phi."""
+        return bool(self.elements.size)
+
+    def at(self, moving: Numbers) -> Numbers:
+        """Return the block for each row of `moving` (n, elements), shape (n, w, w'), or (1, w, w') if it is still."""
+        if not self.moves:
+            return self.fixed[None]
+        result = np.empty((len(moving), *self.fixed.shape), dtype=np.result_type(self.fixed, moving))
+        result[:] = self.fixed
+        result[:, self.rows, self.columns] -= moving[:, self.elements]
         return result
+
+
+@dataclass(frozen=True, eq=False)
+class Band(Sequence[Any]):
+    """Blocks of one row each: a number, or shape (n,) where it moves, formed when it is asked for.
+
+    Attributes
+    ----------
+    fixed : list of float or complex
+    place : list of int
+        Which of the moving elements is taken off, -1 for none.
+    moving : (elements, n) array
+    """
+
+    fixed: list[Any]
+    place: list[int]
+    moving: Numbers
+
+    def __len__(self) -> int:
+        return len(self.fixed)
+
+    def __getitem__(self, n: Any) -> Any:
+        place = self.place[n]
+        return self.fixed[n] if place < 0 else self.fixed[n] - self.moving[place]
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,8 +89,10 @@ class Blocks:
     energy : float
     rows, columns : (nnz,) int array
         Places of H's elements.
-    moves : (nnz,) bool array
-        Which of them change with phi.
+    still : (nnz,) complex array
+        Their values, 0 for those that move.
+    place : (nnz,) int array
+        Number of each element among those that move, -1 for those that do not.
     orbitals : int
         Number of orbitals; the borders' mode amplitudes are numbered after them.
     """
@@ -67,7 +101,8 @@ class Blocks:
     energy: float
     rows: Indices
     columns: Indices
-    moves: NDArray[np.bool_]
+    still: Complex
+    place: Indices
     orbitals: int
 
     @cached_property
@@ -85,21 +120,37 @@ class Blocks:
         """A_n,n+1."""
         return self._blocks(-1)
 
-    def band(self, step: int, entries: Complex) -> Complex:
-        """Return all blocks of one `step` (0 diagonal, 1 lower, -1 upper) as numbers, shape (L, n) or (L, 1)."""
-        level, count = self.layers.level, len(self.layers.widths)
-        near, fits = self._near(self.rows, self.columns, step)
-        elements = np.flatnonzero(fits)
+    @cached_property
+    def fixed(self) -> tuple[Indices, Indices, Complex]:
+        """Rows, columns and values of the part of E - H and the borders that stands still."""
+        here = np.arange(self.orbitals)
+        quiet = self.place < 0
+        return (
+            np.concatenate([here, self.rows[quiet], self.layers.rows]),
+            np.concatenate([here, self.columns[quiet], self.layers.columns]),
+            np.concatenate([np.full(len(here), self.energy, dtype=complex), -self.still[quiet], self.layers.values]),
+        )
+
+    @cached_property
+    def real_below(self) -> int:
+        """The first so many layers have real fixed parts, and real couplings between them."""
+        rows, columns, values = self.fixed
+        near = np.minimum(self.layers.level[rows], self.layers.level[columns])
+        return int(near[(values.imag != 0) & (near >= 0)].min(initial=len(self.layers.widths)))
+
+    def band(self, step: int, moving: Numbers) -> Band:
+        """Return all blocks of one `step` (0 diagonal, 1 lower, -1 upper) where every layer is one unknown."""
+        count = len(self.layers.widths)
+        rows, columns, values = self.fixed
+        near, fits = self._near(rows, columns, step)
         fixed = np.zeros(count, dtype=complex)
-        border, inside = self._near(self.layers.rows, self.layers.columns, step)
-        fixed[border[inside]] += self.layers.values[inside]
-        if step == 0:
-            here = level[: self.orbitals]
-            fixed[here[here >= 0]] += self.energy
-        chosen = entries if self.moves[elements].any() else entries[:1]
-        result = np.repeat(fixed[:, None], len(chosen), axis=1)
-        result[near[elements]] -= chosen[:, elements].T
-        return result[: count - abs(step)]
+        np.add.at(fixed, near[fits], values[fits])
+        near, fits = self._near(self.rows, self.columns, step)
+        chosen = np.flatnonzero(fits & (self.place >= 0))
+        place = np.full(count, -1)
+        place[near[chosen]] = self.place[chosen]
+        numbers = [value if value.imag else value.real for value in fixed[: count - abs(step)].tolist()]
+        return Band(numbers, place.tolist(), moving.T)
 
     def _near(self, rows: Indices, columns: Indices, step: int) -> tuple[Indices, NDArray[np.bool_]]:
         """The nearer layer of each element, and whether its row lies `step` layers beyond its column."""
@@ -108,30 +159,27 @@ class Blocks:
         return near, (level[rows] - level[columns] == step) & (near >= 0)
 
     def _blocks(self, step: int) -> tuple[Block, ...]:
-        level, place, widths = self.layers.level, self.layers.place, self.layers.widths
+        place, widths = self.layers.place, self.layers.widths
         count = len(widths)
-        elements, border = (
-            _grouped(np.where(fits, near, count), count)
-            for near, fits in (
-                self._near(self.rows, self.columns, step),
-                self._near(self.layers.rows, self.layers.columns, step),
-            )
-        )
-        here = level[: self.orbitals]
-        orbitals = _grouped(np.where(here >= 0, here, count), count)
+        rows, columns, values = self.fixed
+        near, fits = self._near(rows, columns, step)
+        quiet = _grouped(np.where(fits, near, count), count)
+        near, fits = self._near(self.rows, self.columns, step)
+        moving = _grouped(np.where(fits & (self.place >= 0), near, count), count)
         found = []
         for n in range(count - abs(step)):
             tall, wide = (n + 1, n) if step == 1 else (n, n - step)
             fixed = np.zeros((widths[tall], widths[wide]), dtype=complex)
-            if step == 0:
-                fixed[place[orbitals[n]], place[orbitals[n]]] = self.energy
-            fixed[place[self.layers.rows[border[n]]], place[self.layers.columns[border[n]]]] += self.layers.values[
-                border[n]
-            ]
-            mine = elements[n]
-            moves = bool(self.moves[mine].any())
-            found.append(Block(fixed, mine, place[self.rows[mine]], place[self.columns[mine]], moves))
+            some = quiet[n]
+            np.add.at(fixed, (place[rows[some]], place[columns[some]]), values[some])
+            mine = moving[n]
+            found.append(Block(_narrowed(fixed), self.place[mine], place[self.rows[mine]], place[self.columns[mine]]))
         return tuple(found)
+
+
+def _narrowed(values: Complex) -> Numbers:
+    """The same as real numbers, if they are."""
+    return values if values.imag.any() else np.ascontiguousarray(values.real)
 
 
 def _grouped(labels: Indices, count: int) -> list[Indices]:

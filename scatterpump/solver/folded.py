@@ -24,9 +24,9 @@ from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
 from scatterpump.solver.band import EPS, pack
-from scatterpump.solver.hamiltonian import DrivenHamiltonian
+from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.solver.modes import with_modes
-from scatterpump.solver.path import Path, Side, follow, moving
+from scatterpump.solver.path import Path, Side, moving
 
 __all__ = ["FoldedDevice", "fold"]
 
@@ -116,9 +116,8 @@ def fold(pump: Pump) -> FoldedDevice:
     """
     from scipy.sparse import csr_matrix
 
-    system, driven = with_modes(pump), DrivenHamiltonian(pump)
+    system, (driven, path) = with_modes(pump), driven_path(pump)
     size, rows, columns = driven.size, driven.rows, driven.columns
-    path = follow(driven.many, pump.cycle)
     leads, widths = _leads(pump, system, driven.offsets)
     moves = np.zeros(size, dtype=bool)
     moves[rows[moving(path)]] = True

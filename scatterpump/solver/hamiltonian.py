@@ -2,12 +2,13 @@
 
 The places of the elements follow from the system alone: every site and every hopping, whatever their values at some
 phase.  Values at many phases come from calling each value function once with arrays of parameters, of shape (n, 1, 1);
-where a function does not take that, or the result is not what kwant itself says at two of the phases, kwant builds H
+where a function does not take that, or does not give what it gives for a few sites at single phases, kwant builds H
 phase by phase.
 """
 
 from __future__ import annotations
 
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -15,13 +16,26 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import SolverError
 from scatterpump.pump import Pump
+from scatterpump.solver.path import Path, follow
 
-__all__ = ["DrivenHamiltonian"]
+__all__ = ["DrivenHamiltonian", "driven_path"]
 
 Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 AGREES = 1e-12
+SPOTS = 16
+
+
+def driven_path(pump: Pump) -> tuple[DrivenHamiltonian, Path]:
+    """Return H of a pump and the path it takes along the cycle, found once."""
+
+    def find() -> tuple[DrivenHamiltonian, Path]:
+        driven = DrivenHamiltonian(pump)
+        return driven, follow(driven.many, pump.cycle)
+
+    found: tuple[DrivenHamiltonian, Path] = pump.once("path", find)
+    return found
 
 
 class DrivenHamiltonian:
@@ -39,7 +53,7 @@ class DrivenHamiltonian:
 
     def __init__(self, pump: Pump) -> None:
         self.pump, self.calls = pump, 0
-        _, self.offsets = self._built(0.0)
+        self.offsets: Indices = _offsets(pump.finalized) if pump.finalized.site_ranges else self._built(0.0)[1]
         self._pairs = _pairs(pump.finalized)
         self.rows, self.columns = _places(self._pairs, self.offsets)
         keys = self.rows * self.size + self.columns
@@ -65,7 +79,7 @@ class DrivenHamiltonian:
         return result
 
     def many(self, phases: Floats) -> Complex:
-        """Return the elements at each of `phases`, shape (n, nnz)."""
+        """Return the elements at each of `phases`, shape (n, nnz), one element's values next to each other."""
         if self._arrays and len(phases) > 2:
             found = self._by_arrays(phases)
             if found is not None:
@@ -87,20 +101,62 @@ class DrivenHamiltonian:
         return found, np.concatenate([[0], np.cumsum(count)])
 
     def _by_arrays(self, phases: Floats) -> Complex | None:
-        """Values from one call a value function, or None if that does not reproduce kwant's at two phases."""
+        """Values from one call a value function, or None if that does not reproduce kwant's."""
+        system, places = self.pump.finalized, len(self.rows)
+        scalars = [self.pump.parameters(float(phase)) for phase in phases]
         try:
-            parameters = _stacked([self.pump.parameters(float(phase)) for phase in phases])
             with np.errstate(all="ignore"):
-                found = _walked(self.pump.finalized, self._pairs, self.offsets, parameters, len(phases))
+                found = _walked(system, self._pairs, self.offsets, _stacked(scalars), len(phases), places)
         except Exception:  # anything: the function was not written for arrays, and is asked phase by phase instead
             return None
         if not np.isfinite(found).all():  # asked phase by phase, the failure is told where it happens
             return None
-        for i in (0, len(phases) // 2 + 1):
-            truth = self.at(float(phases[i]))
-            if not np.abs(found[i] - truth).max(initial=0.0) <= AGREES * max(1e-300, np.abs(truth).max(initial=0.0)):
+        spots = _spots(system)
+        for place in (len(phases) // 2 + 1, len(phases) - 1):
+            if not self._agrees(found[place], spots, scalars[place]):
                 return None
         return found
+
+    def _agrees(self, found: Complex, spots: list[int], parameters: dict[str, Any]) -> bool:
+        """Whether value functions called for one phase give what was found."""
+        starts, values = self._starts, _values(self.pump.finalized)
+        for spot in spots:
+            block = _called(self.pump.finalized, self._pairs[spot], values[spot], parameters)
+            truth = np.asarray(block, dtype=complex).ravel()
+            difference = np.abs(found[starts[spot] : starts[spot] + truth.size] - truth).max()
+            if not difference <= AGREES * max(1e-300, np.abs(truth).max()):
+                return False
+        return True
+
+    @cached_property
+    def _starts(self) -> Indices:
+        """Where the block of every pair begins among the elements."""
+        return _starts(self._pairs, self.offsets)
+
+
+def _offsets(system: Any) -> Indices:
+    """Every site's first orbital, as kwant knows it without calling value functions."""
+    sites, orbitals = (np.array(column) for column in list(zip(*system.site_ranges, strict=True))[:2])
+    count = np.repeat(orbitals[:-1], np.diff(sites))
+    return np.asarray(np.concatenate([[0], np.cumsum(count)]), dtype=int)
+
+
+def _spots(system: Any) -> list[int]:
+    """For every value function some of the pairs it is called for: the first, the last, and others between."""
+    calls: dict[Any, list[int]] = {}
+    for place, (value, names) in enumerate(_values(system)):
+        if names is not None:
+            calls.setdefault(value, []).append(place)
+    return [
+        places[i] for places in calls.values() for i in np.unique(np.linspace(0, len(places) - 1, SPOTS).astype(int))
+    ]
+
+
+def _starts(pairs: list[tuple[int, int]], offsets: Indices) -> Indices:
+    """Where the block of every pair begins among the elements; a hopping's reverse follows its block."""
+    both, count = np.array(pairs, dtype=np.int64).reshape(-1, 2), np.diff(offsets)
+    sizes = count[both[:, 0]] * count[both[:, 1]] * np.where(both[:, 0] == both[:, 1], 1, 2)
+    return np.asarray(np.cumsum(sizes) - sizes)
 
 
 def _pairs(system: Any) -> list[tuple[int, int]]:
@@ -145,24 +201,48 @@ def _stacked(parameters: list[dict[str, Any]]) -> dict[str, Any]:
     return result
 
 
-def _walked(
-    system: Any, pairs: list[tuple[int, int]], offsets: Indices, parameters: dict[str, Any], count: int
-) -> Complex:
+def _values(system: Any) -> list[tuple[Any, Any]]:
+    """Value, and names of its parameters or None, of every pair."""
     from kwant.builder import Other
 
-    orbitals = np.diff(offsets).tolist()
-    sites, blocks = system.sites, []
-    caught: dict[int, tuple[Any, ...]] = {}
-    values = [*system.onsites, *(pair for pair in system.hoppings if pair[0] is not Other)]
-    for (i, j), (value, names) in zip(pairs, values, strict=True):
+    return [*system.onsites, *(pair for pair in system.hoppings if pair[0] is not Other)]
+
+
+def _called(system: Any, pair: tuple[int, int], call: tuple[Any, Any], parameters: dict[str, Any]) -> Any:
+    """Value of a site (i, i) or hopping (i, j)."""
+    value, names = call
+    if names is None:
+        return value
+    i, j = pair
+    caught = [parameters[name] for name in names]
+    sites = system.sites
+    return value(sites[i], *caught) if i == j else value(sites[i], sites[j], *caught)
+
+
+def _walked(
+    system: Any, pairs: list[tuple[int, int]], offsets: Indices, parameters: dict[str, Any], count: int, places: int
+) -> Complex:
+    """All elements at all phases, shape (count, places), stored element by element."""
+    orbitals, sites = np.diff(offsets), system.sites
+    found = np.empty((places, count), dtype=complex)
+    starts = _starts(pairs, offsets)
+    caught: dict[int, list[Any]] = {}
+    single = bool((orbitals == 1).all())
+    for (i, j), start, (value, names) in zip(pairs, starts.tolist(), _values(system), strict=True):
         if names is not None:
-            key = id(names)
-            if key not in caught:
-                caught[key] = tuple(parameters[name] for name in names)
-            value = value(sites[i], *caught[key]) if i == j else value(sites[i], sites[j], *caught[key])
-        shape = (count, orbitals[i], orbitals[j])
-        block = np.broadcast_to(value, shape)
-        blocks.append(block.reshape(count, -1))
+            if id(names) not in caught:
+                caught[id(names)] = [parameters[name] for name in names]
+            known = caught[id(names)]
+            value = value(sites[i], *known) if i == j else value(sites[i], sites[j], *known)
+        if single:
+            found[start] = value.reshape(-1) if isinstance(value, np.ndarray) else value
+            continue
+        block = np.broadcast_to(value, (count, orbitals[i], orbitals[j]))
+        end = start + block[0].size
+        found[start:end] = block.reshape(count, -1).T
         if i != j:
-            blocks.append(block.conj().swapaxes(1, 2).reshape(count, -1))
-    return np.concatenate(blocks, axis=1, dtype=complex)
+            found[end : 2 * end - start] = block.conj().swapaxes(1, 2).reshape(count, -1).T
+    if single:
+        hops = starts[len(sites) :]
+        found[hops + 1] = found[hops].conj()
+    return found.T

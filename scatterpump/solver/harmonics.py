@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -46,8 +47,29 @@ class Harmonics:
 
     def at(self, phases: Any) -> NDArray[np.complex128]:
         """Return the array at each of `phases`, shape (n, ...)."""
-        waves = np.exp(1j * np.multiply.outer(np.asarray(phases, dtype=float), self.orders))
-        return np.tensordot(waves, self.coefficients, axes=(-1, 0))
+        return np.asarray(self.values(phases), dtype=complex)
+
+    def values(self, phases: Any) -> NDArray[Any]:
+        """Return the same, as float64 if the array is real at all phases; an element's values lie together."""
+        angles = np.multiply.outer(np.asarray(phases, dtype=float), self.orders)
+        shape = self.coefficients.shape[1:]
+        weights: NDArray[Any] = self.coefficients.reshape(len(self.coefficients), -1)
+        waves: NDArray[Any] = np.exp(1j * angles)
+        if self._halves is not None:
+            ahead = angles[..., self.degree + 1 :]
+            weights = self._halves
+            waves = np.concatenate([np.ones((*angles.shape[:-1], 1)), np.cos(ahead), np.sin(ahead)], axis=-1)
+        found: NDArray[Any] = (weights.T @ waves.reshape(-1, waves.shape[-1]).T).T
+        return found.reshape(*angles.shape[:-1], *shape)
+
+    @cached_property
+    def _halves(self) -> NDArray[np.float64] | None:
+        """Weights of 1, cos k phi and sin k phi of a real array, shape (2K+1, elements); None if it is complex."""
+        c = self.coefficients.reshape(len(self.coefficients), -1)
+        if not (c[::-1].conj() == c).all():
+            return None
+        ahead = c[self.degree + 1 :]
+        return np.concatenate([c[[self.degree]].real, 2 * ahead.real, -2 * ahead.imag])
 
     def trimmed(self, tolerance: NDArray[np.float64]) -> Harmonics:
         """Return the same without outer harmonics of which no element exceeds its own `tolerance`."""
@@ -71,17 +93,38 @@ def fit(sample: Callable[[NDArray[np.float64]], NDArray[Any]]) -> Harmonics | No
         Phases in radians, shape (n,), to values of shape (n, ...).
     """
     known = np.asarray(sample(np.concatenate([_even(1), CHECKS])), dtype=complex)
-    size = np.abs(known).max(axis=0)
-    checks, tolerance = known[3:], TOLERANCE * size + ROUNDING * size.max(initial=0.0) + 1e-300
-    values, degree = known[:3], 1
+    shape, known = known.shape[1:], known.reshape(len(known), -1)
+    varies = (known != known[0]).any(axis=0)
+    size = np.abs(known[:, varies]).max(axis=0, initial=0.0)
+    largest = np.abs(known[0]).max(initial=size.max(initial=0.0))
+    checks, tolerance = known[3:, varies], TOLERANCE * size + ROUNDING * largest + 1e-300
+    values, degree, real = known[:3, varies], 1, not known.imag.any()
     while True:
-        found = Harmonics(np.fft.fftshift(np.fft.fft(values, axis=0) / len(values), axes=0))
+        found = Harmonics(_coefficients(values, real))
         if (np.abs(found.at(CHECKS) - checks) <= tolerance).all():
-            return found.trimmed(tolerance)
+            return _with_constants(found.trimmed(tolerance), known[0], varies, shape)
         degree *= 2
         if degree > HIGHEST:
             return None
-        values = np.asarray(sample(_even(degree)), dtype=complex)
+        values = np.asarray(sample(_even(degree)), dtype=complex).reshape(2 * degree + 1, -1)[:, varies]
+
+
+def _coefficients(values: NDArray[np.complex128], real: bool) -> NDArray[np.complex128]:
+    """c_-K ... c_K from 2K+1 even samples; of real ones c_-k is the exact conjugate of c_k."""
+    if not real:
+        return np.asarray(np.fft.fftshift(np.fft.fft(values, axis=0) / len(values), axes=0))
+    half = np.fft.rfft(values.real, axis=0) / len(values)
+    return np.concatenate([half[:0:-1].conj(), half])
+
+
+def _with_constants(
+    found: Harmonics, known: NDArray[np.complex128], varies: NDArray[np.bool_], shape: tuple[int, ...]
+) -> Harmonics:
+    """Put the elements that never changed beside those that were fitted."""
+    every = np.zeros((len(found.coefficients), len(known)), dtype=complex)
+    every[found.degree] = known
+    every[:, varies] = found.coefficients
+    return Harmonics(every.reshape(-1, *shape))
 
 
 def _even(degree: int) -> NDArray[np.float64]:

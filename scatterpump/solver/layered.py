@@ -25,15 +25,16 @@ from numpy.typing import NDArray
 from scatterpump.pump import Pump
 from scatterpump.solver.blocks import Blocks
 from scatterpump.solver.elimination import Eliminated, eliminate, eliminate_single
-from scatterpump.solver.hamiltonian import DrivenHamiltonian
+from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.solver.layers import Border, Layers, layer, lead_border
 from scatterpump.solver.modes import with_modes
-from scatterpump.solver.path import Path, follow, moving
+from scatterpump.solver.path import Path, moving
 from scatterpump.solver.trace import ReflectionTrace
 
 __all__ = ["Problem", "prepare", "solve", "solve_prepared"]
 
 Complex = NDArray[np.complex128]
+Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 MEMORY = 128 * 2**20
@@ -45,7 +46,7 @@ WIDE = 120
 class Problem:
     """Everything about a pump that does not depend on phi, and its path."""
 
-    path: Path
+    path: Path  # of the elements of H that move
     layers: Layers
     probe: Border
     blocks: Blocks
@@ -86,7 +87,7 @@ def solve_prepared(problem: Problem, phases: Floats, *, transmission: bool) -> R
 
 def prepare(pump: Pump) -> Problem:
     """Sort a pump into layers, and find its path, modes and blocks."""
-    system, driven = with_modes(pump), DrivenHamiltonian(pump)
+    system, (driven, path) = with_modes(pump), driven_path(pump)
     borders = [
         lead_border(lead, interface, driven.offsets, pump.fermi_level)
         for lead, interface in zip(system.leads, system.lead_interfaces, strict=True)
@@ -94,15 +95,17 @@ def prepare(pump: Pump) -> Problem:
     probe = borders[pump.probe]
     assert probe is not None  # with_modes has refused a closed probe
     others = [border for i, border in enumerate(borders) if i != pump.probe and border is not None]
-    layers, path = layer(driven, probe, others), follow(driven.many, pump.cycle)
+    layers = layer(driven, probe, others)
     moves = moving(path) if path.exact else np.ones(len(driven.rows), dtype=bool)
-    blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, moves, driven.size)
-    return Problem(path, layers, probe, blocks)
+    still = np.where(moves, 0.0, path.at(0.0))
+    place = np.where(moves, np.cumsum(moves) - 1, -1)
+    blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, still, place, driven.size)
+    return Problem(path.only(np.flatnonzero(moves)), layers, probe, blocks)
 
 
 def _bytes_a_phase(problem: Problem) -> int:
     widths = problem.layers.widths.astype(float)
-    return 16 * int(2 * len(problem.blocks.rows) + 4 * (widths**2).max() + (widths**2).sum())
+    return 16 * int(2 * problem.blocks.place.max(initial=0) + 4 * (widths**2).max() + (widths**2).sum())
 
 
 def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[Complex, Complex]:
@@ -122,16 +125,16 @@ def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[
     return r, t
 
 
-def _eliminated(problem: Problem, entries: Complex, amplitude: bool) -> Eliminated:
+def _eliminated(problem: Problem, entries: Numbers, amplitude: bool) -> Eliminated:
     blocks, count = problem.blocks, len(entries)
+    real_below = 0 if np.iscomplexobj(entries) else blocks.real_below
     if problem.single:
         diagonal, lower, upper = (blocks.band(step, entries) for step in (0, 1, -1))
-        line = np.broadcast_to(diagonal, (len(diagonal), count))
-        return eliminate_single(line, lower, upper, amplitude=amplitude)
+        return eliminate_single(diagonal, lower, upper, count, real_below=real_below, amplitude=amplitude)
     here = [block.at(entries) for block in blocks.diagonal]
     here = [np.broadcast_to(block, (count, *block.shape[1:])) for block in here]
     down, up = ([block.at(entries) for block in part] for part in (blocks.lower, blocks.upper))
-    return eliminate(here, down, up, problem.wanted if amplitude else None)
+    return eliminate(here, down, up, problem.wanted if amplitude else None, real_below=real_below)
 
 
 def _matched(probe: Border, found: Eliminated, *, single: bool) -> tuple[Complex, Complex]:
@@ -159,7 +162,7 @@ def _amplitudes(probe: Border, response: Complex) -> tuple[Complex, Complex]:
     return amplitudes, np.asarray(ahead + 1j * behind)
 
 
-def _pivoted(problem: Problem, entries: Complex, amplitude: bool) -> tuple[Complex, Complex]:
+def _pivoted(problem: Problem, entries: Numbers, amplitude: bool) -> tuple[Complex, Complex]:
     """The same for one phase, by a pivoted sparse factorisation of all layers at once."""
     from scipy.sparse import bmat, csc_matrix
     from scipy.sparse.linalg import splu

@@ -23,6 +23,10 @@ def with_modes(pump: Pump) -> Any:
     InputError
         If a lead depends on a parameter of the cycle.
     """
+    return pump.once("modes", lambda: _with_modes(pump))
+
+
+def _with_modes(pump: Pump) -> Any:
     varying = varying_leads(pump)
     if varying:
         lead, names = varying[0]

@@ -13,7 +13,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import Literal, Protocol
+from typing import Any, Literal, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -49,8 +49,8 @@ class Path(Protocol):
     def at(self, phase: float) -> Entries:
         """Return H at `phase`."""
 
-    def many(self, phases: Floats) -> Entries:
-        """Return H at each of `phases`, shape (n, nnz)."""
+    def many(self, phases: Floats) -> NDArray[Any]:
+        """Return H at each of `phases`, shape (n, nnz); as float64 where it is known to be real."""
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return the derivative of `order` 1 or 2 at `phase`, from above (+1) or below (-1)."""
@@ -122,9 +122,9 @@ class TrigonometricPath:
         """Return H at `phase`."""
         return np.asarray(self.harmonics.at(phase))
 
-    def many(self, phases: Floats) -> Entries:
-        """Return H at each of `phases`, shape (n, nnz)."""
-        return np.asarray(self.harmonics.at(phases))
+    def many(self, phases: Floats) -> NDArray[Any]:
+        """Return H at each of `phases`, shape (n, nnz); as float64 if it is real."""
+        return self.harmonics.values(phases)
 
     def derivative(self, phase: float, side: Side = 1, order: int = 1) -> Entries:
         """Return the derivative of `order` at `phase`."""
@@ -180,9 +180,9 @@ class StraightPath:
         piece, inside = self._piece(phase, 1)
         return np.asarray(self.points[piece] + inside * self._slope(piece))
 
-    def many(self, phases: Floats) -> Entries:
-        """Return H at each of `phases`, shape (n, nnz)."""
-        return np.array([self.at(phase) for phase in phases.tolist()])
+    def many(self, phases: Floats) -> NDArray[Any]:
+        """Return H at each of `phases`, shape (n, nnz); as float64 if it is real."""
+        return _narrowed(np.array([self.at(phase) for phase in phases.tolist()]))
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return the slope on the given side of `phase`; second derivatives vanish."""
@@ -232,9 +232,9 @@ class SampledPath:
         """Return H at `phase`."""
         return np.asarray(self.sample(np.array([phase]))[0])
 
-    def many(self, phases: Floats) -> Entries:
-        """Return H at each of `phases`, shape (n, nnz)."""
-        return self.sample(phases)
+    def many(self, phases: Floats) -> NDArray[Any]:
+        """Return H at each of `phases`, shape (n, nnz); as float64 if it is real at all of them."""
+        return _narrowed(self.sample(phases))
 
     def derivative(self, phase: float, side: Side, order: int = 1) -> Entries:
         """Return a one-sided difference quotient."""
@@ -263,6 +263,11 @@ class SampledPath:
     @cached_property
     def _values(self) -> Entries:
         return np.asarray(self.sample(self.nodes))
+
+
+def _narrowed(values: Entries) -> NDArray[Any]:
+    """The same as real numbers, if they are."""
+    return values if values.imag.any() else np.asarray(values.real)
 
 
 def _quotients(values: Entries, steps: Floats, order: int) -> list[Entries]:
@@ -309,6 +314,8 @@ def _plain(cycle: Cycle) -> bool:
 
     A Hamiltonian is sampled at few phases; a pulse in the parameters between them must not be missed.
     """
+    if cycle.plain:
+        return True
     values = _parameters(cycle)
     steady = values - np.linspace(0.0, 1.0, FINE + 1)[:, None] * (values[-1] - values[0])
     size = np.abs(np.fft.rfft(steady[:-1], axis=0)) / FINE
