@@ -23,10 +23,11 @@ from threadpoolctl import threadpool_limits
 import scatterpump as sp
 
 LOOP_SAMPLES = 8
+ACROSS = 0.1
 
 
 def device(length: int, width: int, disorder: float) -> sp.Pump:
-    """A sliding wave on a square lattice, clean or with every site different."""
+    """A sliding wave on weakly coupled chains, gapped at the Fermi level; clean, or with every site different."""
     lattice, system = kwant.lattice.square(norbs=1), kwant.Builder()
     noise = disorder * (np.random.default_rng(3).random((length, width)) - 0.5)
 
@@ -35,13 +36,14 @@ def device(length: int, width: int, disorder: float) -> sp.Pump:
         return 1.5 * np.cos(2 * np.pi * (x % 3) / 3 - phi) + noise[x, y]
 
     system[(lattice(x, y) for x in range(length) for y in range(width))] = onsite
-    system[lattice.neighbors()] = -1.0
+    along, across = (kwant.builder.HoppingKind(step, lattice) for step in ((1, 0), (0, 1)))
+    system[along], system[across] = -1.0, -ACROSS
     for direction in (-1, 1):
         lead = kwant.Builder(kwant.TranslationalSymmetry((direction, 0)))
         lead[(lattice(0, y) for y in range(width))] = 0.0
-        lead[lattice.neighbors()] = -2.0
+        lead[along], lead[across] = -2.0, -ACROSS
         system.attach_lead(lead)
-    return sp.Pump(system.finalized(), sp.Cycle.angle("phi"), -1.2 if width == 1 else -1.4)
+    return sp.Pump(system.finalized(), sp.Cycle.angle("phi"), -1.2)
 
 
 def loop(pump: sp.Pump, phases: np.ndarray) -> np.ndarray:

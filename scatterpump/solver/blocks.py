@@ -105,20 +105,17 @@ class Blocks:
     place: Indices
     orbitals: int
 
-    @cached_property
-    def diagonal(self) -> tuple[Block, ...]:
+    def diagonal(self, n: int) -> Block:
         """A_nn."""
-        return self._blocks(0)
+        return self._block(0, n)
 
-    @cached_property
-    def lower(self) -> tuple[Block, ...]:
+    def lower(self, n: int) -> Block:
         """A_n+1,n."""
-        return self._blocks(1)
+        return self._block(1, n)
 
-    @cached_property
-    def upper(self) -> tuple[Block, ...]:
+    def upper(self, n: int) -> Block:
         """A_n,n+1."""
-        return self._blocks(-1)
+        return self._block(-1, n)
 
     @cached_property
     def fixed(self) -> tuple[Indices, Indices, Complex]:
@@ -158,23 +155,35 @@ class Blocks:
         near = np.minimum(level[rows], level[columns])
         return near, (level[rows] - level[columns] == step) & (near >= 0)
 
-    def _blocks(self, step: int) -> tuple[Block, ...]:
+    def _block(self, step: int, n: int) -> Block:
+        if (step, n) not in self._made:
+            self._made[step, n] = self._formed(step, n)
+        return self._made[step, n]
+
+    @cached_property
+    def _made(self) -> dict[tuple[int, int], Block]:
+        return {}
+
+    @cached_property
+    def _groups(self) -> dict[int, tuple[list[Indices], list[Indices]]]:
+        """For every step the fixed and the moving elements of each block."""
+        rows, columns, _ = self.fixed
+        count, found = len(self.layers.widths), {}
+        for step in (0, 1, -1):
+            near, fits = self._near(rows, columns, step)
+            quiet = _grouped(np.where(fits, near, count), count)
+            near, fits = self._near(self.rows, self.columns, step)
+            found[step] = quiet, _grouped(np.where(fits & (self.place >= 0), near, count), count)
+        return found
+
+    def _formed(self, step: int, n: int) -> Block:
         place, widths = self.layers.place, self.layers.widths
-        count = len(widths)
         rows, columns, values = self.fixed
-        near, fits = self._near(rows, columns, step)
-        quiet = _grouped(np.where(fits, near, count), count)
-        near, fits = self._near(self.rows, self.columns, step)
-        moving = _grouped(np.where(fits & (self.place >= 0), near, count), count)
-        found = []
-        for n in range(count - abs(step)):
-            tall, wide = (n + 1, n) if step == 1 else (n, n - step)
-            fixed = np.zeros((widths[tall], widths[wide]), dtype=complex)
-            some = quiet[n]
-            np.add.at(fixed, (place[rows[some]], place[columns[some]]), values[some])
-            mine = moving[n]
-            found.append(Block(_narrowed(fixed), self.place[mine], place[self.rows[mine]], place[self.columns[mine]]))
-        return tuple(found)
+        quiet, moving = (groups[n] for groups in self._groups[step])
+        tall, wide = (n + 1, n) if step == 1 else (n, n - step)
+        fixed = np.zeros((widths[tall], widths[wide]), dtype=complex)
+        np.add.at(fixed, (place[rows[quiet]], place[columns[quiet]]), values[quiet])
+        return Block(_narrowed(fixed), self.place[moving], place[self.rows[moving]], place[self.columns[moving]])
 
 
 def _narrowed(values: Complex) -> Numbers:

@@ -22,7 +22,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Eliminated", "eliminate", "eliminate_single"]
+__all__ = ["Eliminated", "EliminatedSingle", "backward", "eliminate", "eliminate_single"]
 
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Complex = NDArray[np.complex128]
@@ -38,18 +38,34 @@ class Eliminated:
 
     Attributes
     ----------
-    p, q : (n, w, w) complex array
-        D_0 = p q^-1.
-    amplitudes : (n, k, w) complex array or None
-        T_0; for blocks of one row still to be divided by q.
+    block : (n, w, w) array
+        D_0.
+    amplitudes : (n, k, w) array
+        T_0.
     growth : (n,) float array
-        Largest |D^-1| met; 1 where nothing was divided by.
+        Largest |D^-1| met.
     """
 
-    p: Complex
-    q: Complex
-    amplitudes: Complex | None
+    block: Numbers
+    amplitudes: Complex
     growth: NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class EliminatedSingle:
+    """What is left on the first block of one row.
+
+    Attributes
+    ----------
+    p, q : (n,) array
+        D_0 = p / q.
+    passed : (n,) complex array
+        T_0 q.
+    """
+
+    p: Numbers
+    q: Numbers
+    passed: Complex
 
 
 def eliminate_single(
@@ -60,7 +76,7 @@ def eliminate_single(
     *,
     real_below: int,
     amplitude: bool,
-) -> Eliminated:
+) -> EliminatedSingle:
     """Eliminate blocks of one row.
 
     Parameters
@@ -84,8 +100,7 @@ def eliminate_single(
         if n % RESCALE_EVERY == 0:
             p, q, factor = _rescaled(p, q, is_real=n < real_below)
             passed = passed * factor
-    p, q = p.astype(complex), q.astype(complex)
-    return Eliminated(p[:, None, None], q[:, None, None], passed[:, None, None] if amplitude else None, np.ones(count))
+    return EliminatedSingle(p, q, passed)
 
 
 def _rescaled(p: Numbers, q: Numbers, *, is_real: bool) -> tuple[Numbers, Numbers, Numbers]:
@@ -135,11 +150,20 @@ def eliminate(
             here = _real_if_negligible(here)
         inverse: Numbers = np.linalg.inv(here)
         growth = np.maximum(growth, _largest(inverse))
+        here, amplitudes = backward(diagonal[n], lower[n], upper[n], inverse, amplitudes)
         if amplitudes is not None and wanted is not None:
-            amplitudes = wanted[n] - _times(amplitudes, inverse) @ lower[n]
-        here = diagonal[n] - _sandwich(upper[n], inverse, lower[n])
-    one = np.broadcast_to(np.eye(here.shape[1], dtype=complex), here.shape)
-    return Eliminated(here.astype(complex), one, amplitudes, growth)
+            amplitudes = wanted[n] + amplitudes
+    if amplitudes is None:
+        amplitudes = np.zeros((len(here), 0, here.shape[1]), dtype=complex)
+    return Eliminated(here, amplitudes, growth)
+
+
+def backward(
+    block: Numbers, lower: Numbers, upper: Numbers, inverse: Numbers, rows: Numbers | None
+) -> tuple[Numbers, Any]:
+    """One step: A_nn - A_n,n+1 D^-1 A_n+1,n and -T D^-1 A_n+1,n, for T = `rows` if there are any."""
+    carried = None if rows is None else -_times(rows, inverse) @ lower
+    return np.asarray(block - _sandwich(upper, inverse, lower)), carried
 
 
 def _real_if_negligible(block: Numbers) -> Numbers:
@@ -155,9 +179,9 @@ def _largest(blocks: Numbers) -> NDArray[np.float64]:
     return np.asarray(np.abs(blocks.view(np.float64)).max(axis=(1, 2), initial=0.0))
 
 
-def _times(amplitudes: Complex, inverse: Numbers) -> Complex:
+def _times(amplitudes: Numbers, inverse: Numbers) -> Numbers:
     """Product of complex rows with a matrix that may be real, without making it complex."""
-    if np.iscomplexobj(inverse):
+    if np.iscomplexobj(inverse) or not np.iscomplexobj(amplitudes):
         return np.asarray(amplitudes @ inverse)
     rows = amplitudes.shape[1]
     both = np.concatenate([amplitudes.real, amplitudes.imag], axis=1) @ inverse

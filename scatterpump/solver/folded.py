@@ -122,7 +122,8 @@ def fold(pump: Pump) -> FoldedDevice:
     moves = np.zeros(size, dtype=bool)
     moves[rows[moving(path)]] = True
     structure = csr_matrix((np.ones(len(rows)), (rows, columns)), shape=(size, size))
-    alive, leads, widths = _eliminate(pump.fermi_level, structure, driven.matrix(0.0), leads, widths, moves)
+    hamiltonian = csr_matrix((driven.checked(path, 0.0), (rows, columns)), shape=(size, size))
+    alive, leads, widths = _eliminate(pump.fermi_level, structure, hamiltonian, leads, widths, moves)
     order = _order(structure, leads, alive, pump.probe)
     return _assemble(pump, path, rows, columns, leads, widths, order, driven.calls)
 

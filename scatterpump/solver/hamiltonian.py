@@ -8,7 +8,6 @@ phase by phase.
 
 from __future__ import annotations
 
-from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -24,6 +23,7 @@ Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 AGREES = 1e-12
+MATCHES = 1e-9  # of the largest element: far above what a fit may miss, far below any mistake
 SPOTS = 16
 
 
@@ -32,7 +32,7 @@ def driven_path(pump: Pump) -> tuple[DrivenHamiltonian, Path]:
 
     def find() -> tuple[DrivenHamiltonian, Path]:
         driven = DrivenHamiltonian(pump)
-        return driven, follow(driven.many, pump.cycle)
+        return driven, follow(driven.sample, pump.cycle).spread(driven.live, driven.still)
 
     found: tuple[DrivenHamiltonian, Path] = pump.once("path", find)
     return found
@@ -47,28 +47,50 @@ class DrivenHamiltonian:
         Number of every site's first orbital, with the total at the end.
     rows, columns : (nnz,) int array
         Places of the elements.
+    live : int array
+        The elements whose value functions take a parameter that the cycle sets.
+    still : (nnz,) complex array
+        The values of all others.
     calls : int
         Hamiltonians that kwant was asked for.
     """
 
     def __init__(self, pump: Pump) -> None:
-        self.pump, self.calls = pump, 0
-        self.offsets: Indices = _offsets(pump.finalized) if pump.finalized.site_ranges else self._built(0.0)[1]
-        self._pairs = _pairs(pump.finalized)
+        self.pump, self.calls, system = pump, 0, pump.finalized
+        self.offsets: Indices = _offsets(system) if system.site_ranges else self._built(0.0)[1]
+        self._pairs, self._values = _pairs(system), _values(system)
         self.rows, self.columns = _places(self._pairs, self.offsets)
+        self._starts = _starts(self._pairs, self.offsets)
         keys = self.rows * self.size + self.columns
         self._order = np.argsort(keys)
         self._keys = keys[self._order]
+        driven = set(pump.cycle.names)
+        moves = [names is not None and not driven.isdisjoint(names) for _, names in self._values]
+        self._driven = [place for place, moved in enumerate(moves) if moved]
+        self.live = np.flatnonzero(np.repeat(moves, np.diff([*self._starts, len(self.rows)])))
         self._arrays = True
+        self.still = self._undriven(np.flatnonzero(~np.array(moves, dtype=bool)))
 
     @property
     def size(self) -> int:
         """Number of orbitals."""
         return int(self.offsets[-1])
 
-    def matrix(self, phase: float) -> Any:
-        """Return H at `phase` as a sparse matrix, with failures told where they happened."""
-        return self._built(phase)[0].tocsr()
+    def checked(self, path: Path, phase: float) -> Complex:
+        """Return kwant's own elements at `phase`, after comparing them all with what `path` says.
+
+        Raises
+        ------
+        SolverError
+            If they differ: a value function gives one thing for arrays of parameters and another for single ones.
+        """
+        truth = self.at(phase)
+        if not np.abs(path.at(phase) - truth).max(initial=0.0) <= MATCHES * max(1e-300, np.abs(truth).max(initial=0.0)):
+            cause = ValueError(
+                "H is not what its values at other phases say; does a value function sum over its input?"
+            )
+            raise SolverError(phase, self.pump.parameters(phase), cause)
+        return truth
 
     def at(self, phase: float) -> Complex:
         """Return the elements at `phase`, shape (nnz,)."""
@@ -78,14 +100,14 @@ class DrivenHamiltonian:
         result[self._order[np.searchsorted(self._keys, keys)]] = found.data
         return result
 
-    def many(self, phases: Floats) -> Complex:
-        """Return the elements at each of `phases`, shape (n, nnz), one element's values next to each other."""
+    def sample(self, phases: Floats) -> Complex:
+        """Return the live elements at each of `phases`, shape (n, live), one element's values next to each other."""
         if self._arrays and len(phases) > 2:
             found = self._by_arrays(phases)
             if found is not None:
                 return found
             self._arrays = False
-        return np.array([self.at(float(phase)) for phase in phases]).reshape(len(phases), len(self.rows))
+        return np.array([self.at(float(phase))[self.live] for phase in phases]).reshape(len(phases), len(self.live))
 
     def _built(self, phase: float) -> tuple[Any, Indices]:
         parameters = self.pump.parameters(phase)
@@ -100,38 +122,78 @@ class DrivenHamiltonian:
             raise SolverError(phase, parameters, ValueError("the Hamiltonian has elements that are not finite"))
         return found, np.concatenate([[0], np.cumsum(count)])
 
+    def _undriven(self, places: Indices) -> Complex:
+        """Elements of all pairs that the cycle does not touch, in their places among all elements."""
+        parameters = self.pump.parameters(0.0)
+        try:
+            found = self._walked(places.tolist(), parameters, 1)[0]
+        except Exception:  # whatever is wrong with the value functions, kwant tells it with its place
+            return self.at(0.0)
+        if not np.isfinite(found).all():
+            return self.at(0.0)
+        still = np.zeros(len(self.rows), dtype=complex)
+        still[np.setdiff1d(np.arange(len(self.rows)), self.live, assume_unique=True)] = found
+        return still
+
     def _by_arrays(self, phases: Floats) -> Complex | None:
-        """Values from one call a value function, or None if that does not reproduce kwant's."""
-        system, places = self.pump.finalized, len(self.rows)
+        """Values from one call a value function, or None if that does not reproduce the function's own."""
         scalars = [self.pump.parameters(float(phase)) for phase in phases]
         try:
             with np.errstate(all="ignore"):
-                found = _walked(system, self._pairs, self.offsets, _stacked(scalars), len(phases), places)
+                found = self._walked(self._driven, _stacked(scalars), len(phases))
         except Exception:  # anything: the function was not written for arrays, and is asked phase by phase instead
             return None
         if not np.isfinite(found).all():  # asked phase by phase, the failure is told where it happens
             return None
-        spots = _spots(system)
         for place in (len(phases) // 2 + 1, len(phases) - 1):
-            if not self._agrees(found[place], spots, scalars[place]):
+            if not self._agrees(found[place], scalars[place]):
                 return None
         return found
 
-    def _agrees(self, found: Complex, spots: list[int], parameters: dict[str, Any]) -> bool:
-        """Whether value functions called for one phase give what was found."""
-        starts, values = self._starts, _values(self.pump.finalized)
-        for spot in spots:
-            block = _called(self.pump.finalized, self._pairs[spot], values[spot], parameters)
-            truth = np.asarray(block, dtype=complex).ravel()
-            difference = np.abs(found[starts[spot] : starts[spot] + truth.size] - truth).max()
-            if not difference <= AGREES * max(1e-300, np.abs(truth).max()):
-                return False
+    def _agrees(self, found: Complex, parameters: dict[str, Any]) -> bool:
+        """Whether value functions called for one phase give what was found, for some pairs of each function."""
+        calls: dict[Any, list[int]] = {}
+        for place in self._driven:
+            calls.setdefault(self._values[place][0], []).append(place)
+        ends = np.searchsorted(self.live, self._starts)
+        for places in calls.values():
+            for place in {places[i] for i in np.linspace(0, len(places) - 1, SPOTS).astype(int)}:
+                truth = np.asarray(self._called(place, parameters), dtype=complex).ravel()
+                difference = np.abs(found[ends[place] : ends[place] + truth.size] - truth).max()
+                if not difference <= AGREES * max(1e-300, np.abs(truth).max()):
+                    return False
         return True
 
-    @cached_property
-    def _starts(self) -> Indices:
-        """Where the block of every pair begins among the elements."""
-        return _starts(self._pairs, self.offsets)
+    def _called(self, place: int, parameters: dict[str, Any]) -> Any:
+        """Value of a pair: of a site (i, i) or a hopping (i, j)."""
+        value, names = self._values[place]
+        if names is None:
+            return value
+        (i, j), sites = self._pairs[place], self.pump.finalized.sites
+        caught = [parameters[name] for name in names]
+        return value(sites[i], *caught) if i == j else value(sites[i], sites[j], *caught)
+
+    def _walked(self, places: list[int], parameters: dict[str, Any], count: int) -> Complex:
+        """All elements of some pairs at all phases, shape (count, elements), stored element by element."""
+        orbitals, sizes = np.diff(self.offsets), np.diff([*self._starts, len(self.rows)])
+        starts = np.cumsum(sizes[places]) - sizes[places]
+        found = np.empty((int(sizes[places].sum()), count), dtype=complex)
+        single = bool((orbitals == 1).all())
+        for place, start in zip(places, starts.tolist(), strict=True):
+            value = self._called(place, parameters)
+            if single:
+                found[start] = value.reshape(-1) if isinstance(value, np.ndarray) else value
+                continue
+            i, j = self._pairs[place]
+            block = np.broadcast_to(value, (count, orbitals[i], orbitals[j]))
+            end = start + block[0].size
+            found[start:end] = block.reshape(count, -1).T
+            if i != j:
+                found[end : 2 * end - start] = block.conj().swapaxes(1, 2).reshape(count, -1).T
+        if single:
+            hops = starts[sizes[places] == 2]
+            found[hops + 1] = found[hops].conj()
+        return found.T
 
 
 def _offsets(system: Any) -> Indices:
@@ -139,17 +201,6 @@ def _offsets(system: Any) -> Indices:
     sites, orbitals = (np.array(column) for column in list(zip(*system.site_ranges, strict=True))[:2])
     count = np.repeat(orbitals[:-1], np.diff(sites))
     return np.asarray(np.concatenate([[0], np.cumsum(count)]), dtype=int)
-
-
-def _spots(system: Any) -> list[int]:
-    """For every value function some of the pairs it is called for: the first, the last, and others between."""
-    calls: dict[Any, list[int]] = {}
-    for place, (value, names) in enumerate(_values(system)):
-        if names is not None:
-            calls.setdefault(value, []).append(place)
-    return [
-        places[i] for places in calls.values() for i in np.unique(np.linspace(0, len(places) - 1, SPOTS).astype(int))
-    ]
 
 
 def _starts(pairs: list[tuple[int, int]], offsets: Indices) -> Indices:
@@ -206,43 +257,3 @@ def _values(system: Any) -> list[tuple[Any, Any]]:
     from kwant.builder import Other
 
     return [*system.onsites, *(pair for pair in system.hoppings if pair[0] is not Other)]
-
-
-def _called(system: Any, pair: tuple[int, int], call: tuple[Any, Any], parameters: dict[str, Any]) -> Any:
-    """Value of a site (i, i) or hopping (i, j)."""
-    value, names = call
-    if names is None:
-        return value
-    i, j = pair
-    caught = [parameters[name] for name in names]
-    sites = system.sites
-    return value(sites[i], *caught) if i == j else value(sites[i], sites[j], *caught)
-
-
-def _walked(
-    system: Any, pairs: list[tuple[int, int]], offsets: Indices, parameters: dict[str, Any], count: int, places: int
-) -> Complex:
-    """All elements at all phases, shape (count, places), stored element by element."""
-    orbitals, sites = np.diff(offsets), system.sites
-    found = np.empty((places, count), dtype=complex)
-    starts = _starts(pairs, offsets)
-    caught: dict[int, list[Any]] = {}
-    single = bool((orbitals == 1).all())
-    for (i, j), start, (value, names) in zip(pairs, starts.tolist(), _values(system), strict=True):
-        if names is not None:
-            if id(names) not in caught:
-                caught[id(names)] = [parameters[name] for name in names]
-            known = caught[id(names)]
-            value = value(sites[i], *known) if i == j else value(sites[i], sites[j], *known)
-        if single:
-            found[start] = value.reshape(-1) if isinstance(value, np.ndarray) else value
-            continue
-        block = np.broadcast_to(value, (count, orbitals[i], orbitals[j]))
-        end = start + block[0].size
-        found[start:end] = block.reshape(count, -1).T
-        if i != j:
-            found[end : 2 * end - start] = block.conj().swapaxes(1, 2).reshape(count, -1).T
-    if single:
-        hops = starts[len(sites) :]
-        found[hops + 1] = found[hops].conj()
-    return found.T

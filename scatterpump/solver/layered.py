@@ -1,22 +1,20 @@
-"""The fast engine: r(phi) and t(phi) for many phases from one batched elimination, layer by layer from the far end.
+"""The fast engine: r(phi) and t(phi) for many phases at once, layer by layer from the far end.
 
-D, the Schur complement of E - H and all other leads on the probe's interface, is matched with the probe's modes in
-unitary form,
+Three ways lead to the device as the probe sees it, a wave returned for each wave that enters:
 
-    U = -(1 - 2i V^+ (D + i V V^+)^-1 V),
-    s = -[U (i u_out - l_out) + (i u_out + l_out)]^-1 [U (i u_in - l_in) + (i u_in + l_in)],
+* a sweep over all layers (`elimination`), in chunks of phases;
+* where the device repeats a cell often, the cells are joined by doubling (`doubling`), and only the ends are swept;
+* phases at which a sweep lost too many digits are done again by a pivoted sparse factorisation (`pivoted`).
 
-which has no pole for a passive device: |U| <= 1 whatever levels the device has.  r is the part of s that belongs to
-open modes.
-
-Phases whose elimination lost too many digits are done again by a pivoted sparse factorisation of the same matrix.
-Memory: a chunk of phases needs 16 bytes times (elements of H + 4 times the sum of squared layer widths / number of
-layers) for each phase; chunks are cut to 128 MiB.
+Memory: a chunk of n phases needs about 16 n (E + 6 w^2) bytes, for E elements of H that move and layers of w
+unknowns; n is chosen so that this is 128 MiB at most, and so that the blocks of one layer stay in the processor's cache.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
+from math import log2
 from typing import Any
 
 import numpy as np
@@ -24,11 +22,15 @@ from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
 from scatterpump.solver.blocks import Blocks
-from scatterpump.solver.elimination import Eliminated, eliminate, eliminate_single
+from scatterpump.solver.cells import Run, layer_table, longest_run
+from scatterpump.solver.doubling import Load, behind, closed_by, closed_by_pair, ports, repeated, segment
+from scatterpump.solver.elimination import eliminate, eliminate_single
 from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.solver.layers import Border, Layers, layer, lead_border
+from scatterpump.solver.matching import match
 from scatterpump.solver.modes import with_modes
-from scatterpump.solver.path import Path, moving
+from scatterpump.solver.path import Path, StraightPath, TrigonometricPath, moving
+from scatterpump.solver.pivoted import factorised
 from scatterpump.solver.trace import ReflectionTrace
 
 __all__ = ["Problem", "prepare", "solve", "solve_prepared"]
@@ -36,17 +38,27 @@ __all__ = ["Problem", "prepare", "solve", "solve_prepared"]
 Complex = NDArray[np.complex128]
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Floats = NDArray[np.float64]
-Indices = NDArray[np.int64]
 MEMORY = 128 * 2**20
+CACHE = 2**20
 LOST_DIGITS = 1e5
 WIDE = 120
+REAL, ENDS, JOIN = 0.6, 5.0, 5.0  # measured for layers of 10 to 100
 
 
 @dataclass(frozen=True, eq=False)
 class Problem:
-    """Everything about a pump that does not depend on phi, and its path."""
+    """Everything about a pump that does not depend on phi, and its path.
 
-    path: Path  # of the elements of H that move
+    Attributes
+    ----------
+    path : Path
+        Of the elements of H that move.
+    layers : Layers
+    probe : Border
+    blocks : Blocks
+    """
+
+    path: Path
     layers: Layers
     probe: Border
     blocks: Blocks
@@ -62,14 +74,44 @@ class Problem:
         return int(self.layers.widths.max()) > WIDE
 
     @property
-    def wanted(self) -> tuple[Complex, ...]:
-        """For every layer, which of its unknowns are open outgoing modes, shape (k, w)."""
+    def chunk(self) -> int:
+        """Phases to be solved together."""
+        widest = float(self.layers.widths.max()) ** 2
+        elements = self.blocks.place.max(initial=0) + 1
+        return max(1, min(MEMORY // int(16 * (elements + 6 * widest)), max(16, int(CACHE / (16 * widest)))))
+
+    @cached_property
+    def run(self) -> Run | None:
+        """The longest run of equal cells, if the path is known so well that equal cells can be told."""
+        match self.path:
+            case TrigonometricPath():
+                known = self.path.harmonics.coefficients
+            case StraightPath():
+                known = self.path.points
+            case _:
+                return None
+        return longest_run(layer_table(self.blocks, known))
+
+    def reaches_beyond(self, run: Run) -> bool:
+        """Whether every lead but the probe is attached beyond the run, up to its last cell."""
+        return bool((self.layers.level[self.layers.outgoing] >= run.first + run.length * (run.repeats - 1)).all())
+
+    @property
+    def doubling_pays(self) -> bool:
+        """Whether joining cells is expected to be cheaper than a sweep, in units of one layer's inversion."""
+        if self.run is None or self.single:
+            return False
+        sweep = self.run.repeats * self.run.length * (REAL if self.blocks.real_below else 1.0)
+        return sweep > ENDS * self.run.length + JOIN * log2(self.run.repeats)
+
+    def wanted(self, first: int) -> list[Complex]:
+        """For the layers from `first` on, which of their unknowns are open outgoing modes, shapes (k, w)."""
         layers = self.layers
-        found = [np.zeros((len(layers.outgoing), width), dtype=complex) for width in layers.widths]
+        found = [np.zeros((len(layers.outgoing), width), dtype=complex) for width in layers.widths[first:]]
         for k, unknown in enumerate(layers.outgoing):
-            if layers.level[unknown] >= 0:
-                found[layers.level[unknown]][k, layers.place[unknown]] = 1.0
-        return tuple(found)
+            if layers.level[unknown] >= first:
+                found[layers.level[unknown] - first][k, layers.place[unknown]] = 1.0
+        return found
 
 
 def solve(pump: Pump, phases: Floats, *, transmission: bool = True) -> ReflectionTrace:
@@ -79,8 +121,9 @@ def solve(pump: Pump, phases: Floats, *, transmission: bool = True) -> Reflectio
 
 def solve_prepared(problem: Problem, phases: Floats, *, transmission: bool) -> ReflectionTrace:
     """Solve a prepared problem at each of `phases`."""
-    chunk = max(1, MEMORY // _bytes_a_phase(problem))
-    parts = [_solve_chunk(problem, phases[i : i + chunk], transmission) for i in range(0, len(phases), chunk)]
+    parts = [
+        _solve_chunk(problem, phases[i : i + problem.chunk], transmission) for i in range(0, len(phases), problem.chunk)
+    ]
     reflection, passed = (np.concatenate(found) for found in zip(*parts, strict=True))
     return ReflectionTrace(phases, reflection, passed, len(phases), "layered")
 
@@ -103,82 +146,68 @@ def prepare(pump: Pump) -> Problem:
     return Problem(path.only(np.flatnonzero(moves)), layers, probe, blocks)
 
 
-def _bytes_a_phase(problem: Problem) -> int:
-    widths = problem.layers.widths.astype(float)
-    return 16 * int(2 * problem.blocks.place.max(initial=0) + 4 * (widths**2).max() + (widths**2).sum())
-
-
 def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[Complex, Complex]:
-    entries = problem.path.many(phases)
-    wanted = len(problem.layers.outgoing) if transmission else 0
-    m = problem.probe.channels
-    r, t = (np.zeros((len(phases), k, m), dtype=complex) for k in (m, wanted))
+    elements = problem.path.many(phases)
+    rows = len(problem.layers.outgoing) if transmission else 0
+    r, t = (np.zeros((len(phases), k, problem.probe.channels), dtype=complex) for k in (problem.probe.channels, rows))
     with np.errstate(all="ignore"):
         try:
-            found = _eliminated(problem, entries, wanted > 0)
-            r, t = _matched(problem.probe, found, single=problem.single)
-            healthy = (found.growth < LOST_DIGITS) & np.isfinite(r).all(axis=(1, 2)) & np.isfinite(t).all(axis=(1, 2))
+            device, growth = _swept(problem, elements, rows > 0)
+            r, t = match(problem.probe, device)
+            healthy = (growth < LOST_DIGITS) & np.isfinite(r).all(axis=(1, 2)) & np.isfinite(t).all(axis=(1, 2))
         except np.linalg.LinAlgError:
             healthy = np.zeros(len(phases), dtype=bool)
+    wanted = np.hstack(problem.wanted(0))[:rows]
     for i in np.flatnonzero(~healthy):
-        r[i], t[i] = _pivoted(problem, entries[[i]], wanted > 0)
+        r[[i]], t[[i]] = match(problem.probe, factorised(problem.blocks, elements[[i]], problem.probe.hop, wanted))
     return r, t
 
 
-def _eliminated(problem: Problem, entries: Numbers, amplitude: bool) -> Eliminated:
-    blocks, count = problem.blocks, len(entries)
-    real_below = 0 if np.iscomplexobj(entries) else blocks.real_below
+def _swept(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, Floats]:
+    """The device as the probe's load, by a sweep over all layers, and the growth met."""
+    blocks, count = problem.blocks, len(elements)
     if problem.single:
-        diagonal, lower, upper = (blocks.band(step, entries) for step in (0, 1, -1))
-        return eliminate_single(diagonal, lower, upper, count, real_below=real_below, amplitude=amplitude)
-    here = [block.at(entries) for block in blocks.diagonal]
-    here = [np.broadcast_to(block, (count, *block.shape[1:])) for block in here]
-    down, up = ([block.at(entries) for block in part] for part in (blocks.lower, blocks.upper))
-    return eliminate(here, down, up, problem.wanted if amplitude else None, real_below=real_below)
+        real_below = 0 if np.iscomplexobj(elements) else blocks.real_below
+        diagonal, lower, upper = (blocks.band(step, elements) for step in (0, 1, -1))
+        found = eliminate_single(diagonal, lower, upper, count, real_below=real_below, amplitude=amplitude)
+        return closed_by_pair(found, problem.probe.hop, amplitude), np.ones(count)
+    if problem.run and problem.doubling_pays and (problem.reaches_beyond(problem.run) or not amplitude):
+        return _joined(problem, elements, problem.run, problem.run.repeats - 2, amplitude)
+    here, amplitudes, growth = _eliminated(problem, elements, 0, amplitude)
+    return closed_by(here, problem.probe.hop[None], amplitudes), growth
 
 
-def _matched(probe: Border, found: Eliminated, *, single: bool) -> tuple[Complex, Complex]:
-    """Match what is left on the interface with the probe's modes."""
-    hop, back = probe.hop, probe.hop.conj().T
-    inverse = found.q @ np.linalg.inv(found.p + 1j * (hop @ back) @ found.q)
-    amplitudes, driving = _amplitudes(probe, back @ inverse @ hop)
-    reflection = amplitudes[:, : probe.channels]
-    if found.amplitudes is None:
-        return reflection, np.zeros((len(reflection), 0, probe.channels), dtype=complex)
-    state = inverse @ hop @ driving
-    if single:
-        state = state / found.q
-    return reflection, np.asarray(found.amplitudes @ state, dtype=complex)
+def _eliminated(problem: Problem, elements: Numbers, first: int, amplitude: bool) -> tuple[Numbers, Complex, Floats]:
+    """D and T of layer `first`, with all beyond it eliminated, and the growth met."""
+    blocks, count, last = problem.blocks, len(elements), len(problem.layers.widths) - 1
+    diagonal, lower, upper = _between(problem, elements, first, last)
+    found = eliminate(
+        [np.broadcast_to(block, (count, *block.shape[1:])) for block in diagonal],
+        lower,
+        upper,
+        problem.wanted(first) if amplitude else None,
+        real_below=0 if np.iscomplexobj(elements) else blocks.real_below - first,
+    )
+    return found.block, found.amplitudes, found.growth
 
 
-def _amplitudes(probe: Border, response: Complex) -> tuple[Complex, Complex]:
-    """Outgoing amplitudes s, and what psi = (D + i V V^+)^-1 V x is to be formed with; `response` is V^+ (...)^-1 V."""
-    kernel = 2j * response - np.eye(response.shape[-1])
-    outward = kernel @ (1j * probe.out - probe.out_bare) + (1j * probe.out + probe.out_bare)
-    inward = kernel @ (1j * probe.into - probe.into_bare) + (1j * probe.into + probe.into_bare)
-    amplitudes: Complex = np.asarray(-np.linalg.solve(outward, inward), dtype=complex)
-    ahead = probe.into + probe.out @ amplitudes
-    behind = probe.into_bare + probe.out_bare @ amplitudes
-    return amplitudes, np.asarray(ahead + 1j * behind)
+def _between(
+    problem: Problem, elements: Numbers, first: int, last: int
+) -> tuple[list[Numbers], list[Numbers], list[Numbers]]:
+    """Blocks of the layers `first` to `last`, and those that couple them."""
+    blocks = problem.blocks
+    return (
+        [blocks.diagonal(n).at(elements) for n in range(first, last + 1)],
+        [blocks.lower(n).at(elements) for n in range(first, last)],
+        [blocks.upper(n).at(elements) for n in range(first, last)],
+    )
 
 
-def _pivoted(problem: Problem, entries: Numbers, amplitude: bool) -> tuple[Complex, Complex]:
-    """The same for one phase, by a pivoted sparse factorisation of all layers at once."""
-    from scipy.sparse import bmat, csc_matrix
-    from scipy.sparse.linalg import splu
-
-    probe, widths = problem.probe, problem.layers.widths
-    steps = len(widths)
-    grid: list[list[Any]] = [[None] * steps for _ in range(steps)]
-    for n in range(steps):
-        grid[n][n] = csc_matrix(problem.blocks.diagonal[n].at(entries)[0])
-    for n in range(steps - 1):
-        grid[n + 1][n] = csc_matrix(problem.blocks.lower[n].at(entries)[0])
-        grid[n][n + 1] = csc_matrix(problem.blocks.upper[n].at(entries)[0])
-    grid[0][0] = grid[0][0] + csc_matrix(1j * probe.hop @ probe.hop.conj().T)
-    right = np.zeros((int(widths.sum()), probe.hop.shape[1]), dtype=complex)
-    right[: widths[0]] = probe.hop
-    inverse = splu(bmat(grid, format="csc")).solve(right)
-    amplitudes, driving = _amplitudes(probe, probe.hop.conj().T @ inverse[: widths[0]])
-    picked = np.hstack(problem.wanted) if amplitude else np.zeros((0, len(inverse)))
-    return amplitudes[: probe.channels], picked @ inverse @ driving
+def _joined(problem: Problem, elements: Numbers, run: Run, count: int, amplitude: bool) -> tuple[Load, Floats]:
+    """The device as the probe's load with `count` of its cells between the first one and the last one."""
+    head, tail = run.first + run.length, run.first + run.length * (run.repeats - 1)
+    near, far = ports(-problem.blocks.upper(tail - 1).at(elements))
+    here, amplitudes, growth = _eliminated(problem, elements, tail, amplitude)
+    cell = segment(*_between(problem, elements, head, head + run.length - 1), near, far)
+    start = segment(*_between(problem, elements, 0, head - 1), problem.probe.hop[None], far)
+    return behind(start, repeated(cell, count, closed_by(here, near, amplitudes))), growth

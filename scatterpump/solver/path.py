@@ -64,6 +64,9 @@ class Path(Protocol):
     def only(self, chosen: NDArray[np.int64]) -> Path:
         """Return the path of the chosen elements alone."""
 
+    def spread(self, places: NDArray[np.int64], still: Entries) -> Path:
+        """Return the path of more elements: those at `places` are these, all others stay what `still` says."""
+
 
 @dataclass(frozen=True, eq=False)
 class Slopes:
@@ -166,6 +169,13 @@ class TrigonometricPath:
         """Return the path of the chosen elements alone."""
         return TrigonometricPath(Harmonics(self.harmonics.coefficients[:, chosen]))
 
+    def spread(self, places: NDArray[np.int64], still: Entries) -> TrigonometricPath:
+        """Return the path of more elements: those at `places` are these, all others stay what `still` says."""
+        every = np.zeros((2 * self.harmonics.degree + 1, len(still)), dtype=complex)
+        every[self.harmonics.degree] = still
+        every[:, places] = self.harmonics.coefficients
+        return TrigonometricPath(Harmonics(every))
+
 
 @dataclass(frozen=True, eq=False)
 class StraightPath:
@@ -204,6 +214,10 @@ class StraightPath:
     def only(self, chosen: NDArray[np.int64]) -> StraightPath:
         """Return the path of the chosen elements alone."""
         return StraightPath(self.corners, self.points[:, chosen])
+
+    def spread(self, places: NDArray[np.int64], still: Entries) -> StraightPath:
+        """Return the path of more elements: those at `places` are these, all others stay what `still` says."""
+        return StraightPath(self.corners, _spread(self.points, places, still))
 
     def _piece(self, phase: float, side: Side) -> tuple[int, float]:
         place = phase % TURN
@@ -260,9 +274,20 @@ class SampledPath:
         """Return the path of the chosen elements alone."""
         return SampledPath(lambda phases: self.sample(phases)[:, chosen], self.corners, self.nodes)
 
+    def spread(self, places: NDArray[np.int64], still: Entries) -> SampledPath:
+        """Return the path of more elements: those at `places` are these, all others stay what `still` says."""
+        return SampledPath(lambda phases: _spread(self.sample(phases), places, still), self.corners, self.nodes)
+
     @cached_property
     def _values(self) -> Entries:
         return np.asarray(self.sample(self.nodes))
+
+
+def _spread(values: Entries, places: NDArray[np.int64], still: Entries) -> Entries:
+    """Return `still` for each row of `values`, with these at `places`."""
+    every: Entries = np.repeat(still[None], len(values), axis=0)
+    every[:, places] = values
+    return every
 
 
 def _narrowed(values: Entries) -> NDArray[Any]:
