@@ -100,13 +100,13 @@ RICE_MELE_LOOPS = {
 }
 
 
-def absolute_reflection(pump: Pump, phases: Any) -> NDArray[np.complex128]:
+def absolute_reflection(pump: Pump, phases: Any, *, endless: bool = False) -> NDArray[np.complex128]:
     """Return r of a one-channel probe, referred to the last lead-like site before the device, shape (n,).
 
     The solver's r is free by the phases of its lead modes; their amplitudes at the interface take that freedom away.
     """
     out, into = _mode_amplitudes(pump, pump.probe)
-    return reflect(pump, phases).reflection[:, 0, 0] * out / into
+    return reflect(pump, phases, endless=endless).reflection[:, 0, 0] * out / into
 
 
 def _mode_amplitudes(pump: Pump, lead: int) -> tuple[complex, complex]:

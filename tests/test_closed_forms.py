@@ -89,7 +89,9 @@ DIMERS = (
 def test_reflection_of_the_dimerised_chain(dimer: Dimer) -> None:
     phases = np.linspace(0, 2 * pi, 41)
     # derived: surface Green function of the half-infinite chain
-    np.testing.assert_allclose(absolute_reflection(dimer.pump(), phases), dimer.reflection(phases), rtol=0, atol=EXACT)
+    for endless in (False, True):
+        found = absolute_reflection(dimer.pump(), phases, endless=endless)
+        np.testing.assert_allclose(found, dimer.reflection(phases), rtol=0, atol=EXACT)
 
 
 def test_reflection_of_the_dimerised_chain_by_value() -> None:
@@ -133,9 +135,10 @@ def cosine_reflection(gap: HarperGap, phase: float, hopping: float = 2.0, contac
 @pytest.mark.parametrize("gap", HARPER_GAPS, ids=str)
 def test_reflection_of_the_sliding_cosine(gap: HarperGap) -> None:
     phases = np.linspace(0, 2 * pi, 18)[:-1]
-    found = absolute_reflection(harper(gap, sites=20 * gap.q), phases)
-    # transfer matrices: common practice
-    np.testing.assert_allclose(found, [cosine_reflection(gap, phase) for phase in phases], rtol=0, atol=EXACT)
+    expected = [cosine_reflection(gap, phase) for phase in phases]  # transfer matrices: common practice
+    for cells, endless in ((20, False), (4, True)):
+        found = absolute_reflection(harper(gap, sites=cells * gap.q), phases, endless=endless)
+        np.testing.assert_allclose(found, expected, rtol=0, atol=EXACT)
 
 
 @pytest.mark.parametrize(("index", "expected"), [(0, 0.965829224 - 0.259179301j), (7, 0.9869742982 + 0.160878012j)])

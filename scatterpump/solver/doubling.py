@@ -125,7 +125,7 @@ def ports(hopping: Numbers) -> tuple[Numbers, Numbers]:
 
 def closed_by(block: Numbers, near: Numbers, amplitudes: Complex) -> Load:
     """What lies beyond a port R = `near` on a layer whose Schur complement is D = `block`, with T = `amplitudes`."""
-    reached = np.linalg.solve(block + 1j * near @ _adjoint(near), near + 0j)
+    reached: Numbers = np.linalg.solve(block + 1j * near @ _adjoint(near), near + 0j)
     return Load(2j * _adjoint(near) @ reached - np.eye(near.shape[-1]), 1j * amplitudes @ reached)
 
 
@@ -133,9 +133,9 @@ def closed_by_pair(found: EliminatedSingle, near: Complex, amplitude: bool) -> L
     """The same for a layer of one unknown, from the pair D = p/q, without dividing by q."""
     kept = found.passed if amplitude else np.zeros((0, len(found.p)))
     total = found.p + 1j * (near @ _adjoint(near)).item() * found.q
-    response = (found.q / total)[:, None, None].astype(complex)
+    response: Complex = (found.q / total)[:, None, None].astype(complex)
     return Load(
-        2j * _adjoint(near) * response * near - np.eye(near.shape[1]),
+        np.asarray(2j * _adjoint(near) * response * near - np.eye(near.shape[1]), dtype=complex),
         np.asarray(np.moveaxis(np.atleast_2d(1j * kept / total), 0, -1)[..., None] * near),
     )
 

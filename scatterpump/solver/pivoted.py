@@ -1,4 +1,4 @@
-"""One phase by a pivoted sparse factorisation of all layers at once: where an elimination without pivots lost digits."""
+"""One phase by a pivoted sparse factorisation of all layers at once, where a sweep without pivots lost digits."""
 
 from __future__ import annotations
 

@@ -1,0 +1,123 @@
+"""A pump made ready for the layered engine: all that does not depend on phi, and the path of what does."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from math import log2
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterpump.pump import Pump
+from scatterpump.solver.blocks import Blocks
+from scatterpump.solver.cells import Run, layer_table, longest_run
+from scatterpump.solver.hamiltonian import driven_path
+from scatterpump.solver.layers import Border, Layers, layer, lead_border
+from scatterpump.solver.modes import with_modes
+from scatterpump.solver.path import Path, StraightPath, TrigonometricPath, moving
+
+__all__ = ["Problem", "assemble", "borders", "prepare"]
+
+Complex = NDArray[np.complex128]
+MEMORY = 128 * 2**20
+CACHE = 2**20
+WIDE = 120
+REAL, ENDS, JOIN = 0.6, 5.0, 5.0  # measured for layers of 10 to 100
+
+
+@dataclass(frozen=True, eq=False)
+class Problem:
+    """Everything about a pump that does not depend on phi, and its path.
+
+    Attributes
+    ----------
+    path : Path
+        Of the elements of H that move.
+    layers : Layers
+    probe : Border
+    blocks : Blocks
+    """
+
+    path: Path
+    layers: Layers
+    probe: Border
+    blocks: Blocks
+
+    @property
+    def single(self) -> bool:
+        """Whether every layer is one unknown."""
+        return bool((self.layers.widths == 1).all())
+
+    @property
+    def is_wide(self) -> bool:
+        """Whether the layers are so wide that a sparse factorisation is expected to be cheaper."""
+        return int(self.layers.widths.max()) > WIDE
+
+    @property
+    def chunk(self) -> int:
+        """Phases to be solved together."""
+        widest = float(self.layers.widths.max()) ** 2
+        elements = self.blocks.place.max(initial=0) + 1
+        return max(1, min(MEMORY // int(16 * (elements + 6 * widest)), max(16, int(CACHE / (16 * widest)))))
+
+    @cached_property
+    def run(self) -> Run | None:
+        """The longest run of equal cells, if the path is known so well that equal cells can be told."""
+        match self.path:
+            case TrigonometricPath():
+                known = self.path.harmonics.coefficients
+            case StraightPath():
+                known = self.path.points
+            case _:
+                return None
+        return longest_run(layer_table(self.blocks, known))
+
+    def reaches_beyond(self, run: Run) -> bool:
+        """Whether every lead but the probe is attached beyond the run, up to its last cell."""
+        return bool((self.layers.level[self.layers.outgoing] >= run.first + run.length * (run.repeats - 1)).all())
+
+    @property
+    def doubling_pays(self) -> bool:
+        """Whether joining cells is expected to be cheaper than a sweep, in units of one layer's inversion."""
+        if self.run is None or self.single:
+            return False
+        sweep = self.run.repeats * self.run.length * (REAL if self.blocks.real_below else 1.0)
+        return sweep > ENDS * self.run.length + JOIN * log2(self.run.repeats)
+
+    def wanted(self, first: int) -> list[Complex]:
+        """For the layers from `first` on, which of their unknowns are open outgoing modes, shapes (k, w)."""
+        layers = self.layers
+        found = [np.zeros((len(layers.outgoing), width), dtype=complex) for width in layers.widths[first:]]
+        for k, unknown in enumerate(layers.outgoing):
+            if layers.level[unknown] >= first:
+                found[layers.level[unknown] - first][k, layers.place[unknown]] = 1.0
+        return found
+
+
+def prepare(pump: Pump) -> Problem:
+    """Sort a pump into layers, and find its path, modes and blocks."""
+    probe, others = borders(pump)
+    return assemble(pump, probe, layer(driven_path(pump)[0], probe, others))
+
+
+def borders(pump: Pump) -> tuple[Border, list[Border]]:
+    """Return the borders of the probe and of all other leads that have any, with their modes at the Fermi level."""
+    system, (driven, _) = with_modes(pump), driven_path(pump)
+    found = [
+        lead_border(lead, interface, driven.offsets, pump.fermi_level)
+        for lead, interface in zip(system.leads, system.lead_interfaces, strict=True)
+    ]
+    probe = found[pump.probe]
+    assert probe is not None  # with_modes has refused a closed probe
+    return probe, [border for i, border in enumerate(found) if i != pump.probe and border is not None]
+
+
+def assemble(pump: Pump, probe: Border, layers: Layers) -> Problem:
+    """Put the blocks between `layers` together."""
+    driven, path = driven_path(pump)
+    moves = moving(path) if path.exact else np.ones(len(driven.rows), dtype=bool)
+    still = np.where(moves, 0.0, path.at(0.0))
+    place = np.where(moves, np.cumsum(moves) - 1, -1)
+    blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, still, place, driven.size)
+    return Problem(path.only(np.flatnonzero(moves)), layers, probe, blocks)
