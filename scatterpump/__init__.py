@@ -30,7 +30,7 @@ from scatterpump.errors import (
     SolverError,
 )
 from scatterpump.pump import Pump
-from scatterpump.solver.reflect import reflect
+from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
 from scatterpump.winding.certificate import certify
@@ -63,6 +63,7 @@ __all__ = [
     "judge",
     "load_device",
     "reflect",
+    "reflect_grid",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

@@ -24,7 +24,9 @@ def solve(pump: Pump, phases: NDArray[np.float64], *, transmission: bool = True)
     reflection = np.array([matrix.submatrix(pump.probe, pump.probe) for matrix in found])
     passed = [np.vstack([matrix.submatrix(lead, pump.probe) for lead in others]) for matrix in found if others]
     none = np.zeros((len(found), 0, reflection.shape[2]), dtype=complex)
-    return ReflectionTrace(phases, reflection, np.array(passed) if others else none, len(found), "direct")
+    return ReflectionTrace(
+        phases, reflection, np.array(passed) if others else none, len(found), "direct", pump.fermi_level
+    )
 
 
 def scattering_matrix(pump: Pump, phase: float) -> NDArray[np.complex128]:

@@ -97,7 +97,7 @@ def _in_chunks(
 ) -> ReflectionTrace:
     parts = [solve_chunk(phases[i : i + problem.chunk]) for i in range(0, len(phases), problem.chunk)]
     reflection, passed = (np.concatenate(found) for found in zip(*parts, strict=True))
-    return ReflectionTrace(phases, reflection, passed, len(phases), "layered")
+    return ReflectionTrace(phases, reflection, passed, len(phases), "layered", problem.energy)
 
 
 def solve_elements(problem: Problem, elements: Numbers, *, transmission: bool) -> tuple[Complex, Complex]:
@@ -113,7 +113,9 @@ def solve_elements(problem: Problem, elements: Numbers, *, transmission: bool) -
             healthy = np.zeros(len(elements), dtype=bool)
     wanted = np.hstack(problem.wanted(0))[:rows]
     for i in np.flatnonzero(~healthy):
-        r[[i]], t[[i]] = match(problem.probe, factorised(problem.blocks, elements[[i]], problem.probe.hop, wanted))
+        r[[i]], t[[i]] = match(
+            problem.probe.lane(int(i)), factorised(problem.blocks, elements[[i]], problem.probe.hop, wanted)
+        )
     return r, t
 
 

@@ -11,7 +11,7 @@ first layer is the probe's interface, in the order of the probe's own unknowns.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
 
-__all__ = ["Border", "Layers", "layer", "lead_border"]
+__all__ = ["Border", "Layers", "bordered", "layer", "lead_border"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
@@ -40,6 +40,8 @@ class Border:
         u_in and l_in.
     channels : int
         Number m of open modes.
+
+    All but `orbitals` and `hop` may have a leading axis: one set of modes for each of n energies.
     """
 
     orbitals: Indices
@@ -49,6 +51,20 @@ class Border:
     into: Complex
     into_bare: Complex
     channels: int
+
+    def lane(self, i: int) -> Border:
+        """Return the border with the modes of one energy."""
+        if self.out.ndim == 2:
+            return self
+        return replace(self, out=self.out[i], out_bare=self.out_bare[i], into=self.into[i], into_bare=self.into_bare[i])
+
+    def matches(self, other: Border) -> bool:
+        """Whether another energy's border has as many modes of each kind, behind the same hopping."""
+        return (
+            self.channels == other.channels
+            and self.out.shape == other.out.shape
+            and np.array_equal(self.hop, other.hop)
+        )
 
 
 def lead_border(lead: Any, interface: Any, offsets: Indices, energy: float) -> Border | None:
@@ -98,7 +114,7 @@ class Layers:
 
 def layer(driven: DrivenHamiltonian, probe: Border, others: list[Border]) -> Layers:
     """Sort orbitals and mode amplitudes into layers, beginning at the probe's interface."""
-    rows, columns, values, outgoing, size = _bordered(driven.size, others)
+    rows, columns, values, outgoing, size = bordered(driven.size, others)
     level = _distances(
         np.concatenate([driven.rows, rows]), np.concatenate([driven.columns, columns]), size, probe.orbitals
     )
@@ -111,7 +127,7 @@ def layer(driven: DrivenHamiltonian, probe: Border, others: list[Border]) -> Lay
     return Layers(level, place, widths, rows, columns, values, outgoing)
 
 
-def _bordered(size: int, others: list[Border]) -> tuple[Indices, Indices, Complex, Indices, int]:
+def bordered(size: int, others: list[Border]) -> tuple[Indices, Indices, Complex, Indices, int]:
     """Elements of all borders, the unknowns that are open outgoing modes, and the number of unknowns."""
     rows, columns, values, outgoing = ([np.zeros(0, dtype=int)] for _ in range(4))
     for border in others:

@@ -37,12 +37,17 @@ class Problem:
     layers : Layers
     probe : Border
     blocks : Blocks
+    energy : float
+    known : (s, elements) complex array or None
+        What describes the moving elements along the whole cycle, if so little does.
     """
 
     path: Path
     layers: Layers
     probe: Border
     blocks: Blocks
+    energy: float
+    known: Complex | None
 
     @property
     def single(self) -> bool:
@@ -64,14 +69,7 @@ class Problem:
     @cached_property
     def run(self) -> Run | None:
         """The longest run of equal cells, if the path is known so well that equal cells can be told."""
-        match self.path:
-            case TrigonometricPath():
-                known = self.path.harmonics.coefficients
-            case StraightPath():
-                known = self.path.points
-            case _:
-                return None
-        return longest_run(layer_table(self.blocks, known))
+        return None if self.known is None else longest_run(layer_table(self.blocks, self.known))
 
     def reaches_beyond(self, run: Run) -> bool:
         """Whether every lead but the probe is attached beyond the run, up to its last cell."""
@@ -120,4 +118,16 @@ def assemble(pump: Pump, probe: Border, layers: Layers) -> Problem:
     still = np.where(moves, 0.0, path.at(0.0))
     place = np.where(moves, np.cumsum(moves) - 1, -1)
     blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, still, place, driven.size)
-    return Problem(path.only(np.flatnonzero(moves)), layers, probe, blocks)
+    own = path.only(np.flatnonzero(moves))
+    return Problem(own, layers, probe, blocks, pump.fermi_level, _known(own))
+
+
+def _known(path: Path) -> Complex | None:
+    """Numbers that say all about a path: its Fourier coefficients, or its corners."""
+    match path:
+        case TrigonometricPath():
+            return path.harmonics.coefficients
+        case StraightPath():
+            return path.points
+        case _:
+            return None

@@ -5,13 +5,13 @@ from __future__ import annotations
 from typing import Literal
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 from scatterpump.solver.trace import ReflectionTrace
 
-__all__ = ["Engine", "reflect"]
+__all__ = ["Engine", "reflect", "reflect_grid"]
 
 Engine = Literal["auto", "layered", "direct"]
 ENGINES = ("auto", "layered", "direct")
@@ -63,9 +63,7 @@ def reflect(
     """
     from scatterpump.solver import direct, layered, problem
 
-    points = np.atleast_1d(np.asarray(phases, dtype=float))
-    if points.ndim != 1 or points.size == 0 or not np.isfinite(points).all():
-        raise InputError("the phases are not a list of finite numbers", allowed="one or more angles in radians")
+    points = _finite(phases, "phases", "angles in radians")
     if engine not in ENGINES:
         raise InputError(f"engine is {engine!r}", allowed=", ".join(map(repr, ENGINES)))
     if repeat or endless:
@@ -79,6 +77,48 @@ def reflect(
     if engine == "auto" and ready.is_wide:
         return direct.solve(pump, points, transmission=transmission)
     return layered.solve_prepared(ready, points, transmission=transmission)
+
+
+def reflect_grid(
+    pump: Pump, energies: ArrayLike, phases: ArrayLike, *, transmission: bool = True
+) -> tuple[ReflectionTrace, ...]:
+    """Solve for reflection and transmission of `pump` at all of `energies` and `phases`.
+
+    Energies share H(phi) and, while no lead opens or closes a mode, one sweep over the device.  The basis of lead modes
+    is fixed at each energy; between energies it is arbitrary.
+
+    Parameters
+    ----------
+    pump : Pump
+        Its own Fermi level plays no part.
+    energies : (k,) array-like of float
+        In the pump's unit.
+    phases : (n,) array-like of float
+        Radians.
+    transmission : bool
+        As in `reflect`.
+
+    Returns
+    -------
+    tuple of k ReflectionTrace
+        In the order of `energies`.
+
+    Raises
+    ------
+    InputError, ClosedProbeError, SolverError
+        As `reflect`, at any of the energies.
+    """
+    from scatterpump.solver.grid import solve_grid
+
+    lists = (_finite(energies, "energies", "energies"), _finite(phases, "phases", "angles in radians"))
+    return solve_grid(pump, *lists, transmission=transmission)
+
+
+def _finite(values: ArrayLike, name: str, kind: str) -> NDArray[np.float64]:
+    points = np.atleast_1d(np.asarray(values, dtype=float))
+    if points.ndim != 1 or points.size == 0 or not np.isfinite(points).all():
+        raise InputError(f"the {name} are not a list of finite numbers", allowed=f"one or more {kind}")
+    return points
 
 
 def _check_prolonging(engine: str, repeat: int, endless: bool) -> None:

@@ -28,6 +28,8 @@ class ReflectionTrace:
         Number of scattering problems solved.
     engine : str
         Which solver did it.
+    energy : float
+        Energy of the incoming electrons, in the pump's unit.
     """
 
     phases: NDArray[np.float64]
@@ -35,6 +37,7 @@ class ReflectionTrace:
     transmission: NDArray[np.complex128]
     evaluations: int
     engine: str
+    energy: float
 
     @property
     def channels(self) -> int:
