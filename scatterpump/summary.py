@@ -29,8 +29,7 @@ def summarise(verdict: Verdict) -> str:
     lines += _integer(verdict)
     if verdict.winding is not None:
         lines += _winding(verdict.winding)
-    if verdict.gap is not None:
-        lines += _gap(verdict.gap)
+    lines += _row("bulk gap", f"none: {verdict.interior}") if verdict.gap is None else _gap(verdict.gap)
     if verdict.chern is not None:
         lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
     for finding in verdict.audit.cautions:
@@ -69,7 +68,7 @@ def _integer(verdict: Verdict) -> list[str]:
         return _row("charges a cycle", "not proven")
     if not verdict.trustworthy:
         return _row("charges a cycle", f"not to be trusted (det r winds {_signed(winding.number)} times)")
-    return _row("charges a cycle", f"{_signed(winding.number)} from probe to drain")
+    return _row("charges a cycle", f"{_signed(winding.number)} {verdict.route}")
 
 
 def _winding(winding: Winding) -> list[str]:

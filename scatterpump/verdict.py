@@ -14,6 +14,7 @@ from typing import Any
 
 from scatterpump.audit.examine import gather, run_checks
 from scatterpump.audit.finding import AuditReport
+from scatterpump.bulk.cell import interior
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.pump import Pump
 from scatterpump.version import version
@@ -35,10 +36,14 @@ class Verdict:
     winding : Winding or None
         None if r is singular somewhere on the cycle.
     gap : BulkGap or None
-        None without a bulk cell.
+        None if no cell repeats along the device and none was given.
     chern : int or None
-        None without a bulk cell or where the gap closes.
+        None without such a cell or where the gap closes.
     audit : AuditReport
+    route : str
+        Which way a positive number of charges goes, in words.
+    interior : str
+        Which cell the gap and the Chern number belong to, or why there is none, in words.
     """
 
     name: str
@@ -47,6 +52,8 @@ class Verdict:
     gap: BulkGap | None
     chern: int | None
     audit: AuditReport
+    route: str
+    interior: str
 
     @property
     def trustworthy(self) -> bool:
@@ -92,7 +99,10 @@ def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ver
     with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
         evidence = gather(pump, progress=progress)
         report = run_checks(evidence)
-    return Verdict(pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, report)
+        where = interior(pump)
+    return Verdict(
+        pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, report, pump.route, where
+    )
 
 
 def _plain(value: Any) -> Any:
