@@ -16,7 +16,9 @@ import warnings
 from scatterpump.audit.examine import examine
 from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.builder.chain import ModulatedChain
-from scatterpump.builder.description import Disorder, Lead, Wave
+from scatterpump.builder.cylinder import FluxCylinder
+from scatterpump.builder.description import Disorder, Lead, SheetLead, Wave
+from scatterpump.builder.ribbon import ModulatedRibbon
 from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.cycle import Cycle
@@ -48,13 +50,16 @@ __all__ = [
     "CycleError",
     "Disorder",
     "Finding",
+    "FluxCylinder",
     "InputError",
     "Lead",
     "ModulatedChain",
+    "ModulatedRibbon",
     "NoBulkError",
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "SheetLead",
     "SingularReflectionError",
     "SolverError",
     "Verdict",

@@ -9,7 +9,9 @@ from __future__ import annotations
 from typing import Protocol
 
 from scatterpump.builder.chain import ModulatedChain
+from scatterpump.builder.cylinder import FluxCylinder
 from scatterpump.builder.python_file import PythonFile
+from scatterpump.builder.ribbon import ModulatedRibbon
 from scatterpump.pump import Pump
 
 __all__ = ["KINDS", "USUAL", "Description"]
@@ -22,5 +24,10 @@ class Description(Protocol):
         """Build the pump."""
 
 
-KINDS: dict[str, type[Description]] = {"chain": ModulatedChain, "python": PythonFile}
+KINDS: dict[str, type[Description]] = {
+    "chain": ModulatedChain,
+    "ribbon": ModulatedRibbon,
+    "cylinder": FluxCylinder,
+    "python": PythonFile,
+}
 USUAL = "chain"
