@@ -38,6 +38,7 @@ from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
 from scatterpump.winding.certificate import certify
+from scatterpump.winding.resolved import Resolved, Sector, resolve
 from scatterpump.winding.result import Crossing, Winding
 
 __all__ = [
@@ -59,6 +60,8 @@ __all__ = [
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "Resolved",
+    "Sector",
     "SheetLead",
     "SingularReflectionError",
     "SolverError",
@@ -72,6 +75,7 @@ __all__ = [
     "judge",
     "load_device",
     "reflect",
+    "resolve",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.
