@@ -21,7 +21,7 @@ from scatterpump.solver.hamiltonian import DrivenHamiltonian
 from scatterpump.solver.harmonics import Harmonics
 from scatterpump.solver.layers import distances
 from scatterpump.solver.path import Path, StraightPath, TrigonometricPath, follow, moving
-from scatterpump.solver.period import Run, longest_run
+from scatterpump.solver.period import Run, blocks_held, longest_run
 
 __all__ = ["LARGEST", "FoundCell", "find_cell"]
 
@@ -29,10 +29,10 @@ Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 
 LARGEST = 240  # orbitals: the bands of a larger cell take longer to search than the device takes to prove
-MOST = 0.5  # share of the changing layers that a run has to hold to count as the interior
+MOST = 0.5  # share of the blocks that change that a run has to hold to count as the interior
 SAMPLES = 24
 BATCH = 32
-REPLACED = "the integer and the leak are proven for this device as it is, without a gap to go with them"
+REPLACED = "what is proven of integer and leak holds for this very device, without a gap to go with it"
 
 
 @dataclass(frozen=True, eq=False)
@@ -96,7 +96,7 @@ def find_cell(pump: Pump) -> FoundCell:
     driven = DrivenHamiltonian(pump)
     path = follow(driven.many, pump.cycle)
     level, place, widths = _layers(pump, driven)
-    changing = _changing(level, driven.rows[moving(path)], len(widths))
+    changing = _changing(level, driven, moving(path), len(widths))
     own, ahead = _blocks(level, place, widths, driven, _known(path))
     run = longest_run(own, ahead, changing, longest_cell=LARGEST // int(widths.min()))
     _require_most(run, changing)
@@ -117,11 +117,14 @@ def _layers(pump: Pump, driven: DrivenHamiltonian) -> tuple[Indices, Indices, In
     return level, place, widths
 
 
-def _changing(level: Indices, rows: Indices, count: int) -> NDArray[np.bool_]:
-    """Which layers change along the cycle; all of them if none does."""
-    reached = level[rows]
-    changing = np.bincount(reached[reached >= 0], minlength=count) > 0
-    return changing if changing.any() else ~changing
+def _changing(
+    level: Indices, driven: DrivenHamiltonian, moves: NDArray[np.bool_], count: int
+) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+    """Which blocks of layers, and of hops to the next layer, change along the cycle; all of them if none does."""
+    below, above = level[driven.columns[moves]], level[driven.rows[moves]]
+    own, ahead = below[(below == above) & (below >= 0)], below[(above - below == 1) & (below >= 0)]
+    found = np.bincount(own, minlength=count) > 0, np.bincount(ahead, minlength=count)[: count - 1] > 0
+    return found if any(part.any() for part in found) else (~found[0], ~found[1])
 
 
 def _known(path: Path) -> Complex:
@@ -153,17 +156,17 @@ def _blocks(
     return found[0], found[1]
 
 
-def _require_most(run: Run | None, changing: NDArray[np.bool_]) -> None:
+def _require_most(run: Run | None, changing: tuple[NDArray[np.bool_], NDArray[np.bool_]]) -> None:
     if run is None:
         raise NoBulkError(
-            f"no cell repeats along the device, by disorder or by its shape: {REPLACED}",
+            f"no cell that changes repeats along the device, by disorder or by its shape: {REPLACED}",
             allowed="a device that repeats, or Pump(..., bulk=cell) with one cell of the interior as a kwant Builder "
             "with a translational symmetry",
         )
-    held, of = int(changing[run.layers.start : run.layers.stop].sum()), int(changing.sum())
-    if held < MOST * of:
+    share = blocks_held(run, changing) / sum(int(part.sum()) for part in changing)
+    if share < MOST:
         raise NoBulkError(
-            f"equal cells hold only {held} of {of} layers that change, so the device has no one interior: {REPLACED}",
+            f"equal cells hold only {share:.0%} of what changes, so the device has no one interior: {REPLACED}",
             allowed="a device that repeats, or Pump(..., bulk=cell) with one cell of the interior",
         )
 

@@ -22,6 +22,7 @@ Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 AGREES = 1e-12
+LARGEST = 1e60  # squares and determinants of what is larger leave the range of floating point
 
 
 class DrivenHamiltonian:
@@ -82,8 +83,10 @@ class DrivenHamiltonian:
             )
         except Exception as cause:  # a user's value function may raise anything
             raise SolverError(phase, parameters, cause) from cause
-        if not np.isfinite(found.data).all():
-            raise SolverError(phase, parameters, ValueError("the Hamiltonian has elements that are not finite"))
+        if not (np.abs(found.data) < LARGEST).all():
+            raise SolverError(
+                phase, parameters, ValueError(f"the Hamiltonian has elements that are not finite, or above {LARGEST:g}")
+            )
         return found, np.concatenate([[0], np.cumsum(count)])
 
     def _by_arrays(self, phases: Floats) -> Complex | None:
@@ -94,7 +97,7 @@ class DrivenHamiltonian:
                 found = _walked(self.pump.finalized, self._pairs, self.offsets, parameters, len(phases))
         except Exception:  # anything: the function was not written for arrays, and is asked phase by phase instead
             return None
-        if not np.isfinite(found).all():  # asked phase by phase, the failure is told where it happens
+        if not (np.abs(found) < LARGEST).all():  # asked phase by phase, the failure is told where it happens
             return None
         for i in (0, len(phases) // 2 + 1):
             truth = self.at(float(phases[i]))

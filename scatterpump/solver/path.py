@@ -300,7 +300,7 @@ def _is_straight(path: StraightPath, sample: Sample) -> bool:
 def _parameters(cycle: Cycle) -> Floats:
     """Numbers among the parameters of a cycle at many even phases, shape (FINE + 1, parameters)."""
     rows = [cycle.at(float(phase)) for phase in np.linspace(0.0, TURN, FINE + 1)]
-    numbers = [name for name, value in rows[0].items() if isinstance(value, int | float | np.number)]
+    numbers = [name for name in rows[0] if all(isinstance(row.get(name), int | float | np.number) for row in rows)]
     return np.array([[float(row[name]) for name in numbers] for row in rows]).reshape(FINE + 1, len(numbers))
 
 

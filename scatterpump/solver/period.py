@@ -13,10 +13,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Run", "longest_run"]
+__all__ = ["Run", "blocks_held", "longest_run"]
 
 Complex = NDArray[np.complex128]
 Labels = NDArray[np.int64]
+Counted = NDArray[np.bool_]
 SAME = 1e-9  # relative: far above what rounding does to a coefficient, far below what anybody modulates by
 ROUNDING = 1e-13  # of the largest element: what a coefficient that should vanish may be
 
@@ -46,9 +47,13 @@ class Run:
 
 
 def longest_run(
-    layers: Sequence[Complex], hops: Sequence[Complex], counted: NDArray[np.bool_], *, longest_cell: int
+    layers: Sequence[Complex],
+    hops: Sequence[Complex],
+    counted: tuple[Counted, Counted],
+    *,
+    longest_cell: int,
 ) -> Run | None:
-    """Return the run of equal cells that holds most of the `counted` layers, with the shortest cell that does.
+    """Return the run of equal cells that holds most of the `counted` blocks, with the shortest cell that does.
 
     Parameters
     ----------
@@ -56,21 +61,31 @@ def longest_run(
         Blocks of the layers themselves, s values or coefficients each.
     hops : L-1 arrays of shape (s, w_n+1, w_n)
         Blocks that couple layer n to layer n + 1.
-    counted : (L,) bool array
-        The layers that matter.
+    counted : (L,) and (L-1,) bool arrays
+        The blocks that matter: of the layers, and of the hops.
     longest_cell : int
         Most layers that a cell may have.
+
+    Returns
+    -------
+    Run or None
+        None if no two neighbouring cells are equal, or none that hold a counted block.
     """
     scale = max((float(np.abs(block).max(initial=0.0)) for block in (*layers, *hops)), default=0.0)
     own, ahead = _labels(layers, scale), _labels(hops, scale)
-    so_far = np.concatenate([[0], np.cumsum(counted)])
     best, most = None, 0
     for length in range(1, min(longest_cell, len(own) // 2) + 1):
         for run in _runs(own, ahead, length):
-            held = int(so_far[run.layers.stop] - so_far[run.first])
+            held = blocks_held(run, counted)
             if held > most:
                 best, most = run, held
     return best
+
+
+def blocks_held(run: Run, counted: tuple[Counted, Counted]) -> int:
+    """Return how many of the `counted` blocks a run holds; the hop out of its last layer is none of its own."""
+    layers, hops = counted
+    return int(layers[run.first : run.layers.stop].sum() + hops[run.first : run.layers.stop - 1].sum())
 
 
 def _runs(own: Labels, ahead: Labels, length: int) -> list[Run]:
