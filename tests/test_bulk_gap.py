@@ -411,5 +411,5 @@ def test_arguments_out_of_range_are_refused(options, message):
 
 def test_pump_without_a_cell_is_refused():
     """A period of sqrt(2) never repeats (number theory), so there is no cell whose bands could be asked for."""
-    with pytest.raises(NoBulkError, match="no cell repeats"):
+    with pytest.raises(NoBulkError, match="no cell that changes repeats"):
         bulk_gap(ModulatedChain(sites=60, onsite=[Wave(1.0, sqrt(2))]).pump())
