@@ -18,6 +18,7 @@ from scatterpump.bulk.cell import interior
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.pump import Pump
 from scatterpump.version import version
+from scatterpump.winding.resolved import Resolved, resolve_if_asked
 from scatterpump.winding.result import Winding
 
 __all__ = ["Verdict", "judge"]
@@ -44,6 +45,8 @@ class Verdict:
         Which way a positive number of charges goes, in words.
     interior : str
         Which cell the gap and the Chern number belong to, or why there is none, in words.
+    resolved : Resolved or None
+        What each eigenvalue of a conserved quantity carries; None if the probe was built without a conservation law.
     """
 
     name: str
@@ -54,6 +57,7 @@ class Verdict:
     audit: AuditReport
     route: str
     interior: str
+    resolved: Resolved | None
 
     @property
     def trustworthy(self) -> bool:
@@ -99,9 +103,17 @@ def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ver
     with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
         evidence = gather(pump, progress=progress)
         report = run_checks(evidence)
-        where = interior(pump)
+        resolved = resolve_if_asked(pump)
     return Verdict(
-        pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, report, pump.route, where
+        pump.name,
+        pump.fermi_level,
+        evidence.winding,
+        evidence.gap,
+        evidence.chern,
+        report,
+        pump.route,
+        interior(pump),
+        resolved,
     )
 
 

@@ -172,3 +172,15 @@ def test_matrix_on_one_orbital_is_a_number() -> None:
     first, second = (chain.pump().finalized.hamiltonian_submatrix(params={"phi": 0.7}) for chain in (one, other))
     # derived
     np.testing.assert_allclose(first, second, atol=1e-15)
+
+
+def test_verdict_tells_what_each_spin_carries() -> None:
+    verdict = judge(two_chains(-1, between=0.0, conserved="sigma_z").pump())
+    assert verdict.resolved.carried == 2.0
+    assert "-1 at eigenvalue -1, +1 at eigenvalue 1; +2 of it carried in a cycle" in " ".join(verdict.summary().split())
+
+
+def test_verdict_tells_why_spins_are_not_resolved() -> None:
+    verdict = judge(two_chains(1, between=0.1, conserved="sigma_z").pump())
+    assert (verdict.trustworthy, verdict.resolved.carried, verdict.winding.number) == (True, None, 2)
+    assert "not resolved: the device does not conserve" in " ".join(verdict.summary().split())

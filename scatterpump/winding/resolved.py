@@ -5,13 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
-from scatterpump.errors import ClosedProbeError
+from scatterpump.errors import ClosedProbeError, InputError, SingularReflectionError
 from scatterpump.pump import Pump
 from scatterpump.solver.sector import eigenvalues, law_of_leads, require_conserved, sector
 from scatterpump.winding.certificate import certify
 from scatterpump.winding.result import Winding
 
-__all__ = ["Resolved", "Sector", "resolve"]
+__all__ = ["Resolved", "Sector", "resolve", "resolve_if_asked"]
 
 
 @dataclass(frozen=True)
@@ -36,21 +36,29 @@ class Sector:
 
 @dataclass(frozen=True)
 class Resolved:
-    """Windings by the eigenvalue of a conserved quantity, ascending."""
+    """Windings by the eigenvalue of a conserved quantity, ascending.
+
+    Attributes
+    ----------
+    sectors : tuple of Sector
+    reason : str
+        Why there are none, if a verdict asked for them in vain; else empty.
+    """
 
     sectors: tuple[Sector, ...]
+    reason: str = ""
 
     @property
     def charge(self) -> int | None:
         """Charges carried in a cycle, from probe to drain; None unless all windings are proven."""
         numbers = [part.number for part in self.sectors if part.number is not None]
-        return sum(numbers) if len(numbers) == len(self.sectors) else None
+        return sum(numbers) if self.sectors and len(numbers) == len(self.sectors) else None
 
     @property
     def carried(self) -> float | None:
         """The conserved quantity carried in a cycle, sum of eigenvalue times winding; None unless all are proven."""
         parts = [part.eigenvalue * part.number for part in self.sectors if part.number is not None]
-        return sum(parts) if len(parts) == len(self.sectors) else None
+        return sum(parts) if self.sectors and len(parts) == len(self.sectors) else None
 
 
 def resolve(pump: Pump, *, law: Any = None, budget: int = 400) -> Resolved:
@@ -86,11 +94,28 @@ def resolve(pump: Pump, *, law: Any = None, budget: int = 400) -> Resolved:
     (0, 2.0)
     """
     law = law_of_leads(pump) if law is None else law
+    if law is None:
+        raise InputError(
+            "the probe has no conservation law to resolve the winding by",
+            allowed="a lead made by kwant.Builder(symmetry, conservation_law=...), or the law itself as law=...",
+        )
     require_conserved(pump, law)
     parts = tuple(Sector(value, _winding(sector(pump, law, value), budget)) for value in eigenvalues(pump, law))
     if all(part.winding is None for part in parts):
         raise ClosedProbeError(pump.fermi_level, pump.probe)
     return Resolved(parts)
+
+
+def resolve_if_asked(pump: Pump) -> Resolved | None:
+    """Resolve the winding if the probe was built with a conservation law, and say why where that is not possible."""
+    if law_of_leads(pump) is None:
+        return None
+    try:
+        return resolve(pump)
+    except InputError as error:
+        return Resolved((), error.problem)
+    except SingularReflectionError as error:
+        return Resolved((), str(error))
 
 
 def _winding(pump: Pump, budget: int) -> Winding | None:
