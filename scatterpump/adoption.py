@@ -36,7 +36,7 @@ def finalized(system: Any) -> Any:
     if not all(hasattr(found, name) for name in PER_SITE):
         raise InputError(
             f"the system is {_kind(system)}, whose values cannot be asked for site by site",
-            allowed=ADOPTED + ", made without vectorize=True",
+            allowed=ADOPTED,
         )
     if not found.leads:
         raise InputError("the system has no leads, so nothing can be sent in", allowed=ADOPTED)
@@ -83,4 +83,4 @@ def _finalize(system: Any) -> Any:
 
 
 def _kind(value: Any) -> str:
-    return f"a {type(value).__module__}.{type(value).__qualname__}".replace("builtins.", "")
+    return f"of type {type(value).__qualname__}"

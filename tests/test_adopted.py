@@ -2,7 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from dataclasses import replace
 from math import sqrt
+from types import SimpleNamespace
+from typing import Any
 
 import kwant
 import numpy as np
@@ -23,7 +27,9 @@ from geometries import (
 )
 
 from scatterpump.audit.examine import examine
-from scatterpump.errors import InputError
+from scatterpump.bulk.gap import bulk_gap
+from scatterpump.cycle import Cycle
+from scatterpump.errors import CycleError, InputError, SolverError
 from scatterpump.pump import Pump
 from scatterpump.solver.direct import scattering_matrix
 from scatterpump.solver.reflect import reflect
@@ -134,3 +140,98 @@ def test_lead_given_by_its_modes_is_adopted() -> None:
         lambda energy, args=(), params=None: lead.modes(energy, params=params), system.leads[1].interface, ()
     )
     assert certify(Pump(system, pump.cycle, pump.fermi_level)).number == 1
+
+
+# --- what cannot be adopted ---
+
+
+def without_leads() -> kwant.Builder:
+    system = kwant.Builder()
+    system[kwant.lattice.chain(norbs=1)(0)] = 0
+    return system
+
+
+def with_a_self_energy() -> kwant.Builder:
+    pump = three_leads()
+    pump.system.leads[2] = kwant.builder.SelfEnergyLead(
+        lambda energy, args=(), params=None: np.array([[-1j]]), pump.system.leads[2].interface, ()
+    )
+    return pump.system
+
+
+def without_an_interface() -> kwant.Builder:
+    system = three_leads().system
+    del system[system.leads[2].interface[0]]
+    return system
+
+
+BAD_SYSTEMS = {
+    "nothing": (lambda: None, "no kwant system"),
+    "a number": (lambda: 3, "of type int, which is no kwant system"),
+    "a matrix": (lambda: np.eye(3), "no kwant system"),
+    "no leads": (without_leads, "no leads"),
+    "endless": (lambda: kwant.Builder(kwant.TranslationalSymmetry((-1,))), "repeats without end"),
+    "endless, finalized": (lambda: three_leads().finalized.leads[0], "repeats without end"),
+    "a lead without modes": (with_a_self_energy, "lead 2 is given by its self-energy alone"),
+    "a lead attached to nothing": (without_an_interface, "kwant cannot finalize the system"),
+    "a system without sites": (lambda: SimpleNamespace(leads=()), "site by site"),
+}
+
+
+@pytest.mark.parametrize(("make", "match"), BAD_SYSTEMS.values(), ids=BAD_SYSTEMS)
+def test_system_that_cannot_be_adopted_is_refused(make: Callable[[], Any], match: str) -> None:
+    with pytest.raises(InputError, match=match):
+        Pump(make(), Cycle.angle(), 0.0)
+
+
+@pytest.mark.parametrize(
+    ("changes", "match"),
+    [
+        ({"probe": 3}, "probe is lead 3"),
+        ({"probe": "left"}, "probe is lead left"),
+        ({"drain": -1}, "drain is lead -1"),
+        ({"probe": True}, "probe is lead True"),
+        ({"drain": 0}, "both lead 0"),
+        ({"drain": None}, "no drain, but the system has 3 leads"),
+        ({"fermi_level": float("inf")}, "fermi_level is inf"),
+        ({"fermi_level": "low"}, "fermi_level is 'low'"),
+        ({"cycle": lambda phi: {"phi": phi}}, "the cycle is"),
+        ({"lead_names": ("left", "right")}, "a different name for each of 3 leads"),
+        ({"lead_names": ("left", "left", "top")}, "a different name for each of 3 leads"),
+    ],
+)
+def test_parts_that_do_not_fit_are_refused(changes: dict[str, Any], match: str) -> None:
+    pump = three_leads()
+    usual: dict[str, Any] = {"cycle": pump.cycle, "fermi_level": GAP}
+    with pytest.raises(InputError, match=match):
+        Pump(pump.system, **{**usual, **changes})
+
+
+def test_bulk_that_does_not_repeat_is_refused() -> None:
+    pump = replace(three_leads(), bulk=without_leads())
+    with pytest.raises(InputError, match="does not repeat"):
+        bulk_gap(pump)
+
+
+def test_parameter_that_nothing_sets_is_named() -> None:
+    pump = three_leads().on(Cycle.angle("theta"))
+    with pytest.raises(InputError, match=r"nothing sets the parameter\(s\) phi"):
+        certify(pump)
+
+
+def test_failure_of_a_value_function_tells_phi_and_cause() -> None:
+    def onsite(site: Any, phi: Any) -> Any:
+        return 1 / 0 if np.any(np.asarray(phi) > 2) else 0.0
+
+    pump = three_leads()
+    pump.system[next(iter(pump.system.sites()))] = onsite
+    with pytest.raises(SolverError, match=r"phi = .*ZeroDivisionError: division by zero \(in onsite, line") as caught:
+        certify(Pump(pump.system, pump.cycle, GAP))
+    assert caught.value.phase > 2
+    assert caught.value.parameters == {"phi": caught.value.phase}
+
+
+@pytest.mark.parametrize("function", [lambda phi: {"phi": 1 / 0}, lambda phi: 3, lambda phi: {3: phi}])
+def test_failure_of_a_cycle_tells_phi_and_cause(function: Callable[[float], Any]) -> None:
+    with pytest.raises(CycleError, match="the cycle's function failed at phi = 0"):
+        certify(three_leads().on(Cycle(function)))

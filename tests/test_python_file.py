@@ -149,7 +149,7 @@ def test_file_sees_its_neighbours_and_is_never_stale(folder: Path) -> None:
         ({"file": "."}, ("cannot be read",)),
         ({"function": "pumpe"}, ("no function 'pumpe'", "pump")),
         ({"function": "too_few"}, ("too_few(sites=36)", "36 sites are too few", "of mine.py")),
-        ({"function": "nothing"}, ("NoneType", "no kwant system")),
+        ({"function": "nothing"}, ("of type NoneType", "no kwant system")),
         ({"function": "lonely"}, ("no leads",)),
         ({"function": "endless"}, ("repeats without end",)),
         ({"function": "leaves"}, ("SystemExit",)),
