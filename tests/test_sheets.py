@@ -189,3 +189,9 @@ def test_ribbon_in_a_field_carries_what_its_bands_do() -> None:
 def test_what_is_out_of_range_is_refused(make: Any, match: str) -> None:
     with pytest.raises(InputError, match=match):
         make()
+
+
+def test_chern_number_of_many_bands_needs_no_finer_grid() -> None:
+    """Eight rows hardly tied to each other carry eight times what one does (derived)."""
+    pump = ribbon(width=8, across=0.05).pump()
+    assert chern_number(pump) == 8
