@@ -99,7 +99,7 @@ class PythonFile:
         module = _run(Path(self.file))
         function = getattr(module, self.function, None)
         if not callable(function):
-            known = [name for name, value in vars(module).items() if callable(value) and not name.startswith("_")]
+            known = [name for name, value in vars(module).items() if _defined_in(module, value)]
             raise InputError(
                 f"there is no function {self.function!r}",
                 allowed=", ".join(known) or "one that the file defines",
@@ -143,6 +143,10 @@ class PythonFile:
                 where=self._where,
             )
         return list(names).index(lead)
+
+
+def _defined_in(module: Any, value: Any) -> bool:
+    return callable(value) and getattr(value, "__module__", None) == module.__name__
 
 
 def _run(file: Path) -> Any:
