@@ -16,7 +16,9 @@ import warnings
 from scatterpump.audit.examine import examine
 from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.builder.chain import ModulatedChain
-from scatterpump.builder.description import Disorder, Lead, Wave
+from scatterpump.builder.cylinder import FluxCylinder
+from scatterpump.builder.description import Disorder, Lead, SheetLead, Wave
+from scatterpump.builder.ribbon import ModulatedRibbon
 from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.cycle import Cycle
@@ -24,7 +26,9 @@ from scatterpump.device_file import load_device
 from scatterpump.errors import (
     ClosedGapError,
     ClosedProbeError,
+    CycleError,
     InputError,
+    NoBulkError,
     PumpError,
     SingularReflectionError,
     SolverError,
@@ -34,6 +38,7 @@ from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
 from scatterpump.winding.certificate import certify
+from scatterpump.winding.resolved import Resolved, Sector, resolve
 from scatterpump.winding.result import Crossing, Winding
 
 __all__ = [
@@ -43,14 +48,21 @@ __all__ = [
     "ClosedProbeError",
     "Crossing",
     "Cycle",
+    "CycleError",
     "Disorder",
     "Finding",
+    "FluxCylinder",
     "InputError",
     "Lead",
     "ModulatedChain",
+    "ModulatedRibbon",
+    "NoBulkError",
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "Resolved",
+    "Sector",
+    "SheetLead",
     "SingularReflectionError",
     "SolverError",
     "Verdict",
@@ -64,6 +76,7 @@ __all__ = [
     "load_device",
     "reflect",
     "reflect_grid",
+    "resolve",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

@@ -17,7 +17,7 @@ from typing import Any, Literal
 
 import numpy as np
 
-from scatterpump.errors import InputError
+from scatterpump.errors import CycleError, InputError
 
 __all__ = ["NAMES", "Cycle", "is_name"]
 
@@ -60,8 +60,20 @@ class Cycle:
     plain: bool = False
 
     def at(self, phase: float) -> Parameters:
-        """Return the parameters at `phase` (radians; any real number)."""
-        return dict(self.function(phase))
+        """Return the parameters at `phase` (radians; any real number).
+
+        Raises
+        ------
+        CycleError
+            If the function fails there, or returns no mapping of names.
+        """
+        try:
+            found = self.function(phase)
+            if not (isinstance(found, Mapping) and all(isinstance(name, str) for name in found)):
+                raise TypeError(f"it returned a {type(found).__name__}, no mapping from names to values")
+            return dict(found)
+        except Exception as cause:  # a user's function may raise anything
+            raise CycleError(phase, cause) from cause
 
     @property
     def names(self) -> tuple[str, ...]:

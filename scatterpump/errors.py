@@ -5,7 +5,46 @@ Every message answers four questions in one line: what is wrong, where, what is 
 
 from __future__ import annotations
 
-__all__ = ["ClosedGapError", "ClosedProbeError", "InputError", "PumpError", "SingularReflectionError", "SolverError"]
+from pathlib import Path
+from traceback import extract_tb
+
+__all__ = [
+    "ClosedGapError",
+    "ClosedProbeError",
+    "CycleError",
+    "InputError",
+    "NoBulkError",
+    "PumpError",
+    "SingularReflectionError",
+    "SolverError",
+    "told",
+]
+
+LONGEST_SHOWN = 40
+
+
+def told(error: BaseException) -> str:
+    """Return what went wrong in the first place, in one line, and where if that is in a file of the user's."""
+    while error.__cause__ is not None:
+        error = error.__cause__
+    text = " ".join(f"{type(error).__name__}: {error}".split()).rstrip(": ")
+    own = [frame for frame in extract_tb(error.__traceback__) if _is_user_code(frame.filename)]
+    return f"{text} (in {own[-1].name}, line {own[-1].lineno} of {Path(own[-1].filename).name})" if own else text
+
+
+def _is_user_code(filename: str) -> bool:
+    path = Path(filename)
+    return not (
+        "site-packages" in path.parts
+        or filename.startswith("<frozen")
+        or path.suffix == ".pyx"
+        or path.is_relative_to(Path(__file__).parent)
+    )
+
+
+def _shown(value: object) -> str:
+    text = " ".join(str(value).split())
+    return text if len(text) <= LONGEST_SHOWN else text[:LONGEST_SHOWN] + "..."
 
 
 class PumpError(Exception):
@@ -29,6 +68,10 @@ class InputError(PumpError, ValueError):
         self.problem, self.allowed, self.where = problem, allowed, where
         text = f"{where}: {problem}" if where else problem
         super().__init__(" ".join((f"{text}; allowed: {allowed}" if allowed else text).split()))
+
+
+class NoBulkError(InputError):
+    """A pump whose interior does not repeat, so that it has no bands, gap or Chern number."""
 
 
 class ClosedGapError(PumpError):
@@ -85,7 +128,22 @@ class SolverError(PumpError):
 
     def __init__(self, phase: float, parameters: dict[str, object], cause: BaseException) -> None:
         self.phase, self.parameters = phase, parameters
-        values = ", ".join(f"{name}={value}" for name, value in parameters.items())
+        values = ", ".join(f"{name}={_shown(value)}" for name, value in parameters.items())
+        super().__init__(f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): {told(cause)}")
+
+
+class CycleError(PumpError):
+    """The cycle's function gave no parameters at some phase.
+
+    Attributes
+    ----------
+    phase : float
+        Where, in radians.
+    """
+
+    def __init__(self, phase: float, cause: BaseException) -> None:
+        self.phase = phase
         super().__init__(
-            f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): {type(cause).__name__}: {cause}"
+            f"the cycle's function failed at phi = {phase:.6g}: {told(cause)}; "
+            "allowed: a function of phi in radians that returns the parameters as a mapping"
         )

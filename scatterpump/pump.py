@@ -6,12 +6,14 @@ A `Pump` is what every later room takes: H(phi) is ``system`` at ``cycle.at(phi)
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 from functools import cached_property
 from math import isfinite
+from numbers import Real
 from typing import Any
 
+from scatterpump.adoption import finalized, finalized_cell
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
@@ -25,7 +27,7 @@ class Pump:
     Parameters
     ----------
     system : kwant.Builder or finalized kwant system
-        The scattering region with its leads attached.
+        The scattering region with its leads attached, in any shape and on any lattice.
     cycle : Cycle
         The closed path of the system's parameters.
     fermi_level : float
@@ -33,19 +35,27 @@ class Pump:
     probe : int
         Number of the lead they come in through.
     drain : int or None
-        Number of the lead the charge leaves by; None for a hard wall at the far end (which the audit reports).
+        Number of the lead the charge leaves by; None for a hard wall at the far end (which the audit reports).  All
+        further leads count as part of the drain: the number of charges is what the probe gives to all of them together.
     bulk : kwant.Builder or finalized infinite system, optional
-        One cell of the pump's interior, repeated away from the probe.  The gap and the Chern number belong to it;
-        without it they are left out of a verdict.
+        One cell of the pump's interior, repeated away from the probe, which the gap and the Chern number belong to.
+        Without it the cell that repeats along the device itself is looked for.
     constants : dict
         Parameters of the Hamiltonian that the cycle does not set.
     name : str
         What to call the pump in a report.
+    lead_names : sequence of str
+        What to call the leads, in the order they were attached; empty for plain numbers.
+
+    Attributes
+    ----------
+    remembered : dict
+        What later rooms have found out about this pump and need again.
 
     Raises
     ------
     InputError
-        If the Fermi level is not finite or a lead does not exist.
+        If the system cannot be adopted, the Fermi level is not finite, or a lead does not exist.
     """
 
     system: Any
@@ -56,29 +66,52 @@ class Pump:
     bulk: Any = None
     constants: dict[str, Any] = field(default_factory=dict)
     name: str = "pump"
+    lead_names: Sequence[str] = ()
+    remembered: dict[str, Any] = field(default_factory=dict, init=False, repr=False, compare=False)
 
     def __post_init__(self) -> None:
-        if not isfinite(self.fermi_level):
-            raise InputError(f"fermi_level is {self.fermi_level}", allowed="a finite energy")
-        leads = len(self.system.leads)
+        level = self.fermi_level
+        if isinstance(level, bool) or not (isinstance(level, Real) and isfinite(level)):
+            raise InputError(f"fermi_level is {level!r}", allowed="a finite energy")
+        if not isinstance(self.cycle, Cycle):
+            raise InputError(f"the cycle is {self.cycle!r}", allowed="a scatterpump.Cycle, such as Cycle.angle()")
+        leads = len(self.finalized.leads)
         for role, lead in (("probe", self.probe), ("drain", self.drain)):
-            if lead is not None and not 0 <= lead < leads:
+            known = isinstance(lead, int) and not isinstance(lead, bool) and 0 <= lead < leads
+            if not known and (role, lead) != ("drain", None):
                 raise InputError(
                     f"the {role} is lead {lead}, but the system has {leads} lead(s)",
                     allowed=f"0 to {leads - 1}, counted in the order they were attached",
                 )
         if self.probe == self.drain:
             raise InputError(f"probe and drain are both lead {self.probe}", allowed="two different leads")
+        if self.drain is None and leads > 1:
+            raise InputError(f"there is no drain, but the system has {leads} leads", allowed="one of them as the drain")
+        if self.lead_names and len(set(self.lead_names)) != leads:
+            raise InputError(
+                f"the leads are named {', '.join(map(repr, self.lead_names))}",
+                allowed=f"a different name for each of {leads} leads",
+            )
 
     @cached_property
     def finalized(self) -> Any:
         """The finalized kwant system, built once."""
-        return _finalized(self.system)
+        return finalized(self.system)
 
     @cached_property
     def finalized_bulk(self) -> Any:
-        """The finalized cell of the interior, or None."""
-        return None if self.bulk is None else _finalized(self.bulk)
+        """The finalized cell of the interior that was given, or None."""
+        return None if self.bulk is None else finalized_cell(self.bulk)
+
+    @property
+    def route(self) -> str:
+        """Which way a positive number of charges goes, in words."""
+        others = [i for i in range(len(self.finalized.leads)) if i not in (self.probe, self.drain)]
+        if self.lead_names:
+            names = [self.lead_names[i] for i in (self.drain, *others) if i is not None]
+            return f"from {self.lead_names[self.probe]} to {' and '.join(names) or 'the far end'}"
+        rest = f" and {len(others)} other lead{'s' if len(others) > 1 else ''}" if others else ""
+        return f"from probe to drain{rest}"
 
     def parameters(self, phase: float) -> dict[str, Any]:
         """Return all parameters of the Hamiltonian at `phase` (radians)."""
@@ -89,26 +122,21 @@ class Pump:
 
         For what solvers find out about a pump and several of them need: its path, its lead modes.
         """
-        found = self.__dict__.setdefault("_found", {})
-        if name not in found:
-            found[name] = find()
-        return found[name]
+        if name not in self.remembered:
+            self.remembered[name] = find()
+        return self.remembered[name]
 
     def __getstate__(self) -> dict[str, Any]:
         """Leave what was found out behind when the pump is sent elsewhere."""
-        return {key: value for key, value in self.__dict__.items() if key != "_found"}
+        return {**self.__dict__, "remembered": {}}
 
     def at_fermi_level(self, fermi_level: float) -> Pump:
         """Return the same pump at another Fermi level."""
         other = replace(self, system=self.finalized, bulk=self.finalized_bulk, fermi_level=fermi_level)
-        if "path" in self.__dict__.get("_found", {}):  # H(phi) does not know the Fermi level
-            other.once("path", lambda: self.__dict__["_found"]["path"])
+        if "path" in self.remembered:  # H(phi) does not know the Fermi level
+            other.remembered["path"] = self.remembered["path"]
         return other
 
     def on(self, cycle: Cycle) -> Pump:
         """Return the same pump driven round another cycle."""
         return replace(self, system=self.finalized, bulk=self.finalized_bulk, cycle=cycle)
-
-
-def _finalized(system: Any) -> Any:
-    return system.finalized() if hasattr(system, "finalized") else system

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 from scatterpump.audit.finding import Finding
 from scatterpump.bulk.gap import FLOOR, BulkGap
 from scatterpump.version import version
+from scatterpump.winding.resolved import Resolved
 from scatterpump.winding.result import Winding
 
 if TYPE_CHECKING:
@@ -29,8 +30,9 @@ def summarise(verdict: Verdict) -> str:
     lines += _integer(verdict)
     if verdict.winding is not None:
         lines += _winding(verdict.winding)
-    if verdict.gap is not None:
-        lines += _gap(verdict.gap)
+    if verdict.resolved is not None:
+        lines += _row("conserved", _resolved(verdict.resolved))
+    lines += _row("bulk gap", f"none: {verdict.interior}") if verdict.gap is None else _gap(verdict.gap)
     if verdict.chern is not None:
         lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
     for finding in verdict.audit.cautions:
@@ -69,7 +71,7 @@ def _integer(verdict: Verdict) -> list[str]:
         return _row("charges a cycle", "not proven")
     if not verdict.trustworthy:
         return _row("charges a cycle", f"not to be trusted (det r winds {_signed(winding.number)} times)")
-    return _row("charges a cycle", f"{_signed(winding.number)} from probe to drain")
+    return _row("charges a cycle", f"{_signed(winding.number)} {verdict.route}")
 
 
 def _winding(winding: Winding) -> list[str]:
@@ -83,6 +85,17 @@ def _winding(winding: Winding) -> list[str]:
         kind = "proven" if winding.exact else "estimated"
         lines += _row("leak", f"{kind} to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
     return lines
+
+
+def _resolved(resolved: Resolved) -> str:
+    if not resolved.sectors:
+        return f"not resolved: {resolved.reason}"
+    numbers = [(part.eigenvalue, part.number) for part in resolved.sectors]
+    parts = [
+        f"{'not proven' if number is None else _signed(number)} at eigenvalue {value:g}" for value, number in numbers
+    ]
+    total = "" if resolved.carried is None else f"; {resolved.carried:+g} of it carried in a cycle"
+    return ", ".join(parts) + total
 
 
 def _proof(winding: Winding) -> str:

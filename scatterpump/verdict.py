@@ -14,9 +14,11 @@ from typing import Any
 
 from scatterpump.audit.examine import gather, run_checks
 from scatterpump.audit.finding import AuditReport
+from scatterpump.bulk.cell import interior
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.pump import Pump
 from scatterpump.version import version
+from scatterpump.winding.resolved import Resolved, resolve_if_asked
 from scatterpump.winding.result import Winding
 
 __all__ = ["Verdict", "judge"]
@@ -35,10 +37,16 @@ class Verdict:
     winding : Winding or None
         None if r is singular somewhere on the cycle.
     gap : BulkGap or None
-        None without a bulk cell.
+        None if no cell repeats along the device and none was given.
     chern : int or None
-        None without a bulk cell or where the gap closes.
+        None without such a cell or where the gap closes.
     audit : AuditReport
+    route : str
+        Which way a positive number of charges goes, in words.
+    interior : str
+        Which cell the gap and the Chern number belong to, or why there is none, in words.
+    resolved : Resolved or None
+        What each eigenvalue of a conserved quantity carries; None if the probe was built without a conservation law.
     """
 
     name: str
@@ -47,6 +55,9 @@ class Verdict:
     gap: BulkGap | None
     chern: int | None
     audit: AuditReport
+    route: str
+    interior: str
+    resolved: Resolved | None
 
     @property
     def trustworthy(self) -> bool:
@@ -92,7 +103,18 @@ def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ver
     with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
         evidence = gather(pump, progress=progress)
         report = run_checks(evidence)
-    return Verdict(pump.name, pump.fermi_level, evidence.winding, evidence.gap, evidence.chern, report)
+        resolved = resolve_if_asked(pump)
+    return Verdict(
+        pump.name,
+        pump.fermi_level,
+        evidence.winding,
+        evidence.gap,
+        evidence.chern,
+        report,
+        pump.route,
+        interior(pump),
+        resolved,
+    )
 
 
 def _plain(value: Any) -> Any:

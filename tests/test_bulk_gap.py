@@ -1,7 +1,6 @@
 """The gap of the interior: brackets against closed forms, brute force, and what may not be called open."""
 
 from math import cos, pi, sqrt
-from types import SimpleNamespace
 
 import kwant
 import numpy as np
@@ -17,7 +16,7 @@ from scatterpump.bulk.family import bloch_family
 from scatterpump.bulk.gap import bulk_gap
 from scatterpump.bulk.torus import Cover, search
 from scatterpump.cycle import Cycle
-from scatterpump.errors import InputError
+from scatterpump.errors import InputError, NoBulkError
 from scatterpump.pump import Pump
 
 RADII = st.floats(0.05, 0.9)
@@ -150,13 +149,24 @@ def random_coefficients(seed):
     return np.concatenate([back, [np.stack([still, onward])], moving])
 
 
+def site_between_wires():
+    """Return a system that has nothing to do with the cell whose bands are asked for."""
+    lattice = kwant.lattice.chain(norbs=1)
+    system, wire = kwant.Builder(), kwant.Builder(kwant.TranslationalSymmetry((-1,)))
+    system[lattice(0)] = wire[lattice(0)] = 0
+    wire[lattice.neighbors()] = -1
+    system.attach_lead(wire)
+    system.attach_lead(wire.reversed())
+    return system
+
+
 def pump_of(coefficients, fermi_level):
     orders = np.arange(len(coefficients)) - len(coefficients) // 2
     lattice = kwant.lattice.chain(norbs=coefficients.shape[-1])
     cell = kwant.Builder(kwant.TranslationalSymmetry((1,)))
     cell[lattice(0)] = lambda site, phi: np.tensordot(np.exp(1j * orders * phi), coefficients[:, 0], 1)
     cell[lattice(1), lattice(0)] = lambda to, here, phi: np.tensordot(np.exp(1j * orders * phi), coefficients[:, 1], 1)
-    return Pump(SimpleNamespace(leads=(None, None)), Cycle.angle(), fermi_level, bulk=cell)
+    return Pump(site_between_wires(), Cycle.angle(), fermi_level, bulk=cell)
 
 
 def levels(coefficients, k, phi):
@@ -401,5 +411,5 @@ def test_arguments_out_of_range_are_refused(options, message):
 
 def test_pump_without_a_cell_is_refused():
     """A period of sqrt(2) never repeats (number theory), so there is no cell whose bands could be asked for."""
-    with pytest.raises(InputError, match="no bulk cell"):
+    with pytest.raises(NoBulkError, match="no cell that changes repeats"):
         bulk_gap(ModulatedChain(sites=60, onsite=[Wave(1.0, sqrt(2))]).pump())

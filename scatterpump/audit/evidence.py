@@ -24,9 +24,9 @@ class Evidence:
     winding : Winding or None
         None if r is singular somewhere.
     gap : BulkGap or None
-        None if the pump has no bulk cell.
+        None if no cell repeats in the pump.
     chern : int or None
-        None without a bulk cell, or where the gap closes.
+        None without a repeating cell, or where the gap closes.
     """
 
     pump: Pump

@@ -14,8 +14,8 @@ from scatterpump.audit.leads import drain_present, leads_still, probe_open
 from scatterpump.audit.numerics import scattering_unitary
 from scatterpump.audit.reflection import decays, leakage, reflection_invertible
 from scatterpump.bulk.chern import chern_number
-from scatterpump.bulk.gap import bulk_gap
-from scatterpump.errors import ClosedGapError, SingularReflectionError
+from scatterpump.bulk.gap import BulkGap, bulk_gap
+from scatterpump.errors import ClosedGapError, NoBulkError, SingularReflectionError
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.winding.certificate import certify
@@ -65,7 +65,7 @@ def gather(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ev
         pump,
         trace=reflect(pump, np.sort([*even, *resonances])),
         winding=winding,
-        gap=None if pump.bulk is None else bulk_gap(pump),
+        gap=_gap(pump),
         chern=_chern(pump),
     )
 
@@ -84,8 +84,15 @@ def _winding(pump: Pump, progress: Callable[[float], None] | None) -> Winding | 
         return None
 
 
+def _gap(pump: Pump) -> BulkGap | None:
+    try:
+        return bulk_gap(pump)
+    except NoBulkError:
+        return None
+
+
 def _chern(pump: Pump) -> int | None:
     try:
-        return None if pump.bulk is None else chern_number(pump)
-    except ClosedGapError:
+        return chern_number(pump)
+    except (ClosedGapError, NoBulkError):
         return None

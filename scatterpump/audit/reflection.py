@@ -98,7 +98,7 @@ def reflection_invertible(evidence: Evidence) -> Finding:
 
 def decays(evidence: Evidence) -> Finding | None:
     """Decay of the slowest state at the Fermi level in the interior, and the length it asks for."""
-    if evidence.pump.bulk is None:
+    if evidence.gap is None:
         return None
     rate = decay_per_cell(evidence.pump)
     if rate >= PROPAGATING:

@@ -2,9 +2,10 @@
 
     H = sum_x v_x |x><x|  -  sum_x (t_x |x><x+1| + h.c.),      x = 0 ... sites-1,
 
-with v_x = level + on-site waves and t_x = hopping + bond waves at x + 1/2, each plus static disorder.  One
-lead-like site stands before and behind it (x = -1 and x = sites), so that r refers to a place where the wire is
-still uniform. A dimerised or a quasi-periodic chain is a matter of two lines:
+with v_x = level + on-site waves and t_x = hopping + bond waves at x + 1/2, each plus static disorder.  With several
+orbitals a site these are matrices, and numbers stand for multiples of the unit matrix.  One lead-like site stands
+before and behind the chain (x = -1 and x = sites), so that r refers to a place where the wire is still uniform.  A
+dimerised or a quasi-periodic chain is a matter of two lines:
 
     ModulatedChain(sites=80, cycle=Cycle.ellipse(x=("delta", 0, 0.5), y=("stagger", 0, 0.5)),
                    onsite=[Wave("stagger", 2, harmonic=0)], bonds=[Wave("delta", 2, lag=-pi / 2, harmonic=0)])
@@ -13,18 +14,16 @@ still uniform. A dimerised or a quasi-periodic chain is a matter of two lines:
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
-from fractions import Fraction
-from inspect import Parameter, Signature
-from math import lcm, pi
 from typing import TYPE_CHECKING, Any, ClassVar, Literal
 
 import numpy as np
 
 from scatterpump.builder.description import LARGEST, Disorder, Lead, Wave, require
-from scatterpump.cycle import NAMES, Cycle, is_name
-from scatterpump.errors import InputError
+from scatterpump.builder.matrix import Matrix, as_array, as_hermitian, as_rows
+from scatterpump.builder.waves import common_period, require_parameters, wave_sum, with_parameters
+from scatterpump.cycle import Cycle
 from scatterpump.pump import Pump
 
 if TYPE_CHECKING:
@@ -33,6 +32,8 @@ if TYPE_CHECKING:
 __all__ = ["ModulatedChain"]
 
 LONGEST = 10_000_000
+MANY = 64
+MATRICES = ("onsite_matrix", "bond_matrix", "conserved")
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -58,6 +59,13 @@ class ModulatedChain:
         ``phi``.
     name : str
         What to call the device in a report.
+    orbitals : int
+        Orbitals on every site, spin among them, at least 1.
+    onsite_matrix, bond_matrix : Matrix
+        What is added to v_x and to t_x everywhere, as matrices on the orbitals.
+    conserved : Matrix
+        A Hermitian matrix on the orbitals with whole eigenvalues, such as "sigma_z" for spin, that the leads' modes
+        are sorted by; the device should conserve it too (see `resolve`).
 
     Raises
     ------
@@ -76,6 +84,10 @@ class ModulatedChain:
     disorder: Disorder = field(default_factory=Disorder)
     cycle: Cycle = field(default_factory=Cycle.angle)
     name: str = "modulated chain"
+    orbitals: int = 1
+    onsite_matrix: Matrix = None
+    bond_matrix: Matrix = None
+    conserved: Matrix = None
 
     __pydantic_config__: ClassVar[Any] = {"extra": "forbid"}
 
@@ -83,26 +95,24 @@ class ModulatedChain:
         require(1 <= self.sites <= LONGEST, "sites", self.sites, f"a whole number from 1 to {LONGEST}")
         for name in ("hopping", "level", "fermi_level"):
             require(abs(getattr(self, name)) < LARGEST, name, getattr(self, name), "a finite energy")
-        have = self.cycle.names
-        for name in have:
-            require(is_name(name), "a parameter of the cycle", name, NAMES)
-        for wave in (*self.onsite, *self.bonds):
-            for name in sorted(wave.needs - set(have)):
-                raise InputError(
-                    f"a wave uses the parameter {name!r}, which the cycle does not set",
-                    allowed=f"parameters of the cycle: {', '.join(have)}",
-                )
+        require_parameters((*self.onsite, *self.bonds), self.cycle)
+        require(1 <= self.orbitals <= MANY, "orbitals", self.orbitals, f"a whole number from 1 to {MANY}")
+        for name in MATRICES:
+            object.__setattr__(self, name, as_rows(getattr(self, name)))
+        for name in ("onsite_matrix", "conserved"):
+            if getattr(self, name) is not None:
+                as_hermitian(getattr(self, name), self.orbitals, name)
+        for wave in self.onsite:
+            if wave.matrix is not None:
+                as_hermitian(wave.matrix, self.orbitals, "matrix")
+        for matrix in (self.bond_matrix, *(wave.matrix for wave in self.bonds)):
+            if matrix is not None:
+                as_array(matrix, self.orbitals, "matrix")
 
     @property
     def period(self) -> int | None:
         """Smallest number of sites after which all waves repeat, or None if they do not within the chain."""
-        ratios = [Fraction(wave.period).limit_denominator(1000) for wave in (*self.onsite, *self.bonds)]
-        exact = all(
-            abs(float(r) - w.period) < 1e-12 * w.period
-            for r, w in zip(ratios, (*self.onsite, *self.bonds), strict=True)
-        )
-        cell = lcm(*(ratio.numerator for ratio in ratios))
-        return cell if exact and cell <= self.sites else None
+        return common_period((*self.onsite, *self.bonds), self.sites)
 
     def pump(self) -> Pump:
         """Build the kwant system and return it as a `Pump`: probe lead 0, drain lead 1."""
@@ -117,19 +127,32 @@ class ModulatedChain:
             name=self.name,
         )
 
+    @property
+    def _one(self) -> Any:
+        """The unit matrix on the orbitals, or 1."""
+        return 1.0 if self.orbitals == 1 else np.eye(self.orbitals, dtype=complex)
+
+    def _matrix(self, matrix: Matrix) -> Any:
+        """A matrix on the orbitals, or a number where there is one orbital; 0 for None."""
+        if matrix is None:
+            return 0.0
+        found = as_array(matrix, self.orbitals, "matrix")
+        return found[0, 0] if self.orbitals == 1 else found
+
     def _system(self) -> kwant.Builder:
         import kwant
 
-        lattice, system = kwant.lattice.chain(norbs=1), kwant.Builder()
+        lattice, system = kwant.lattice.chain(norbs=self.orbitals), kwant.Builder()
         self._fill(system, lattice, range(self.sites), range(self.sites - 1), self.disorder)
         for lead, outside, inside, direction in ((self.probe, -1, 0, -1), (self.drain, self.sites, self.sites - 1, 1)):
             if isinstance(lead, str):
                 continue
-            system[lattice(outside)] = lead.level
-            system[lattice(outside), lattice(inside)] = -lead.contact
-            wire = kwant.Builder(kwant.TranslationalSymmetry((direction,)))
-            wire[lattice(0)] = lead.level
-            wire[lattice(0), lattice(1)] = -lead.hopping
+            system[lattice(outside)] = lead.level * self._one
+            system[lattice(outside), lattice(inside)] = -lead.contact * self._one
+            law = None if self.conserved is None else as_hermitian(self.conserved, self.orbitals, "conserved")
+            wire = kwant.Builder(kwant.TranslationalSymmetry((direction,)), conservation_law=law)
+            wire[lattice(0)] = lead.level * self._one
+            wire[lattice(0), lattice(1)] = -lead.hopping * self._one
             system.attach_lead(wire)
         return system
 
@@ -137,37 +160,34 @@ class ModulatedChain:
         import kwant
 
         cell = kwant.Builder(kwant.TranslationalSymmetry((period,)))
-        self._fill(cell, kwant.lattice.chain(norbs=1), range(period), range(period), Disorder())
+        self._fill(cell, kwant.lattice.chain(norbs=self.orbitals), range(period), range(period), Disorder())
         return cell
 
     def _fill(self, builder: Any, lattice: Any, sites: range, bonds: range, disorder: Disorder) -> None:
+        one, names = self._one, self.cycle.names
         onsite_noise = _noise(disorder.onsite, len(sites), f"onsite {disorder.seed}")
         bond_noise = _noise(disorder.bonds, len(bonds), f"bonds {disorder.seed}")
-        onsite = self._sum(self.onsite, lambda x, value: self.level + value + onsite_noise[x])
-        bond = self._sum(self.bonds, lambda x, value: -(self.hopping + value + bond_noise[x]))
-        onsite_value = _with_parameters(lambda site, *values: onsite(site.tag[0], 0.0, values), 1, self.cycle.names)
-        bond_value = _with_parameters(
-            lambda right, left, *values: bond(min(right.tag[0], left.tag[0]), 0.5, values), 2, self.cycle.names
-        )
-        builder[(lattice(x) for x in sites)] = onsite_value
-        builder[((lattice(x + 1), lattice(x)) for x in bonds)] = bond_value
+        waves, hopping_waves = wave_sum(self.onsite, names, one), wave_sum(self.bonds, names, one)
+        level = self.level * one + self._matrix(self.onsite_matrix)
+        hopping = self.hopping * one + self._matrix(self.bond_matrix)
 
-    def _sum(self, waves: Sequence[Wave], finish: Callable[[int, Any], Any]) -> Callable[[int, float, Any], Any]:
-        """Return (x, offset, parameter values) -> the waves' sum at x + offset, handed to `finish`."""
-        place = {name: i for i, name in enumerate(self.cycle.names)}
-        terms = [(place.get(str(w.amplitude)), w.amplitude, w.period, w.lag, w.harmonic) for w in waves]
-        phi = place.get("phi")
+        def onsite(site: Any, *values: Any) -> Any:
+            x = site.tag[0]
+            return level + onsite_noise[x] * one + waves(x, 0.0, values)
 
-        def total(x: int, offset: float, values: Any) -> Any:
-            result: Any = 0.0
-            for named, amplitude, period, lag, harmonic in terms:
-                angle = 2 * pi * ((x % period + offset) / period) + lag
-                if harmonic and phi is not None:
-                    angle = angle - harmonic * values[phi]
-                result = result + (amplitude if named is None else values[named]) * np.cos(angle)
-            return finish(x, result)
+        def bond(to: Any, fro: Any, *values: Any) -> Any:
+            x = min(to.tag[0], fro.tag[0])
+            value = -(hopping + bond_noise[x] * one + hopping_waves(x, 0.5, values))
+            return value if to.tag[0] < fro.tag[0] else _adjoint(value)
 
-        return total
+        builder[(lattice(x) for x in sites)] = with_parameters(onsite, 1, names)
+        builder[((lattice(x + 1), lattice(x)) for x in bonds)] = with_parameters(bond, 2, names)
+
+
+def _adjoint(value: Any) -> Any:
+    """The conjugate transpose of a matrix, of each in a stack, or of a number."""
+    turned = np.conj(value)
+    return turned.swapaxes(-1, -2) if turned.ndim > 1 else turned
 
 
 def _noise(width: float, count: int, salt: str) -> np.ndarray[Any, np.dtype[np.float64]]:
@@ -176,12 +196,3 @@ def _noise(width: float, count: int, salt: str) -> np.ndarray[Any, np.dtype[np.f
     import kwant.digest
 
     return np.array([width * (kwant.digest.uniform(str(x), salt) - 0.5) for x in range(count)])
-
-
-def _with_parameters(function: Callable[..., Any], places: int, names: Sequence[str]) -> Callable[..., Any]:
-    """Give a value function the signature (site(s), *names) that kwant reads parameter names from."""
-    free = (f"site_{i}" for i in range(places + len(names)) if f"site_{i}" not in names)
-    parts = [Parameter(next(free), Parameter.POSITIONAL_ONLY) for _ in range(places)]
-    parts += [Parameter(name, Parameter.POSITIONAL_OR_KEYWORD) for name in names]
-    function.__signature__ = Signature(parts)  # type: ignore[attr-defined]  # the protocol inspect.signature reads
-    return function

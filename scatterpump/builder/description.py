@@ -9,10 +9,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any, ClassVar
 
+from scatterpump.builder.matrix import Matrix, as_rows
 from scatterpump.cycle import is_name
 from scatterpump.errors import InputError
 
-__all__ = ["LARGEST", "Disorder", "Lead", "Wave", "require"]
+__all__ = ["LARGEST", "Disorder", "Lead", "SheetLead", "Wave", "require"]
 
 LARGEST = 1e60
 SMALLEST = 1e-60
@@ -46,17 +47,21 @@ class Wave:
         Phase offset in radians.
     harmonic : int
         n: how often the wave moves on by its period in one cycle; 0 for a wave that stands.
+    matrix : Matrix
+        What it multiplies on the orbitals of a site or bond; None for all of them alike.
     """
 
     amplitude: float | str
     period: float
     lag: float = 0.0
     harmonic: int = 1
+    matrix: Matrix = None
 
     __pydantic_config__: ClassVar[Any] = {"extra": "forbid"}
 
     def __post_init__(self) -> None:
         _finite(self, "amplitude", "period", "lag")
+        object.__setattr__(self, "matrix", as_rows(self.matrix))
         require(self.period > 0, "period", self.period, "a positive number of lattice constants")
         require(
             not isinstance(self.amplitude, str) or is_name(self.amplitude),
@@ -96,6 +101,29 @@ class Lead:
         _finite(self, "hopping", "level", "contact")
         require(self.hopping > SMALLEST, "hopping", self.hopping, "a positive energy")
         require(self.contact > SMALLEST, "contact", self.contact, "a positive energy, as a closed lead pumps nothing")
+
+
+@dataclass(frozen=True)
+class SheetLead(Lead):
+    """A lead as wide as a ribbon or a cylinder: rows of uniform wires, tied to each other.
+
+    Parameters
+    ----------
+    across : float or None
+        Hopping between the rows; None for the same as along them, 0 for separate wires.
+    """
+
+    across: float | None = None
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        if self.across is not None:
+            _finite(self, "across")
+
+    @property
+    def tie(self) -> float:
+        """Hopping between the rows."""
+        return self.hopping if self.across is None else self.across
 
 
 @dataclass(frozen=True)

@@ -1,8 +1,9 @@
 """Chern number of the filled bands on the (k, phi) torus, by the lattice method.
 
-On a grid, F = Im log of the product of link overlaps round each plaquette, in the order (k, phi), and C = sum F / 2
-pi: an integer by construction, the right one once no plaquette comes near half a turn.  With this orientation C is
-the winding that an endless pump would show, C = +W.
+On a grid, F = Im log of the product of links round each plaquette, in the order (k, phi), and C = sum F / 2 pi: an
+integer by construction, the right one once no plaquette comes near half a turn.  The links are the unitary parts of the
+filled states' overlaps, as matrices: log is taken of every eigenvalue of their product.  With this orientation C is the
+winding that an endless pump would show, C = +W.
 
 References: T. Fukui, Y. Hatsugai, H. Suzuki, J. Phys. Soc. Jpn. 74, 1674 (2005).
 """
@@ -25,7 +26,7 @@ SAFE_PLAQUETTE = 1.0
 def chern_number(pump: Pump) -> int:
     """Return the Chern number of all bands below the Fermi level.
 
-    The grid is doubled until no plaquette carries more than 1 rad.
+    The grid is doubled until no band gains more than 1 rad round any plaquette.
 
     Raises
     ------
@@ -47,7 +48,10 @@ def chern_number(pump: Pump) -> int:
 
 
 def plaquettes(states: NDArray[np.complex128]) -> NDArray[np.float64]:
-    """Return the Berry flux of each plaquette.
+    """Return the Berry phases of each plaquette, one for each filled band, shape (n_k, n_phi, filled).
+
+    They are the angles of the eigenvalues of the product of links: their sum is the flux, up to whole turns, and none
+    of them grows with the number of bands, as the flux does.
 
     Parameters
     ----------
@@ -56,13 +60,16 @@ def plaquettes(states: NDArray[np.complex128]) -> NDArray[np.float64]:
     """
     along_k = _links(states, np.roll(states, -1, axis=0))
     along_phi = _links(states, np.roll(states, -1, axis=1))
-    loop = along_k * np.roll(along_phi, -1, axis=0) / (np.roll(along_k, -1, axis=1) * along_phi)
-    return np.angle(loop)
+    there = along_k @ np.roll(along_phi, -1, axis=0)
+    back = along_phi @ np.roll(along_k, -1, axis=1)
+    phases: NDArray[np.float64] = np.angle(np.linalg.eigvals(back.conj().swapaxes(-1, -2) @ there))
+    return phases
 
 
 def _links(here: NDArray[np.complex128], there: NDArray[np.complex128]) -> NDArray[np.complex128]:
-    overlap = np.linalg.det(here.conj().swapaxes(-1, -2) @ there)
-    return np.asarray(overlap / np.abs(overlap))
+    """The unitary parts of the overlaps, shape (n_k, n_phi, filled, filled)."""
+    left, _, right = np.linalg.svd(here.conj().swapaxes(-1, -2) @ there)
+    return np.asarray(left @ right)
 
 
 def _filled_states(cell: BlochCell, n_k: int, n_phi: int) -> NDArray[np.complex128]:

@@ -27,7 +27,7 @@ def example(name: str | None) -> None:
         return
     if name not in known:
         raise InputError(f"there is no example {name!r}", allowed=", ".join(known))
-    wanted = [item for item in shelf.iterdir() if item.name in (f"{name}.toml", f"{name}.csv")]
+    wanted = [item for item in shelf.iterdir() if item.name in (f"{name}.toml", f"{name}.csv", f"{name}.py")]
     for item in wanted:
         if Path(item.name).exists():
             raise InputError("the file is already there", allowed="a folder without it", where=item.name)

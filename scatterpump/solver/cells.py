@@ -1,47 +1,26 @@
 """Where the layers of a device repeat: the longest run of equal cells (arrays only).
 
 Everything known about a layer, its own block and the one that couples it to the next, stands in one row of a table:
-places, and for each place the part that stands still and the coefficients of the part that moves.  A run is found by
-one number a layer, and then verified entry by entry.
+places, and for each place the part that stands still and the coefficients of the part that moves.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.solver.blocks import Blocks
+from scatterpump.solver.period import Run, longest_run
 
-__all__ = ["LayerTable", "Run", "layer_table", "longest_run"]
+__all__ = ["LayerTable", "layer_table", "repeated_cells"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 SAME = 1e-11  # of the largest element: what rounding of 2 pi x / p does to a wave after thousands of sites
-ALIKE = 1e-9
 LONGEST_CELL = 64
 FEWEST_CELLS = 3
-
-
-@dataclass(frozen=True)
-class Run:
-    """Equal cells one after the other.
-
-    Attributes
-    ----------
-    first : int
-        First layer of the first cell.
-    length : int
-        Layers a cell.
-    repeats : int
-        Number of cells.
-    """
-
-    first: int
-    length: int
-    repeats: int
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,42 +74,12 @@ def layer_table(blocks: Blocks, coefficients: Complex) -> LayerTable:
     return LayerTable(places, table)
 
 
-def longest_run(table: LayerTable) -> Run | None:
-    """Return the run that covers most layers, with the shortest cell that does; None for fewer than three cells."""
-    marks = _marks(table)
-    best, most = None, 0
-    for length in range(1, min(LONGEST_CELL, len(marks) // FEWEST_CELLS) + 1):
-        alike = np.abs(marks[length:] - marks[:-length]) <= ALIKE * np.abs(marks).max(initial=1e-300)
-        start, stop = _longest_stretch(alike)
-        repeats = (stop - start + length) // length
-        if repeats >= FEWEST_CELLS and repeats * length > most + LONGEST_CELL * (most > 0):
-            best, most = Run(start, length, repeats), repeats * length
-    return best if best is not None and _verified(table, best) else None
-
-
-def _marks(table: LayerTable) -> Complex:
-    """One number a layer, nearly equal for equal layers."""
-    weights = 1 + np.arange(1, table.values[0].size + 1) * 0.6180339887498949 % 1
-    where = 1 + table.places * 0.7548776662466927 % 1
-    marks: NDArray[Any] = (table.values * where[..., None]).reshape(len(table.places), -1) @ weights
-    lone = np.abs(marks).max(initial=1.0) * np.arange(len(marks))
-    return np.where(table.places[:, -1] < -1, lone, marks)
-
-
-def _longest_stretch(true: NDArray[np.bool_]) -> tuple[int, int]:
-    """Start and end of the longest stretch of True."""
-    edges = np.flatnonzero(np.diff(np.concatenate([[False], true, [False]]).astype(int)))
-    starts, stops = edges[::2], edges[1::2]
-    if not starts.size:
-        return 0, 0
-    longest = int((stops - starts).argmax())
-    return int(starts[longest]), int(stops[longest])
-
-
-def _verified(table: LayerTable, run: Run) -> bool:
-    """Whether every layer of the run is that of its first cell, entry by entry."""
-    layers = run.first + np.arange(run.length * run.repeats)
-    model = run.first + (layers - run.first) % run.length
-    scale = np.abs(table.values).max()
-    same = np.abs(table.values[layers] - table.values[model]).max() <= SAME * scale
-    return bool(same and (table.places[layers] == table.places[model]).all())
+def repeated_cells(table: LayerTable) -> Run | None:
+    """Return the longest run of at least three equal cells, or None."""
+    rows = np.concatenate([table.places[..., None], table.values], axis=2)
+    scale, count = float(np.abs(table.values).max(initial=0.0)), len(rows)
+    rows[..., 0] *= scale  # places differ by far more than a rounding
+    counted = np.ones(count, dtype=bool), np.zeros(count - 1, dtype=bool)
+    hops = [np.zeros((1, 1), dtype=complex)] * (count - 1)  # they stand in the rows
+    run = longest_run(list(rows), hops, counted, longest_cell=LONGEST_CELL, same=SAME)
+    return run if run is not None and run.repeats >= FEWEST_CELLS else None

@@ -38,6 +38,9 @@ def driven_path(pump: Pump) -> tuple[DrivenHamiltonian, Path]:
     return found
 
 
+LARGEST = 1e60  # squares and determinants of what is larger leave the range of floating point
+
+
 class DrivenHamiltonian:
     """Matrix elements of H along a pump's cycle.
 
@@ -118,8 +121,10 @@ class DrivenHamiltonian:
             )
         except Exception as cause:  # a user's value function may raise anything
             raise SolverError(phase, parameters, cause) from cause
-        if not np.isfinite(found.data).all():
-            raise SolverError(phase, parameters, ValueError("the Hamiltonian has elements that are not finite"))
+        if not (np.abs(found.data) < LARGEST).all():
+            raise SolverError(
+                phase, parameters, ValueError(f"the Hamiltonian has elements that are not finite, or above {LARGEST:g}")
+            )
         return found, np.concatenate([[0], np.cumsum(count)])
 
     def _undriven(self, places: Indices) -> Complex:
@@ -143,7 +148,7 @@ class DrivenHamiltonian:
                 found = self._walked(self._driven, _stacked(scalars), len(phases))
         except Exception:  # anything: the function was not written for arrays, and is asked phase by phase instead
             return None
-        if not np.isfinite(found).all():  # asked phase by phase, the failure is told where it happens
+        if not (np.abs(found) < LARGEST).all():  # asked phase by phase, the failure is told where it happens
             return None
         for place in (len(phases) // 2 + 1, len(phases) - 1):
             if not self._agrees(found[place], scalars[place]):

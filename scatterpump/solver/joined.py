@@ -12,8 +12,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.errors import InputError
-from scatterpump.solver.cells import Run
 from scatterpump.solver.doubling import Load, Scattering, behind, closed_by, endless, ports, repeated, segment
+from scatterpump.solver.period import Run
 from scatterpump.solver.problem import Problem
 from scatterpump.solver.sweep import between, eliminated
 

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
 
-__all__ = ["Border", "Layers", "bordered", "layer", "lead_border"]
+__all__ = ["Border", "Layers", "bordered", "distances", "layer", "lead_border"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
@@ -115,7 +115,7 @@ class Layers:
 def layer(driven: DrivenHamiltonian, probe: Border, others: list[Border]) -> Layers:
     """Sort orbitals and mode amplitudes into layers, beginning at the probe's interface."""
     rows, columns, values, outgoing, size = bordered(driven.size, others)
-    level = _distances(
+    level = distances(
         np.concatenate([driven.rows, rows]), np.concatenate([driven.columns, columns]), size, probe.orbitals
     )
     order = np.argsort(level, kind="stable")
@@ -153,7 +153,7 @@ def bordered(size: int, others: list[Border]) -> tuple[Indices, Indices, Complex
     )
 
 
-def _distances(rows: Indices, columns: Indices, size: int, start: Indices) -> Indices:
+def distances(rows: Indices, columns: Indices, size: int, start: Indices) -> Indices:
     """Hops from `start` to every unknown, -1 where no path leads."""
     from scipy.sparse import coo_matrix
     from scipy.sparse.csgraph import dijkstra

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from scatterpump.errors import ClosedProbeError, InputError
+from scatterpump.errors import ClosedProbeError, InputError, told
 from scatterpump.pump import Pump
 
 __all__ = ["varying_leads", "with_modes"]
@@ -21,12 +21,13 @@ def with_modes(pump: Pump) -> Any:
     ClosedProbeError
         If the probe has no open mode there.
     InputError
-        If a lead depends on a parameter of the cycle.
+        If a lead depends on a parameter of the cycle, or a parameter of the system has no value.
     """
     return pump.once("modes", lambda: _with_modes(pump))
 
 
 def _with_modes(pump: Pump) -> Any:
+    _require_parameters(pump)
     varying = varying_leads(pump)
     if varying:
         lead, names = varying[0]
@@ -38,13 +39,23 @@ def _with_modes(pump: Pump) -> Any:
         system = pump.finalized.precalculate(pump.fermi_level, params=pump.parameters(0.0), what="modes")
     except Exception as cause:  # kwant meets modes without velocity at a band edge, or a user's value function fails
         raise InputError(
-            f"the modes of the leads cannot be computed at the Fermi level {pump.fermi_level:g} ({cause})",
+            f"the modes of the leads cannot be computed at the Fermi level {pump.fermi_level:g} ({told(cause)})",
             allowed="an energy away from every lead's band edges",
         ) from cause
     propagating, _ = system.leads[pump.probe].modes(pump.fermi_level)
     if len(propagating.momenta) == 0:
         raise ClosedProbeError(pump.fermi_level, pump.probe)
     return system
+
+
+def _require_parameters(pump: Pump) -> None:
+    needed = frozenset[str]().union(*(part.parameters for part in (pump.finalized, *pump.finalized.leads)))
+    missing = sorted(needed - set(pump.parameters(0.0)))
+    if missing:
+        raise InputError(
+            f"nothing sets the parameter(s) {', '.join(missing)} of the system",
+            allowed="values for all of them, from the cycle or from the pump's constants",
+        )
 
 
 def varying_leads(pump: Pump) -> list[tuple[int, list[str]]]:

@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 from scatterpump.cycle import Cycle
 from scatterpump.solver.harmonics import HIGHEST, Harmonics, fit
 
-__all__ = ["Path", "SampledPath", "Slopes", "StraightPath", "TrigonometricPath", "follow", "moving"]
+__all__ = ["Path", "SampledPath", "Slopes", "StraightPath", "TrigonometricPath", "description", "follow", "moving"]
 
 Entries = NDArray[np.complex128]
 Floats = NDArray[np.float64]
@@ -308,6 +308,19 @@ def moving(path: Path) -> NDArray[np.bool_]:
     return np.asarray(path.variation() > STILL * np.abs(path.at(0.0)))
 
 
+def description(path: Path, samples: int = 0) -> Entries | None:
+    """Return numbers that say all about a path, shape (s, nnz): its Fourier coefficients, or its corners.
+
+    Of a sampled path no such numbers are known: its values at so many even phases, or None for no `samples`.
+    """
+    match path:
+        case TrigonometricPath():
+            return path.harmonics.coefficients
+        case StraightPath():
+            return path.points
+    return np.asarray(path.many(TURN * np.arange(samples) / samples), dtype=complex) if samples else None
+
+
 def follow(sample: Sample, cycle: Cycle) -> Path:
     """Find out what kind of path H takes along `cycle`, from samples of its matrix elements, shape (n, nnz)."""
     corners = np.array(cycle.corners)
@@ -330,7 +343,7 @@ def _is_straight(path: StraightPath, sample: Sample) -> bool:
 def _parameters(cycle: Cycle) -> Floats:
     """Numbers among the parameters of a cycle at many even phases, shape (FINE + 1, parameters)."""
     rows = [cycle.at(float(phase)) for phase in np.linspace(0.0, TURN, FINE + 1)]
-    numbers = [name for name, value in rows[0].items() if isinstance(value, int | float | np.number)]
+    numbers = [name for name in rows[0] if all(isinstance(row.get(name), int | float | np.number) for row in rows)]
     return np.array([[float(row[name]) for name in numbers] for row in rows]).reshape(FINE + 1, len(numbers))
 
 

@@ -11,11 +11,12 @@ from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
 from scatterpump.solver.blocks import Blocks
-from scatterpump.solver.cells import Run, layer_table, longest_run
+from scatterpump.solver.cells import layer_table, repeated_cells
 from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.solver.layers import Border, Layers, layer, lead_border
 from scatterpump.solver.modes import with_modes
-from scatterpump.solver.path import Path, StraightPath, TrigonometricPath, moving
+from scatterpump.solver.path import Path, description, moving
+from scatterpump.solver.period import Run
 
 __all__ = ["Problem", "assemble", "borders", "prepare"]
 
@@ -69,7 +70,7 @@ class Problem:
     @cached_property
     def run(self) -> Run | None:
         """The longest run of equal cells, if the path is known so well that equal cells can be told."""
-        return None if self.known is None else longest_run(layer_table(self.blocks, self.known))
+        return None if self.known is None else repeated_cells(layer_table(self.blocks, self.known))
 
     def reaches_beyond(self, run: Run) -> bool:
         """Whether every lead but the probe is attached beyond the run, up to its last cell."""
@@ -119,15 +120,4 @@ def assemble(pump: Pump, probe: Border, layers: Layers) -> Problem:
     place = np.where(moves, np.cumsum(moves) - 1, -1)
     blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, still, place, driven.size)
     own = path.only(np.flatnonzero(moves))
-    return Problem(own, layers, probe, blocks, pump.fermi_level, _known(own))
-
-
-def _known(path: Path) -> Complex | None:
-    """Numbers that say all about a path: its Fourier coefficients, or its corners."""
-    match path:
-        case TrigonometricPath():
-            return path.harmonics.coefficients
-        case StraightPath():
-            return path.points
-        case _:
-            return None
+    return Problem(own, layers, probe, blocks, pump.fermi_level, description(own))
