@@ -1,10 +1,11 @@
 """The fast engine: r(phi) and t(phi) for many phases at once, layer by layer from the far end.
 
-Three ways lead to the device as the probe sees it, a wave returned for each wave that enters:
+Four ways lead to the device as the probe sees it, a wave returned for each wave that enters:
 
 * a sweep over all layers (`elimination`), in chunks of phases;
 * where the device repeats a cell often, the cells are joined by doubling (`doubling`), and only the ends are swept;
-* phases at which a sweep lost too many digits are done again by a pivoted sparse factorisation (`pivoted`).
+* wide layers are left to a pivoted sparse factorisation for each phase (`schur`), and so are phases at which a sweep
+  lost too many digits.
 
 Memory: a chunk of n phases needs about 16 n (E + 6 w^2) bytes, for E elements of H that move and layers of w
 unknowns; n is chosen so that this is 128 MiB at most, and so that the blocks of one layer stay in the processor's cache.
@@ -14,13 +15,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
-from math import log2
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
+from scatterpump.solver import cost
 from scatterpump.solver.blocks import Blocks
 from scatterpump.solver.cells import Run, layer_table, longest_run
 from scatterpump.solver.doubling import Load, behind, closed_by, closed_by_pair, ports, repeated, segment
@@ -30,7 +31,7 @@ from scatterpump.solver.layers import Border, Layers, layer, lead_border
 from scatterpump.solver.matching import match
 from scatterpump.solver.modes import with_modes
 from scatterpump.solver.path import Path, StraightPath, TrigonometricPath, moving
-from scatterpump.solver.pivoted import factorised
+from scatterpump.solver.schur import SparseDevice
 from scatterpump.solver.trace import ReflectionTrace
 
 __all__ = ["Problem", "prepare", "solve", "solve_prepared"]
@@ -41,8 +42,6 @@ Floats = NDArray[np.float64]
 MEMORY = 128 * 2**20
 CACHE = 2**20
 LOST_DIGITS = 1e5
-WIDE = 120
-REAL, ENDS, JOIN = 0.6, 5.0, 5.0  # measured for layers of 10 to 100
 
 
 @dataclass(frozen=True, eq=False)
@@ -55,12 +54,15 @@ class Problem:
         Of the elements of H that move.
     layers : Layers
     probe : Border
+    others : list of Border
+        All leads but the probe.
     blocks : Blocks
     """
 
     path: Path
     layers: Layers
     probe: Border
+    others: list[Border]
     blocks: Blocks
 
     @property
@@ -69,16 +71,16 @@ class Problem:
         return bool((self.layers.widths == 1).all())
 
     @property
-    def is_wide(self) -> bool:
-        """Whether the layers are so wide that a sparse factorisation is expected to be cheaper."""
-        return int(self.layers.widths.max()) > WIDE
-
-    @property
     def chunk(self) -> int:
         """Phases to be solved together."""
         widest = float(self.layers.widths.max()) ** 2
         elements = self.blocks.place.max(initial=0) + 1
         return max(1, min(MEMORY // int(16 * (elements + 6 * widest)), max(16, int(CACHE / (16 * widest)))))
+
+    @cached_property
+    def sparse(self) -> SparseDevice:
+        """The whole device as one sparse problem."""
+        return SparseDevice(self.blocks, [self.probe, *self.others])
 
     @cached_property
     def run(self) -> Run | None:
@@ -98,11 +100,22 @@ class Problem:
 
     @property
     def doubling_pays(self) -> bool:
-        """Whether joining cells is expected to be cheaper than a sweep, in units of one layer's inversion."""
+        """Whether joining cells is expected to be cheaper than a sweep."""
         if self.run is None or self.single:
             return False
-        sweep = self.run.repeats * self.run.length * (REAL if self.blocks.real_below else 1.0)
-        return sweep > ENDS * self.run.length + JOIN * log2(self.run.repeats)
+        inside = self.layers.widths[self.run.first :][: self.run.repeats * self.run.length]
+        swept = cost.sweep(inside, is_real=self.blocks.real_below > 0, transmission=False)
+        return swept > cost.joins(inside[: self.run.length], self.run.repeats)
+
+    def schur_pays(self, *, transmission: bool) -> bool:
+        """Whether a sparse Schur complement for each phase is expected to be cheaper than the other ways."""
+        widths = self.layers.widths
+        if self.single:
+            return False
+        others = cost.sweep(widths, is_real=self.blocks.real_below > 0, transmission=transmission)
+        if self.run and self.doubling_pays and (self.reaches_beyond(self.run) or not transmission):
+            others = cost.joins(widths[self.run.first :][: self.run.length], self.run.repeats)
+        return cost.complement(widths) < others
 
     def wanted(self, first: int) -> list[Complex]:
         """For the layers from `first` on, which of their unknowns are open outgoing modes, shapes (k, w)."""
@@ -143,7 +156,7 @@ def prepare(pump: Pump) -> Problem:
     still = np.where(moves, 0.0, path.at(0.0))
     place = np.where(moves, np.cumsum(moves) - 1, -1)
     blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, still, place, driven.size)
-    return Problem(path.only(np.flatnonzero(moves)), layers, probe, blocks)
+    return Problem(path.only(np.flatnonzero(moves)), layers, probe, others, blocks)
 
 
 def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[Complex, Complex]:
@@ -157,9 +170,8 @@ def _solve_chunk(problem: Problem, phases: Floats, transmission: bool) -> tuple[
             healthy = (growth < LOST_DIGITS) & np.isfinite(r).all(axis=(1, 2)) & np.isfinite(t).all(axis=(1, 2))
         except np.linalg.LinAlgError:
             healthy = np.zeros(len(phases), dtype=bool)
-    wanted = np.hstack(problem.wanted(0))[:rows]
     for i in np.flatnonzero(~healthy):
-        r[[i]], t[[i]] = match(problem.probe, factorised(problem.blocks, elements[[i]], problem.probe.hop, wanted))
+        r[[i]], t[[i]] = match(problem.probe, problem.sparse.load(elements[[i]], transmission=rows > 0))
     return r, t
 
 
@@ -171,6 +183,8 @@ def _swept(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, 
         diagonal, lower, upper = (blocks.band(step, elements) for step in (0, 1, -1))
         found = eliminate_single(diagonal, lower, upper, count, real_below=real_below, amplitude=amplitude)
         return closed_by_pair(found, problem.probe.hop, amplitude), np.ones(count)
+    if problem.schur_pays(transmission=amplitude):
+        return problem.sparse.load(elements, transmission=amplitude), np.ones(count)
     if problem.run and problem.doubling_pays and (problem.reaches_beyond(problem.run) or not amplitude):
         return _joined(problem, elements, problem.run, problem.run.repeats - 2, amplitude)
     here, amplitudes, growth = _eliminated(problem, elements, 0, amplitude)

@@ -28,8 +28,8 @@ def reflect(pump: Pump, phases: ArrayLike, *, engine: Engine = "auto", transmiss
         Radians.
     engine : "auto", "layered" or "direct"
         "direct" is kwant's own solver, one phi at a time: the reference.  "layered" eliminates all phases at once,
-        layer by layer.  "auto" takes "layered", but "direct" for up to four phases and where layers are so wide that a
-        sparse factorisation is cheaper.  The trace says which one ran.
+        layer by layer, or shares one analysis among sparse factorisations where layers are wide.  "auto" takes
+        "layered", but "direct" for up to four phases.  The trace says which one ran.
     transmission : bool
         Whether t is wanted as well; without it the trace's ``transmission`` has no rows.
 
@@ -56,6 +56,4 @@ def reflect(pump: Pump, phases: ArrayLike, *, engine: Engine = "auto", transmiss
     if engine == "direct" or (engine == "auto" and len(points) <= FEW):
         return direct.solve(pump, points, transmission=transmission)
     problem = layered.prepare(pump)
-    if engine == "auto" and problem.is_wide:
-        return direct.solve(pump, points, transmission=transmission)
     return layered.solve_prepared(problem, points, transmission=transmission)
