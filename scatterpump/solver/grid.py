@@ -15,9 +15,10 @@ from numpy.typing import NDArray
 from scatterpump.pump import Pump
 from scatterpump.solver.blocks import Blocks
 from scatterpump.solver.hamiltonian import driven_path
-from scatterpump.solver.layered import solve_elements, solve_prepared
+from scatterpump.solver.layered import factorised, require_finite, solve_elements, solve_prepared
 from scatterpump.solver.layers import Border, Layers, bordered, layer
 from scatterpump.solver.problem import Problem, assemble, borders
+from scatterpump.solver.sweep import swept
 from scatterpump.solver.trace import ReflectionTrace
 
 __all__ = ["solve_grid"]
@@ -63,10 +64,9 @@ def solve_grid(pump: Pump, energies: Floats, phases: Floats, *, transmission: bo
 
 def _by_phases(group: list[Lane], layers: Layers, phases: Floats, transmission: bool) -> dict[int, ReflectionTrace]:
     """Energies one by one, all phases together."""
-    driven, _ = driven_path(group[0].pump)
     return {
         lane.index: solve_prepared(
-            assemble(lane.pump, lane.probe, replace(layers, values=bordered(driven.size, lane.others)[2])),
+            _alone(lane, layers),
             phases,
             transmission=transmission,
         )
@@ -77,7 +77,7 @@ def _by_phases(group: list[Lane], layers: Layers, phases: Floats, transmission: 
 def _together(group: list[Lane], layers: Layers, phases: Floats, transmission: bool) -> dict[int, ReflectionTrace]:
     """All energies and phases in one sweep, in chunks of whole energies."""
     driven, _ = driven_path(group[0].pump)
-    plain = assemble(group[0].pump, group[0].probe, layers)
+    plain = assemble(group[0].pump, group[0].probe, group[0].others, layers)
     model, on_site = _with_energies(plain), _moving_diagonal(plain.blocks)[1]
     moving, size = model.path.many(phases), max(1, model.chunk // len(phases))
     found = {}
@@ -87,11 +87,25 @@ def _together(group: list[Lane], layers: Layers, phases: Floats, transmission: b
         elements = np.hstack([np.tile(moving, (len(some), 1)), np.repeat(extra, len(phases), axis=0)])
         elements[:, on_site] -= np.repeat([lane.pump.fermi_level for lane in some], len(phases))[:, None]
         problem = replace(model, probe=_stacked([lane.probe for lane in some], len(phases)))
-        r, t = solve_elements(problem, elements, transmission=transmission)
+
+        def redo(row: int, some: list[Lane] = some) -> tuple[Complex, Complex]:
+            return factorised(
+                _alone(some[row // len(phases)], layers), moving[[row % len(phases)]], transmission=transmission
+            )
+
+        r, t = solve_elements(problem, elements, transmission=transmission, sweep=swept, redo=redo)
         for i, lane in enumerate(some):
             own = slice(i * len(phases), (i + 1) * len(phases))
+            require_finite(lane.pump, phases, r[own])
             found[lane.index] = ReflectionTrace(phases, r[own], t[own], len(phases), "layered", lane.pump.fermi_level)
     return found
+
+
+def _alone(lane: Lane, layers: Layers) -> Problem:
+    """The problem of one energy."""
+    driven, _ = driven_path(lane.pump)
+    own = replace(layers, values=bordered(driven.size, lane.others)[2])
+    return assemble(lane.pump, lane.probe, lane.others, own)
 
 
 def _with_energies(problem: Problem) -> Problem:

@@ -1,10 +1,11 @@
 """The fast engine: r(phi) and t(phi) for many phases at once, layer by layer from the far end.
 
-Three ways lead to the device as the probe sees it, a wave returned for each wave that enters:
+Four ways lead to the device as the probe sees it, a wave returned for each wave that enters:
 
 * a sweep over all layers (`sweep`);
 * where the device repeats a cell often, the cells are joined by doubling (`joined`), and only the ends are swept;
-* phases at which a sweep lost too many digits are done again by a pivoted sparse factorisation (`pivoted`).
+* wide layers are left to a pivoted sparse factorisation for each phase (`schur`), and so are phases at which a sweep
+  lost too many digits.
 
 Memory: a chunk of n phases needs about 16 n (E + 6 w^2) bytes, for E elements of H that move and layers of w
 unknowns; n is chosen so that this is 128 MiB at most, and that the blocks of a layer stay in the processor's cache.
@@ -18,21 +19,29 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.errors import ClosedGapError
+from scatterpump.errors import ClosedGapError, SolverError
 from scatterpump.pump import Pump
 from scatterpump.solver.doubling import Load
 from scatterpump.solver.joined import joined, joined_endless, run_of
 from scatterpump.solver.matching import match
-from scatterpump.solver.pivoted import factorised
 from scatterpump.solver.problem import Problem, prepare
 from scatterpump.solver.sweep import swept
 from scatterpump.solver.trace import ReflectionTrace
 
-__all__ = ["solve", "solve_elements", "solve_endless", "solve_prepared", "solve_repeated"]
+__all__ = [
+    "factorised",
+    "require_finite",
+    "solve",
+    "solve_elements",
+    "solve_endless",
+    "solve_prepared",
+    "solve_repeated",
+]
 
 Complex = NDArray[np.complex128]
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Floats = NDArray[np.float64]
+Sweep = Callable[[Problem, Numbers, bool], tuple[Load, Floats]]
 LOST_DIGITS = 1e5
 
 
@@ -97,30 +106,62 @@ def _in_chunks(
 ) -> ReflectionTrace:
     parts = [solve_chunk(phases[i : i + problem.chunk]) for i in range(0, len(phases), problem.chunk)]
     reflection, passed = (np.concatenate(found) for found in zip(*parts, strict=True))
-    return ReflectionTrace(phases, reflection, passed, len(phases), "layered", problem.energy)
+    require_finite(problem.pump, phases, reflection)
+    return ReflectionTrace(phases, reflection, passed, len(phases), "layered", problem.pump.fermi_level)
 
 
-def solve_elements(problem: Problem, elements: Numbers, *, transmission: bool) -> tuple[Complex, Complex]:
-    """Return r and t for each row of `elements`, the moving elements of H."""
+def require_finite(pump: Pump, phases: Floats, reflection: Complex) -> None:
+    """Raise a `SolverError` for the first phase without an answer."""
+    failed = np.flatnonzero(~np.isfinite(reflection).all(axis=(1, 2)))
+    if failed.size:
+        phase = float(phases[failed[0]])
+        cause = ArithmeticError("the device is singular to the last digit: a level at the Fermi level that is cut off")
+        raise SolverError(phase, pump.parameters(phase), cause)
+
+
+def solve_elements(
+    problem: Problem,
+    elements: Numbers,
+    *,
+    transmission: bool,
+    sweep: Sweep | None = None,
+    redo: Callable[[int], tuple[Complex, Complex]] | None = None,
+) -> tuple[Complex, Complex]:
+    """Return r and t for each row of `elements`, the moving elements of H; NaN where the device is singular.
+
+    Parameters
+    ----------
+    sweep : callable, optional
+        How the device becomes a load; the way that is expected to be fastest.
+    redo : callable, optional
+        How a row at which digits were lost is done again; by a sparse factorisation.
+    """
     rows = len(problem.layers.outgoing) if transmission else 0
     r, t = (np.zeros((len(elements), k, problem.probe.channels), dtype=complex) for k in (problem.probe.channels, rows))
     with np.errstate(all="ignore"):
         try:
-            device, growth = _device(problem, elements, rows > 0)
+            device, growth = (sweep or _fastest)(problem, elements, rows > 0)
             r, t = match(problem.probe, device)
             healthy = (growth < LOST_DIGITS) & np.isfinite(r).all(axis=(1, 2)) & np.isfinite(t).all(axis=(1, 2))
         except np.linalg.LinAlgError:
             healthy = np.zeros(len(elements), dtype=bool)
-    wanted = np.hstack(problem.wanted(0))[:rows]
-    for i in np.flatnonzero(~healthy):
-        r[[i]], t[[i]] = match(
-            problem.probe.lane(int(i)), factorised(problem.blocks, elements[[i]], problem.probe.hop, wanted)
-        )
+    for i in np.flatnonzero(~healthy).tolist():
+        try:
+            r[[i]], t[[i]] = redo(i) if redo else factorised(problem, elements[[i]], transmission=transmission)
+        except (np.linalg.LinAlgError, RuntimeError):  # SciPy's factorisation raises the second
+            r[i] = t[i] = np.nan
     return r, t
 
 
-def _device(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, Floats]:
+def factorised(problem: Problem, elements: Numbers, *, transmission: bool) -> tuple[Complex, Complex]:
+    """Return r and t by a pivoted sparse factorisation for each row of `elements`."""
+    return match(problem.probe, problem.sparse.load(elements, transmission=transmission))
+
+
+def _fastest(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, Floats]:
     """The device as the probe's load, and the growth met, by the way that is expected to be fastest."""
+    if problem.schur_pays(transmission=amplitude):
+        return problem.sparse.load(elements, transmission=amplitude), np.ones(len(elements))
     run = problem.run if problem.doubling_pays else None
     if run is not None and (problem.reaches_beyond(run) or not amplitude):
         return joined(problem, elements, run, run.repeats - 2, amplitude)

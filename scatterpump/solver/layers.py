@@ -11,7 +11,7 @@ first layer is the probe's interface, in the order of the probe's own unknowns.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -51,12 +51,6 @@ class Border:
     into: Complex
     into_bare: Complex
     channels: int
-
-    def lane(self, i: int) -> Border:
-        """Return the border with the modes of one energy."""
-        if self.out.ndim == 2:
-            return self
-        return replace(self, out=self.out[i], out_bare=self.out_bare[i], into=self.into[i], into_bare=self.into_bare[i])
 
     def matches(self, other: Border) -> bool:
         """Whether another energy's border has as many modes of each kind, behind the same hopping."""

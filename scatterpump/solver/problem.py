@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
-from math import log2
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
+from scatterpump.solver import cost
 from scatterpump.solver.blocks import Blocks
 from scatterpump.solver.cells import layer_table, repeated_cells
 from scatterpump.solver.hamiltonian import driven_path
@@ -17,14 +17,13 @@ from scatterpump.solver.layers import Border, Layers, layer, lead_border
 from scatterpump.solver.modes import with_modes
 from scatterpump.solver.path import Path, description, moving
 from scatterpump.solver.period import Run
+from scatterpump.solver.schur import SparseDevice
 
 __all__ = ["Problem", "assemble", "borders", "prepare"]
 
 Complex = NDArray[np.complex128]
 MEMORY = 128 * 2**20
 CACHE = 2**20
-WIDE = 120
-REAL, ENDS, JOIN = 0.6, 5.0, 5.0  # measured for layers of 10 to 100
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,8 +36,10 @@ class Problem:
         Of the elements of H that move.
     layers : Layers
     probe : Border
+    others : list of Border
+        All leads but the probe that have any modes.
     blocks : Blocks
-    energy : float
+    pump : Pump
     known : (s, elements) complex array or None
         What describes the moving elements along the whole cycle, if so little does.
     """
@@ -46,8 +47,9 @@ class Problem:
     path: Path
     layers: Layers
     probe: Border
+    others: list[Border]
     blocks: Blocks
-    energy: float
+    pump: Pump
     known: Complex | None
 
     @property
@@ -56,16 +58,16 @@ class Problem:
         return bool((self.layers.widths == 1).all())
 
     @property
-    def is_wide(self) -> bool:
-        """Whether the layers are so wide that a sparse factorisation is expected to be cheaper."""
-        return int(self.layers.widths.max()) > WIDE
-
-    @property
     def chunk(self) -> int:
         """Phases to be solved together."""
         widest = float(self.layers.widths.max()) ** 2
         elements = self.blocks.place.max(initial=0) + 1
         return max(1, min(MEMORY // int(16 * (elements + 6 * widest)), max(16, int(CACHE / (16 * widest)))))
+
+    @cached_property
+    def sparse(self) -> SparseDevice:
+        """The whole device as one sparse problem."""
+        return SparseDevice(self.blocks, [self.probe, *self.others])
 
     @cached_property
     def run(self) -> Run | None:
@@ -78,11 +80,22 @@ class Problem:
 
     @property
     def doubling_pays(self) -> bool:
-        """Whether joining cells is expected to be cheaper than a sweep, in units of one layer's inversion."""
-        if self.run is None or self.single:
+        """Whether joining cells is expected to be cheaper than a sweep."""
+        if self.single or self.run is None:
             return False
-        sweep = self.run.repeats * self.run.length * (REAL if self.blocks.real_below else 1.0)
-        return sweep > ENDS * self.run.length + JOIN * log2(self.run.repeats)
+        inside = self.layers.widths[self.run.first :][: self.run.repeats * self.run.length]
+        swept = cost.sweep(inside, is_real=self.blocks.real_below > 0, transmission=False)
+        return swept > cost.joins(inside[: self.run.length], self.run.repeats)
+
+    def schur_pays(self, *, transmission: bool) -> bool:
+        """Whether a sparse Schur complement for each phase is expected to be cheaper than the other ways."""
+        widths = self.layers.widths
+        if self.single:
+            return False
+        others = cost.sweep(widths, is_real=self.blocks.real_below > 0, transmission=transmission)
+        if self.run and self.doubling_pays and (self.reaches_beyond(self.run) or not transmission):
+            others = cost.joins(widths[self.run.first :][: self.run.length], self.run.repeats)
+        return cost.complement(widths) < others
 
     def wanted(self, first: int) -> list[Complex]:
         """For the layers from `first` on, which of their unknowns are open outgoing modes, shapes (k, w)."""
@@ -97,7 +110,7 @@ class Problem:
 def prepare(pump: Pump) -> Problem:
     """Sort a pump into layers, and find its path, modes and blocks."""
     probe, others = borders(pump)
-    return assemble(pump, probe, layer(driven_path(pump)[0], probe, others))
+    return assemble(pump, probe, others, layer(driven_path(pump)[0], probe, others))
 
 
 def borders(pump: Pump) -> tuple[Border, list[Border]]:
@@ -112,7 +125,7 @@ def borders(pump: Pump) -> tuple[Border, list[Border]]:
     return probe, [border for i, border in enumerate(found) if i != pump.probe and border is not None]
 
 
-def assemble(pump: Pump, probe: Border, layers: Layers) -> Problem:
+def assemble(pump: Pump, probe: Border, others: list[Border], layers: Layers) -> Problem:
     """Put the blocks between `layers` together."""
     driven, path = driven_path(pump)
     moves = moving(path) if path.exact else np.ones(len(driven.rows), dtype=bool)
@@ -120,4 +133,4 @@ def assemble(pump: Pump, probe: Border, layers: Layers) -> Problem:
     place = np.where(moves, np.cumsum(moves) - 1, -1)
     blocks = Blocks(layers, pump.fermi_level, driven.rows, driven.columns, still, place, driven.size)
     own = path.only(np.flatnonzero(moves))
-    return Problem(own, layers, probe, blocks, pump.fermi_level, description(own))
+    return Problem(own, layers, probe, others, blocks, pump, description(own))

@@ -36,8 +36,8 @@ def reflect(
         Radians.
     engine : "auto", "layered" or "direct"
         "direct" is kwant's own solver, one phi at a time: the reference.  "layered" eliminates all phases at once,
-        layer by layer.  "auto" takes "layered", but "direct" for up to four phases and where layers are so wide that a
-        sparse factorisation is cheaper.  The trace says which one ran.
+        layer by layer, or where layers are wide by one sparse factorisation each.  "auto" takes "layered", but "direct"
+        for very few phases.  The trace says which one ran.
     transmission : bool
         Whether t is wanted as well; without it the trace's ``transmission`` has no rows.
     repeat : int
@@ -61,7 +61,7 @@ def reflect(
     SolverError
         If the Hamiltonian or its solution fails at some phase; it says at which.
     """
-    from scatterpump.solver import direct, layered, problem
+    from scatterpump.solver import direct, layered
 
     points = _finite(phases, "phases", "angles in radians")
     if engine not in ENGINES:
@@ -73,10 +73,7 @@ def reflect(
         return layered.solve_repeated(pump, points, repeat, transmission=transmission)
     if engine == "direct" or (engine == "auto" and len(points) <= FEW):
         return direct.solve(pump, points, transmission=transmission)
-    ready = problem.prepare(pump)
-    if engine == "auto" and ready.is_wide:
-        return direct.solve(pump, points, transmission=transmission)
-    return layered.solve_prepared(ready, points, transmission=transmission)
+    return layered.solve(pump, points, transmission=transmission)
 
 
 def reflect_grid(
