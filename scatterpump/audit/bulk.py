@@ -53,17 +53,19 @@ def _sampled(evidence: Evidence) -> Outcome:
     """The same from a grid of k and phi."""
     cell, level = bloch_cell(evidence.pump), evidence.pump.fermi_level
     n_k, n_phi = GRID if cell.bands <= SMALL_CELL else SMALL_GRID
-    grid = np.meshgrid(2 * np.pi * np.arange(n_k) / n_k, 2 * np.pi * np.arange(n_phi) / n_phi, indexing="ij")
-    momenta, phases = (axis.ravel() for axis in grid)
-    energies = np.linalg.eigvalsh(cell.hamiltonian(momenta, phases)) - level
-    nearest = int(np.abs(energies).min(axis=1).argmin())
-    place = Place(phase=float(phases[nearest]), momentum=float(momenta[nearest]))
-    distance, filled = float(np.abs(energies[nearest]).min()), (energies < 0).sum(axis=1)
+    momenta, phases = (2 * np.pi * np.arange(n) / n for n in (n_k, n_phi))
+    h, hop = np.moveaxis(cell.blocks(phases), 1, 0)
+    turned = np.exp(-1j * momenta)[:, None, None, None] * hop
+    energies = np.linalg.eigvalsh(h + turned + turned.conj().swapaxes(-1, -2)) - level
+    distances = np.abs(energies).min(axis=2)
+    k, phi = np.unravel_index(int(distances.argmin()), distances.shape)
+    place = Place(phase=float(phases[phi]), momentum=float(momenta[k]))
+    distance, filled = float(distances.min()), (energies < 0).sum(axis=2)
     if filled.min() != filled.max() or distance <= FLOOR / 2:
         text = f"A bulk band crosses the Fermi level {level:g}, so it is not gapped and any integer is an accident."
         return alarm(0.0, 0, text, place)
     above = float(energies[energies > 0].min(initial=inf))
     below = float(-energies[energies < 0].max(initial=-inf))
     limit = THIN * (above + below) if isfinite(above + below) else 0.0
-    text = f"At the {len(momenta)} (k, phi) sampled the Fermi level is {distance:.4g} away from the bulk bands."
+    text = f"At the {distances.size} (k, phi) sampled the Fermi level is {distance:.4g} away from the bulk bands."
     return caution(distance, limit, text, place) if distance < limit else passed(distance, limit, text, place)

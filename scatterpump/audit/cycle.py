@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterpump.audit.check import Outcome, caution, check, graded, passed
 from scatterpump.audit.evidence import Evidence
@@ -10,10 +11,12 @@ from scatterpump.audit.finding import Place
 
 __all__ = ["cycle_closes", "cycle_continuous", "cycle_drives"]
 
+Floats = NDArray[np.float64]
 CLOSURE = (1e-11, 1e-8)  # of the largest element: rounding of many turns; a turn of r that narrow levels would show
 JUMP = (1e-7, 1e-3)  # of the largest element: what a steep slope leaves at the finest step; a jump that moves levels
-STEEPEST = 3
-HALVINGS = 36  # from a 64th of a turn down to 1e-12, still far above the spacing of floating-point phases
+SUSPECTS = 3
+FINEST = 1e-11  # radians: a slope of 1e4 leaves less than a jump, and phases are still far apart in floating point
+MEMORY, MOST_PIECES = 2**22, 64  # complex numbers held at a time
 
 
 @check(
@@ -55,9 +58,8 @@ def cycle_closes(evidence: Evidence) -> Outcome | None:
 def cycle_continuous(evidence: Evidence) -> Outcome | None:
     """Does H(phi) jump anywhere on the cycle?"""
     motion = evidence.motion
-    steepest = np.argsort(motion.steps)[::-1][:STEEPEST]
-    found = [_homed_in(evidence, float(motion.phases[i]), float(motion.phases[i + 1])) for i in steepest]
-    jump, phase = max(found)
+    suspects = _suspects(motion.steps)
+    jump, phase = _homed_in(evidence, motion.phases[:-1][suspects], motion.phases[1:][suspects])
     value = jump / max(motion.scale, 1e-300)
     return graded(
         value,
@@ -68,18 +70,29 @@ def cycle_continuous(evidence: Evidence) -> Outcome | None:
     )
 
 
-def _homed_in(evidence: Evidence, low: float, high: float) -> tuple[float, float]:
-    """Halve a stretch again and again, keeping the half on which H changes more: what is left is a jump, and where."""
+def _suspects(steps: Floats) -> NDArray[np.int64]:
+    """Stretches on which H changes most, and those on which it changes otherwise than on their neighbours."""
+    unlike = np.abs(2 * steps - np.roll(steps, 1) - np.roll(steps, -1))
+    return np.union1d(np.argsort(steps)[-SUSPECTS:], np.argsort(unlike)[-SUSPECTS:])
+
+
+def _homed_in(evidence: Evidence, low: Floats, high: Floats) -> tuple[float, float]:
+    """Cut stretches up again and again, keeping the piece on which H changes most: what is left is a jump, and where.
+
+    A smooth change goes down with the length of the piece, a jump stays.
+    """
     driven = evidence.motion.driven
-    here, there = driven.at(low), driven.at(high)
-    for _ in range(HALVINGS):
-        middle = (low + high) / 2
-        between = driven.at(middle)
-        if np.abs(between - here).max(initial=0.0) >= np.abs(there - between).max(initial=0.0):
-            high, there = middle, between
-        else:
-            low, here = middle, between
-    return float(np.abs(there - here).max(initial=0.0)), low
+    small = JUMP[0] * evidence.motion.scale
+    pieces = int(np.clip(MEMORY // max(1, len(low) * len(driven.rows)), 4, MOST_PIECES))
+    each = np.arange(len(low))
+    while True:
+        phases = np.linspace(low, high, pieces + 1, axis=1)
+        values = driven.many(phases.ravel()).reshape(*phases.shape, -1)
+        steps = np.abs(np.diff(values, axis=1)).max(axis=2, initial=0.0)
+        largest = steps.argmax(axis=1)
+        low, high, jumps = phases[each, largest], phases[each, largest + 1], steps[each, largest]
+        if jumps.max() <= small or (high - low).max() <= FINEST:
+            return float(jumps.max()), float(low[jumps.argmax()])
 
 
 @check(

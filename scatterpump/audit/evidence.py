@@ -8,6 +8,7 @@ from functools import cached_property
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterpump.anatomy.geometry import Geometry, geometry
 from scatterpump.anatomy.motion import Motion, watch
@@ -15,6 +16,7 @@ from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.errors import ClosedGapError, SingularReflectionError
 from scatterpump.pump import Pump
+from scatterpump.solver.direct import scattering_matrices
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.modes import with_modes
 from scatterpump.solver.reflect import reflect
@@ -22,9 +24,10 @@ from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.winding.certificate import certify_device
 from scatterpump.winding.result import Winding
 
-__all__ = ["Evidence"]
+__all__ = ["PROBED", "Evidence"]
 
 SAMPLES = 48
+PROBED = (0.3, 2.4, 4.5)  # no symmetry of a cycle singles them out
 
 
 @dataclass(frozen=True, eq=False)
@@ -80,6 +83,11 @@ class Evidence:
         even = 2 * np.pi * np.arange(SAMPLES) / SAMPLES
         crossings = () if self.winding is None else self.winding.crossings
         return reflect(self.pump, np.sort([*even, *(crossing.phase for crossing in crossings)]))
+
+    @cached_property
+    def scattering(self) -> NDArray[np.complex128]:
+        """The whole S from kwant's own solver at the phases `PROBED`."""
+        return scattering_matrices(self.pump, np.array(PROBED))
 
     @cached_property
     def gap(self) -> BulkGap | None:
