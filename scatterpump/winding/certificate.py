@@ -28,7 +28,17 @@ from scatterpump.pump import Pump
 from scatterpump.solver.band import EPS, norm_bound, row_sum_norm
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.path import Slopes
-from scatterpump.winding.cover import START, Cover, Progress, cover_cycle, covering, join, open_gaps, smallest_over
+from scatterpump.winding.cover import (
+    START,
+    Cover,
+    Progress,
+    cover_cycle,
+    covering,
+    is_leaky,
+    join,
+    open_gaps,
+    smallest_over,
+)
 from scatterpump.winding.crossings import find_crossings
 from scatterpump.winding.look import ROUNDING
 from scatterpump.winding.reference import FIRST, Contact, Reference, survey
@@ -107,7 +117,7 @@ def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progres
     if device.drain.shape[1] == 0:
         return _by_absence_of_drain(device, here)
     _refuse_singular(here)
-    if budget - here.looks < FIRST:
+    if budget - here.looks < FIRST or is_leaky(here):
         return _refused(device, here, Reference(1.0, False, (), 0, 0), here.looks, here.reason)
     return _at_open_reference(device, good, contact, slopes, here, budget, progress)
 
