@@ -14,7 +14,7 @@ from textwrap import fill
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Basis, Finding, Place, Status
 
-__all__ = ["Check", "Outcome", "alarm", "caution", "check", "graded", "passed"]
+__all__ = ["WIDTH", "Check", "Outcome", "alarm", "caution", "check", "graded", "passed"]
 
 WIDTH = 98
 NOWHERE = Place()

@@ -39,6 +39,8 @@ def contact_above_leak(evidence: Evidence) -> Outcome | None:
         return None
     good, excess = good_contact(device)
     contact = Contact(excess)
+    if contact.transparency >= PLENTY:
+        return None  # the contact is not the weak one, and the leak has a check of its own
     seen = [found for phase in _phases(device) if (found := glance(good, phase)) is not None]
     level = [found for found in seen if contact.off_segment(found.reflection) < NEAR_RESONANCE]
     worst = max(level, key=lambda found: found.leak, default=None)

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import click
 
+from scatterpump.cli.audit import audit
 from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.example import example
 from scatterpump.cli.verdict import verdict
@@ -36,5 +37,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, example):
+for command in (verdict, audit, example):
     main.add_command(command)
