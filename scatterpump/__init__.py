@@ -13,8 +13,9 @@ from __future__ import annotations
 
 import warnings
 
+from scatterpump.anatomy.layout import Layout, inspect
 from scatterpump.audit.examine import examine
-from scatterpump.audit.finding import AuditReport, Finding
+from scatterpump.audit.finding import AuditReport, Finding, Place
 from scatterpump.builder.chain import ModulatedChain
 from scatterpump.builder.description import Disorder, Lead, Wave
 from scatterpump.bulk.chern import chern_number
@@ -29,7 +30,7 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
-from scatterpump.pump import Pump
+from scatterpump.pump import Continuum, Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
@@ -41,13 +42,16 @@ __all__ = [
     "BulkGap",
     "ClosedGapError",
     "ClosedProbeError",
+    "Continuum",
     "Crossing",
     "Cycle",
     "Disorder",
     "Finding",
     "InputError",
+    "Layout",
     "Lead",
     "ModulatedChain",
+    "Place",
     "Pump",
     "PumpError",
     "ReflectionTrace",
@@ -60,6 +64,7 @@ __all__ = [
     "certify",
     "chern_number",
     "examine",
+    "inspect",
     "judge",
     "load_device",
     "reflect",

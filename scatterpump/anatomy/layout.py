@@ -22,6 +22,7 @@ __all__ = ["Layout", "LeadView", "inspect"]
 Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 UNREACHED = -1
+CELLS = 3
 
 
 @dataclass(frozen=True, eq=False)
@@ -60,7 +61,7 @@ class Layout:
     bonds : (bonds, 2) int array
         Pairs of sites.
     site_change, bond_change : float arrays or None
-        How far the value of each strays from its value at phi = 0, in the pump's unit of energy.
+        How far the value of each strays from its mean over the cycle, in the pump's unit of energy.
     scale : float or None
         Largest matrix element of H.
     orbitals : int or None
@@ -100,9 +101,10 @@ class Layout:
 
     def draw(self, path: str | Path) -> None:
         """Write a drawing to `path`; its ending (.png, .pdf, .svg) says in which format."""
-        from scatterpump.figures.device import save
+        from scatterpump.figures.device import draw_device
+        from scatterpump.figures.output import save
 
-        save(self, path)
+        save(lambda figure: draw_device(self, figure), path)
 
 
 def inspect(pump: Pump) -> Layout:
@@ -168,7 +170,7 @@ def _drive(path: Any) -> str:
 def _lead(pump: Pump, found: Geometry, number: int) -> LeadView:
     lead, sites = pump.finalized.leads[number], found.interfaces[number]
     role = "probe" if number == pump.probe else "drain" if number == pump.drain else "lead"
-    return LeadView(number, role, sites, _modes(pump, lead), _cells(lead, found.positions.shape[1]))
+    return LeadView(number, role, sites, _modes(pump, lead), _cells(pump.finalized, number, found.positions.shape[1]))
 
 
 def _modes(pump: Pump, lead: Any) -> int | None:
@@ -178,25 +180,27 @@ def _modes(pump: Pump, lead: Any) -> int | None:
         return None
 
 
-CELLS = 3
-
-
-def _cells(lead: Any, dimension: int) -> tuple[Floats, ...]:
+def _cells(system: Any, number: int, dimension: int) -> tuple[Floats, ...]:
     """Positions of the lead's first cells, outward."""
+    from kwant.plotter import sys_leads_pos, sys_leads_sites
+
     try:
-        step = np.array(lead.symmetry.periods[0], dtype=float)
-        cell = np.array([np.atleast_1d(lead.sites[i].pos) for i in range(lead.cell_size)], dtype=float)
-    except Exception:  # a lead given by its modes or self-energy only, or without positions
+        sites, slices = sys_leads_sites(system, CELLS)
+        positions = np.array(sys_leads_pos(system, sites), dtype=float)[slices[number]]
+        cells = np.array([site[2] for site in sites[slices[number]]])
+    except Exception:  # a lead given by its modes or self-energy only, or sites without positions
         return ()
-    if cell.shape[1:] != (dimension,) or step.shape != (dimension,):
+    if positions.ndim == 1:
+        positions = positions[:, None]
+    if positions.shape[1] != dimension:
         return ()
-    return tuple(cell + n * step for n in range(CELLS))
+    return tuple(positions[cells == n] for n in range(CELLS))
 
 
 def _period(pump: Pump) -> float | None:
     if pump.bulk is None:
         return None
     try:
-        return float(np.linalg.norm(pump.finalized_bulk.symmetry.periods[0]))
+        return float(np.linalg.norm(np.array(pump.finalized_bulk.symmetry.periods, dtype=float)[0]))
     except Exception:  # a cell without a symmetry of its own: nothing that the drawing needs
         return None

@@ -22,6 +22,7 @@ Indices = NDArray[np.int64]
 TURN = 2 * np.pi
 EVEN = 64
 MOST_CORNERS = 128
+FOR_MEAN = 16
 MEMORY = 2**22  # complex numbers held at a time
 NOTHING = 1e-15  # of the largest element: less than double precision can tell from 0
 
@@ -39,7 +40,7 @@ class Motion:
     largest : (nnz,) float array
         Largest modulus of every element.
     change : (nnz,) float array
-        Largest distance of every element from its value at 0.
+        Largest distance of every element from its mean over the cycle: the amplitude of a wave.
     steps : (n - 1,) float array
         Largest change of any element from each phase to the next.
     closure : (nnz,) float array
@@ -120,13 +121,14 @@ def watch(pump: Pump) -> Motion:
     transposed = _transposed(driven)
     chunk = max(3, MEMORY // max(1, len(driven.rows)))
     first = before = driven.at(0.0)
-    largest, change, skew = np.abs(first), np.zeros(len(first)), np.zeros(len(first))
+    mean = driven.many(TURN * np.arange(FOR_MEAN) / FOR_MEAN).mean(axis=0)
+    largest, change, skew = np.abs(first), np.abs(first - mean), np.zeros(len(first))
     steps: list[Floats] = []
     for start in range(1, len(phases), chunk):
         values = driven.many(phases[start : start + chunk])
         moduli = np.abs(values)
         largest = np.maximum(largest, moduli.max(axis=0))
-        change = np.maximum(change, np.abs(values - first).max(axis=0))
+        change = np.maximum(change, np.abs(values - mean).max(axis=0))
         skew = np.maximum(skew, np.abs(values - values[:, transposed].conj()).max(axis=0))
         steps.append(np.abs(np.diff(values, axis=0, prepend=before[None])).max(axis=1, initial=0.0))
         before = values[-1]
