@@ -41,8 +41,10 @@ class Motion:
         Largest modulus of every element.
     change : (nnz,) float array
         Largest distance of every element from its mean over the cycle: the amplitude of a wave.
-    steps : (n - 1,) float array
-        Largest change of any element from each phase to the next.
+    longest_step, mean_step : (nnz,) float array
+        Change of every element from one phase to the next.
+    longest_at : (nnz,) int array
+        Number of the phase after which the longest step comes.
     closure : (nnz,) float array
         |H(2 pi) - H(0)|.
     skew : (nnz,) float array
@@ -53,7 +55,9 @@ class Motion:
     phases: Floats
     largest: Floats
     change: Floats
-    steps: Floats
+    longest_step: Floats
+    mean_step: Floats
+    longest_at: Indices
     closure: Floats
     skew: Floats
 
@@ -122,17 +126,18 @@ def watch(pump: Pump) -> Motion:
     chunk = max(3, MEMORY // max(1, len(driven.rows)))
     first = before = driven.at(0.0)
     mean = driven.many(TURN * np.arange(FOR_MEAN) / FOR_MEAN).mean(axis=0)
-    largest, change, skew = np.abs(first), np.abs(first - mean), np.zeros(len(first))
-    steps: list[Floats] = []
+    largest, change, skew = np.abs(first), np.abs(first - mean), np.abs(first - first[transposed].conj())
+    longest, path, at = np.zeros(len(first)), np.zeros(len(first)), np.zeros(len(first), dtype=np.int64)
     for start in range(1, len(phases), chunk):
         values = driven.many(phases[start : start + chunk])
-        moduli = np.abs(values)
-        largest = np.maximum(largest, moduli.max(axis=0))
+        largest = np.maximum(largest, np.abs(values).max(axis=0))
         change = np.maximum(change, np.abs(values - mean).max(axis=0))
         skew = np.maximum(skew, np.abs(values - values[:, transposed].conj()).max(axis=0))
-        steps.append(np.abs(np.diff(values, axis=0, prepend=before[None])).max(axis=1, initial=0.0))
+        steps = np.abs(np.diff(values, axis=0, prepend=before[None]))
+        at = np.where(steps.max(axis=0) > longest, start - 1 + steps.argmax(axis=0), at)
+        longest, path = np.maximum(longest, steps.max(axis=0)), path + steps.sum(axis=0)
         before = values[-1]
-    return Motion(driven, phases, largest, change, np.concatenate(steps), np.abs(before - first), skew)
+    return Motion(driven, phases, largest, change, longest, path / (len(phases) - 1), at, np.abs(before - first), skew)
 
 
 def _phases(pump: Pump) -> Floats:

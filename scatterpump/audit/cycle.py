@@ -5,16 +5,17 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.anatomy.motion import Motion
 from scatterpump.audit.check import Outcome, caution, check, graded, passed
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Place
 
 __all__ = ["cycle_closes", "cycle_continuous", "cycle_drives"]
 
-Floats = NDArray[np.float64]
+Indices = NDArray[np.int64]
 CLOSURE = (1e-11, 1e-8)  # of the largest element: rounding of many turns; a turn of r that narrow levels would show
 JUMP = (1e-7, 1e-3)  # of the largest element: what a steep slope leaves at the finest step; a jump that moves levels
-SUSPECTS = 3
+SUSPECTS = 6
 FINEST = 1e-11  # radians: a slope of 1e4 leaves less than a jump, and phases are still far apart in floating point
 MEMORY, MOST_PIECES = 2**22, 64  # complex numbers held at a time
 
@@ -58,8 +59,7 @@ def cycle_closes(evidence: Evidence) -> Outcome | None:
 def cycle_continuous(evidence: Evidence) -> Outcome | None:
     """Does H(phi) jump anywhere on the cycle?"""
     motion = evidence.motion
-    suspects = _suspects(motion.steps)
-    jump, phase = _homed_in(evidence, motion.phases[:-1][suspects], motion.phases[1:][suspects])
+    jump, phase = _homed_in(evidence, _suspects(motion))
     value = jump / max(motion.scale, 1e-300)
     return graded(
         value,
@@ -70,29 +70,31 @@ def cycle_continuous(evidence: Evidence) -> Outcome | None:
     )
 
 
-def _suspects(steps: Floats) -> NDArray[np.int64]:
-    """Stretches on which H changes most, and those on which it changes otherwise than on their neighbours."""
-    unlike = np.abs(2 * steps - np.roll(steps, 1) - np.roll(steps, -1))
-    return np.union1d(np.argsort(steps)[-SUSPECTS:], np.argsort(unlike)[-SUSPECTS:])
+def _suspects(motion: Motion) -> Indices:
+    """Elements whose longest step is most unlike their others."""
+    unlike = np.where(motion.longest_step > JUMP[0] * motion.scale, motion.longest_step, 0.0)
+    unlike /= np.maximum(motion.mean_step, 1e-300)
+    return np.argsort(unlike)[-SUSPECTS:]
 
 
-def _homed_in(evidence: Evidence, low: Floats, high: Floats) -> tuple[float, float]:
-    """Cut stretches up again and again, keeping the piece on which H changes most: what is left is a jump, and where.
+def _homed_in(evidence: Evidence, elements: Indices) -> tuple[float, float]:
+    """Cut their longest steps up again and again, keeping the piece on which they change most: what is left is a jump.
 
-    A smooth change goes down with the length of the piece, a jump stays.
+    A smooth change goes down with the length of the piece, a jump stays.  Returns the largest jump and its phase.
     """
-    driven = evidence.motion.driven
-    small = JUMP[0] * evidence.motion.scale
-    pieces = int(np.clip(MEMORY // max(1, len(low) * len(driven.rows)), 4, MOST_PIECES))
-    each = np.arange(len(low))
+    motion, driven = evidence.motion, evidence.motion.driven
+    low, high = (motion.phases[motion.longest_at[elements] + side] for side in (0, 1))
+    pieces = int(np.clip(MEMORY // max(1, len(elements) * len(driven.rows)), 4, MOST_PIECES))
+    each = np.arange(len(elements))
     while True:
         phases = np.linspace(low, high, pieces + 1, axis=1)
-        values = driven.many(phases.ravel()).reshape(*phases.shape, -1)
-        steps = np.abs(np.diff(values, axis=1)).max(axis=2, initial=0.0)
+        values = driven.many(phases.ravel()).reshape(*phases.shape, -1)[each, :, elements]
+        steps = np.abs(np.diff(values, axis=1))
         largest = steps.argmax(axis=1)
         low, high, jumps = phases[each, largest], phases[each, largest + 1], steps[each, largest]
-        if jumps.max() <= small or (high - low).max() <= FINEST:
-            return float(jumps.max()), float(low[jumps.argmax()])
+        if jumps.max(initial=0.0) <= JUMP[0] * motion.scale or (high - low).max() <= FINEST:
+            worst = int(jumps.argmax())
+            return float(jumps[worst]), float(low[worst])
 
 
 @check(

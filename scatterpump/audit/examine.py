@@ -34,7 +34,8 @@ class Stage:
 
 STAGES = (
     Stage((elements_finite,), needed=(elements_finite,)),
-    Stage((hermitian, cycle_closes, cycle_continuous, cycle_drives)),
+    Stage((hermitian,), needed=(hermitian,)),
+    Stage((cycle_closes, cycle_continuous, cycle_drives)),
     Stage((couplings_present, sites_reached, leads_attached, leads_apart, continuum_resolved)),
     Stage((leads_still,), needed=(leads_still,)),
     Stage((probe_open, modes_move), needed=(probe_open, modes_move)),
@@ -49,7 +50,7 @@ CHECKS: tuple[Check, ...] = tuple(check for stage in STAGES for check in stage.c
 def examine(pump: Pump, *, quick: bool = False) -> AuditReport:
     """Run every check on `pump`.
 
-    Where the Hamiltonian is not finite, a lead depends on the cycle, or a lead has no usable modes, there is no
+    Where the Hamiltonian is not finite or not Hermitian, or a lead depends on the cycle or has no usable modes, there is no
     r(phi) to look at, and the report names the checks that could not be made.
 
     Parameters

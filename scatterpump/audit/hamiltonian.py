@@ -13,7 +13,7 @@ from scatterpump.pump import Pump
 
 __all__ = ["elements_finite", "hermitian"]
 
-SKEW = (1e-13, 1e-9)  # of the largest element: rounding of a sum of waves; a gain that r would show
+SKEW = 5e-14  # of the largest element: more than the rounding of a value function, and less than kwant refuses
 
 
 @check(
@@ -57,8 +57,7 @@ def _not_finite(pump: Pump, phase: float) -> tuple[int, Place] | None:
     unit="1",
     because="Only a Hermitian H conserves particles; an imaginary level makes or destroys them, r is not unitary even "
     "in a gap, and no charge can be read from it.",
-    caution=f"|H - H^+| exceeds {SKEW[0]:g} of the largest element",
-    alarm=f"|H - H^+| exceeds {SKEW[1]:g} of the largest element",
+    alarm=f"|H - H^+| exceeds {SKEW:g} of the largest element",
     remedy="Make on-site values real or Hermitian matrices; kwant sets the reverse of every hopping itself.",
 )
 def hermitian(evidence: Evidence) -> Outcome | None:
@@ -69,7 +68,7 @@ def hermitian(evidence: Evidence) -> Outcome | None:
     site = int(motion.site_of[motion.driven.rows[worst]])
     return graded(
         value,
-        SKEW,
+        (SKEW, SKEW),
         "H is Hermitian, so particles are conserved.",
         f"H differs from its adjoint by {value:.1e} of its size, so particles are made or destroyed.",
         Place(site=evidence.geometry.at(site)),
