@@ -9,14 +9,25 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from inspect import getdoc
+from math import inf
 from textwrap import fill
+
+import numpy as np
 
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Basis, Finding, Place, Status
+from scatterpump.errors import SolverError
 
 __all__ = ["WIDTH", "Check", "Outcome", "alarm", "caution", "check", "graded", "passed"]
 
 WIDTH = 98
+UNSOLVABLE = (
+    SolverError,
+    np.linalg.LinAlgError,
+    RuntimeError,
+    ArithmeticError,
+)  # what solvers raise on hopeless numbers
+UNSOLVABLE_REMEDY = "Look for levels that nothing couples to, and for energies of very different sizes."
 NOWHERE = Place()
 
 
@@ -99,7 +110,12 @@ class Check:
     function: Callable[[Evidence], Outcome | None]
 
     def __call__(self, evidence: Evidence) -> Finding | None:
-        found = self.function(evidence)
+        try:
+            found = self.function(evidence)
+        except UNSOLVABLE as error:
+            if not evidence.is_sampled:
+                raise  # not the solution but a value function fails
+            found = alarm(inf, 0, f"This cannot be computed: {error}.", remedy=UNSOLVABLE_REMEDY)
         if found is None:
             return None
         remedy = "" if found.status == "pass" else found.remedy or self.remedy

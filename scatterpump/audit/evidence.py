@@ -57,6 +57,11 @@ class Evidence:
         """H along the cycle."""
         return watch(self.pump)
 
+    @property
+    def is_sampled(self) -> bool:
+        """Whether H has been sampled along the cycle without a failure."""
+        return "motion" in self.__dict__
+
     @cached_property
     def system(self) -> Any:
         """The kwant system with the modes of its leads."""

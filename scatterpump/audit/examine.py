@@ -50,8 +50,8 @@ CHECKS: tuple[Check, ...] = tuple(check for stage in STAGES for check in stage.c
 def examine(pump: Pump, *, quick: bool = False) -> AuditReport:
     """Run every check on `pump`.
 
-    Where the Hamiltonian is not finite or not Hermitian, or a lead depends on the cycle or has no usable modes, there is no
-    r(phi) to look at, and the report names the checks that could not be made.
+    Where the Hamiltonian is not finite or not Hermitian, or a lead depends on the cycle or has no usable modes, there
+    is no r(phi) to look at, and the report names the checks that could not be made.
 
     Parameters
     ----------
@@ -62,7 +62,7 @@ def examine(pump: Pump, *, quick: bool = False) -> AuditReport:
     Raises
     ------
     SolverError
-        If a value function or the solution of the scattering problem fails at some phase.
+        If a value function fails at some phase.
     """
     return run_checks(Evidence(pump, quick=quick))
 
