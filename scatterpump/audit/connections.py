@@ -31,7 +31,7 @@ def couplings_present(evidence: Evidence) -> Outcome | None:
     if not len(absent):
         return passed(0, 0, "Every bond carries a hopping.")
     place = Place(site=evidence.geometry.at(int(absent[0, 0])))
-    return caution(len(absent), 0, f"{_count(len(absent), 'bond')} of the system stay at 0 throughout.", place)
+    return caution(len(absent), 0, f"With a hopping of 0 throughout: {_count(len(absent), 'bond')}.", place)
 
 
 @check(
@@ -51,7 +51,7 @@ def sites_reached(evidence: Evidence) -> Outcome | None:
     if not islands.size:
         return passed(0, 0, "Every site is joined to a lead.", basis="sampled")
     place = Place(site=evidence.geometry.at(int(islands[0])))
-    return caution(len(islands), 0, f"{_count(len(islands), 'site')} are joined to no lead.", place)
+    return caution(len(islands), 0, f"Joined to no lead: {_count(len(islands), 'site')}.", place)
 
 
 @check(
@@ -80,7 +80,8 @@ def leads_attached(evidence: Evidence) -> Outcome | None:
     if pump.drain in loose:
         text = "The drain is not joined to the probe, so nothing can leave by it and the true winding is 0."
         return alarm(len(loose), 0, text, Place(lead=pump.drain))
-    return caution(len(loose), 0, f"{_count(len(loose), 'lead')} not joined to the probe.", Place(lead=loose[0]))
+    text = f"Not joined to the probe: lead {', '.join(map(str, loose))}."
+    return caution(len(loose), 0, text, Place(lead=loose[0]))
 
 
 @check(
