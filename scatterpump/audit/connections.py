@@ -134,7 +134,7 @@ def drain_present(evidence: Evidence) -> Outcome | None:
     if stuck.size:
         site = int(motion.site_of[np.flatnonzero(motion.parts == stuck[0])[0]])
         text = f"{_count(len(stuck), 'part')} that the probe feeds and the cycle moves cannot be emptied by any lead."
-        return alarm(len(stuck), 1, text, Place(site=evidence.geometry.at(site)))
+        return alarm(len(stuck), 0, text, Place(site=evidence.geometry.at(site)))
     if pump.drain is None or not np.isin(open_parts[pump.drain], fed).any():
         others = [lead for lead, parts in open_parts.items() if np.isin(parts, fed).any()]
         text = f"The charge leaves by lead {', '.join(map(str, others))}, which is not named as the drain."

@@ -40,8 +40,8 @@ def cycle_closes(evidence: Evidence) -> Outcome | None:
         value,
         CLOSURE,
         "After one cycle the Hamiltonian is back at its start.",
-        f"After one cycle the Hamiltonian differs from its start by {value:.1e} of its size, so det r does not come "
-        "back and has no winding.",
+        f"After one cycle the Hamiltonian differs from its start by {value:.1e} of its size, and as far as that tells "
+        "in r, det r does not come back and has no winding.",
         Place(phase=0.0, site=None if well else site),
         basis="exact",
     )
