@@ -23,7 +23,7 @@ onsite = [{amplitude = 1.5, period = 3}]
 probe = {hopping = 2.0}
 drain = {hopping = 2.0}
 """
-FUZZ = settings(derandomize=True, deadline=None, max_examples=24)
+FUZZ = settings(derandomize=True, deadline=None, max_examples=14)
 
 
 def call(*arguments: object) -> Result:
