@@ -13,8 +13,9 @@ from __future__ import annotations
 
 import warnings
 
+from scatterpump.anatomy.layout import Layout, inspect
 from scatterpump.audit.examine import examine
-from scatterpump.audit.finding import AuditReport, Finding
+from scatterpump.audit.finding import AuditReport, Finding, Place
 from scatterpump.builder.chain import ModulatedChain
 from scatterpump.builder.cylinder import FluxCylinder
 from scatterpump.builder.description import Disorder, Lead, SheetLead, Wave
@@ -33,7 +34,7 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
-from scatterpump.pump import Pump
+from scatterpump.pump import Continuum, Pump
 from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
@@ -46,6 +47,7 @@ __all__ = [
     "BulkGap",
     "ClosedGapError",
     "ClosedProbeError",
+    "Continuum",
     "Crossing",
     "Cycle",
     "CycleError",
@@ -53,10 +55,12 @@ __all__ = [
     "Finding",
     "FluxCylinder",
     "InputError",
+    "Layout",
     "Lead",
     "ModulatedChain",
     "ModulatedRibbon",
     "NoBulkError",
+    "Place",
     "Pump",
     "PumpError",
     "ReflectionTrace",
@@ -72,6 +76,7 @@ __all__ = [
     "certify",
     "chern_number",
     "examine",
+    "inspect",
     "judge",
     "load_device",
     "reflect",

@@ -17,7 +17,44 @@ from scatterpump.adoption import finalized, finalized_cell
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
-__all__ = ["Pump"]
+__all__ = ["Continuum", "Pump"]
+
+
+@dataclass(frozen=True)
+class Continuum:
+    """The continuum that a lattice stands for: electrons of one mass, on sites a step apart.
+
+    Parameters
+    ----------
+    step : float
+        Distance of neighbouring sites, in metres.
+    mass : float
+        Effective mass, in kilograms.
+    energy : float
+        What one unit of the pump's energies is, in joules.
+
+    Raises
+    ------
+    InputError
+        If one of them is not a positive number.
+    """
+
+    step: float
+    mass: float
+    energy: float
+
+    def __post_init__(self) -> None:
+        for name in ("step", "mass", "energy"):
+            value = getattr(self, name)
+            if not (isfinite(value) and value > 0):
+                raise InputError(f"{name} is {value!r}", allowed="a positive number, in SI units")
+
+    @property
+    def hopping(self) -> float:
+        """hbar^2 / (2 mass step^2), in the pump's unit of energy."""
+        from scipy.constants import hbar
+
+        return float(hbar / self.step) * float(hbar / self.step) / (2 * self.mass) / self.energy
 
 
 @dataclass(frozen=True)
@@ -46,6 +83,8 @@ class Pump:
         What to call the pump in a report.
     lead_names : sequence of str
         What to call the leads, in the order they were attached; empty for plain numbers.
+    continuum : Continuum, optional
+        The continuum that the lattice stands for; then the audit checks that its step is fine enough.
 
     Attributes
     ----------
@@ -67,6 +106,7 @@ class Pump:
     constants: dict[str, Any] = field(default_factory=dict)
     name: str = "pump"
     lead_names: Sequence[str] = ()
+    continuum: Continuum | None = None
     remembered: dict[str, Any] = field(default_factory=dict, init=False, repr=False, compare=False)
 
     def __post_init__(self) -> None:

@@ -6,7 +6,7 @@ from math import isfinite
 from textwrap import wrap
 from typing import TYPE_CHECKING
 
-from scatterpump.audit.finding import Finding
+from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.bulk.gap import FLOOR, BulkGap
 from scatterpump.version import version
 from scatterpump.winding.resolved import Resolved
@@ -15,7 +15,7 @@ from scatterpump.winding.result import Winding
 if TYPE_CHECKING:
     from scatterpump.verdict import Verdict
 
-__all__ = ["summarise"]
+__all__ = ["summarise", "summarise_audit"]
 
 WIDTH = 98
 LABEL = 18
@@ -37,12 +37,27 @@ def summarise(verdict: Verdict) -> str:
         lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
     for finding in verdict.audit.cautions:
         lines += _finding(finding)
-    passed = sum(finding.status == "pass" for finding in verdict.audit.findings)
-    lines += _row(
-        "checks",
-        f"{passed} passed, {_count(verdict.audit.cautions, 'caution')}, {_count(verdict.audit.alarms, 'alarm')}",
-    )
+    lines += _counts(verdict.audit)
     return "\n".join(lines)
+
+
+def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
+    """Return the findings as a table: alarms first, then cautions, then what is in order and what was left out."""
+    lines = [f"{name}, Fermi level {fermi_level:g}   (scatterpump {version()})", ""]
+    for finding in (*report.alarms, *report.cautions):
+        lines += _finding(finding)
+    lines += _row("in order", ", ".join(f.check for f in report.findings if f.status == "pass"))
+    if report.unseen:
+        lines += _row("not looked at", ", ".join(report.unseen))
+    if report.quick:
+        lines += _row("how sure", "sampled at single phases, not proven; 'scatterpump verdict' proves")
+    return "\n".join([*lines, *_counts(report)])
+
+
+def _counts(report: AuditReport) -> list[str]:
+    passed = sum(finding.status == "pass" for finding in report.findings)
+    text = f"{passed} passed, {_count(report.cautions, 'caution')}, {_count(report.alarms, 'alarm')}"
+    return _row("checks", text)
 
 
 def _count(findings: tuple[Finding, ...], word: str) -> str:

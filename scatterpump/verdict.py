@@ -9,13 +9,14 @@ from __future__ import annotations
 import json
 from collections.abc import Callable
 from dataclasses import asdict, dataclass
-from math import isfinite
 from typing import Any
 
-from scatterpump.audit.examine import gather, run_checks
+from scatterpump.audit.evidence import Evidence
+from scatterpump.audit.examine import run_checks
 from scatterpump.audit.finding import AuditReport
 from scatterpump.bulk.cell import interior
 from scatterpump.bulk.gap import BulkGap
+from scatterpump.plain import plain
 from scatterpump.pump import Pump
 from scatterpump.version import version
 from scatterpump.winding.resolved import Resolved, resolve_if_asked
@@ -67,7 +68,7 @@ class Verdict:
     def to_dict(self) -> dict[str, Any]:
         """Return plain data: numbers, text, lists and dictionaries; an infinite number is None."""
         content = {"scatterpump": version(), "trustworthy": self.trustworthy, **asdict(self)}
-        return dict(_plain(content))
+        return dict(plain(content))
 
     def to_json(self) -> str:
         """Return `to_dict` as JSON text."""
@@ -100,28 +101,10 @@ def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ver
     """
     from threadpoolctl import threadpool_limits
 
+    evidence = Evidence(pump, progress=progress)
     with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
-        evidence = gather(pump, progress=progress)
+        winding, gap, chern = evidence.winding, evidence.gap, evidence.chern
         report = run_checks(evidence)
         resolved = resolve_if_asked(pump)
-    return Verdict(
-        pump.name,
-        pump.fermi_level,
-        evidence.winding,
-        evidence.gap,
-        evidence.chern,
-        report,
-        pump.route,
-        interior(pump),
-        resolved,
-    )
-
-
-def _plain(value: Any) -> Any:
-    if isinstance(value, dict):
-        return {key: _plain(item) for key, item in value.items()}
-    if isinstance(value, list | tuple):
-        return [_plain(item) for item in value]
-    if hasattr(value, "item"):
-        value = value.item()
-    return None if isinstance(value, float) and not isfinite(value) else value
+    route, cell = pump.route, interior(pump)
+    return Verdict(pump.name, pump.fermi_level, winding, gap, chern, report, route, cell, resolved)

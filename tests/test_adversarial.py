@@ -133,3 +133,16 @@ def test_three_lead_harmonics_still_count() -> None:
     winding = certify(chain.pump())
     # derived: the overtone is smaller than the gap, so the wave still carries one filled level a period
     assert (winding.number, winding.exact) == (1, True)
+
+
+@pytest.mark.parametrize(("sites", "energy"), [(60, 0.3), (90, -0.3)])
+def test_level_inside_a_band_is_given_up_early(sites: int, energy: float) -> None:
+    """Most electrons pass and little of the cycle gets covered: hundreds of looks more would not change that."""
+    wave = [Wave(1.5, 3)]
+    chain = ModulatedChain(sites=sites, fermi_level=energy, onsite=wave, probe=WIDE, drain=WIDE)
+    winding = certify(chain.pump())
+    # derived: the middle band of the period-3 chain reaches over both energies
+    assert (winding.number, winding.certified) == (None, False)
+    assert winding.evaluations < 60
+    assert "not reflected" in winding.reason
+    assert winding.unproven

@@ -24,7 +24,7 @@ from scatterpump.bulk.cell import bloch_cell
 from scatterpump.bulk.decay import decay_per_cell, slowest
 from scatterpump.cycle import Cycle
 from scatterpump.pump import Pump
-from scatterpump.solver.direct import scattering_matrix
+from scatterpump.solver.direct import scattering_matrices
 from scatterpump.solver.reflect import reflect
 from scatterpump.winding.unwrap import steps
 
@@ -287,7 +287,7 @@ def angle(difference: float) -> float:
 def test_phase_of_an_impurity_counts_the_states_it_adds(energy: float, expected: float) -> None:
     def phase(level: float) -> float:
         pump = impurity_wire([0.9, 0.0, 0.0], level, 1.0)
-        with_impurity, without = (np.linalg.det(scattering_matrix(pump, phi)) for phi in (0.0, 2 * pi / 3))
+        with_impurity, without = np.linalg.det(scattering_matrices(pump, np.array([0.0, 2 * pi / 3])))
         return float(np.angle(with_impurity / without))
 
     # J. Friedel, Phil. Mag. 43, 153 (1952) (citation from memory): -U E / (pi v (v^2 + U^2)), printed to eight decimals

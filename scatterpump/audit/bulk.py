@@ -1,92 +1,71 @@
-"""Checks on the interior: the Fermi level must stay in one gap, whose Chern number is the integer."""
+"""Check on the interior: the Fermi level must stay in one gap, over all momenta and phases."""
 
 from __future__ import annotations
 
-from math import isfinite
+from math import inf, isfinite
 
+import numpy as np
+
+from scatterpump.audit.check import Outcome, alarm, caution, check, passed
 from scatterpump.audit.evidence import Evidence
-from scatterpump.audit.finding import Finding
-from scatterpump.bulk.gap import FLOOR
-from scatterpump.winding.certificate import behind_good_contact
+from scatterpump.audit.finding import Place
+from scatterpump.bulk.cell import bloch_cell
+from scatterpump.bulk.gap import FLOOR, BulkGap
 
-__all__ = ["fermi_level_in_gap", "integer_agrees"]
+__all__ = ["fermi_level_in_gap"]
 
 THIN = 0.05
-MUCH = 1e-2
+GRID = (24, 48)
+SMALL_GRID = (12, 24)
+SMALL_CELL = 24  # orbitals up to which the large grid costs little
 
 
-def fermi_level_in_gap(evidence: Evidence) -> Finding | None:
-    """Distance of the Fermi level from the nearest bulk band over the (k, phi) torus, against the gap."""
-    gap, level = evidence.gap, evidence.pump.fermi_level
-    if gap is None:
+@check(
+    "Fermi level in gap",
+    unit="E",
+    because="A pump is quantised as long as no band of its interior meets the Fermi level, for any k and phi.",
+    caution=f"the level is closer to a band than {THIN:g} of the window between the bands",
+    alarm=f"a band meets the level, or comes closer than {FLOOR / 2:g}",
+    remedy="Move the Fermi level into the middle of a gap, or change the cycle so that the gap stays open.",
+)
+def fermi_level_in_gap(evidence: Evidence) -> Outcome | None:
+    """Does the Fermi level stay inside one gap of the interior, over the whole (k, phi) torus?"""
+    if not evidence.has_cell:
         return None
-    where = f"k = {gap.momentum:.4g}, phi = {gap.phase:.4g}"
+    return _sampled(evidence) if evidence.gap is None else _proven(evidence.gap, evidence.pump.fermi_level)
+
+
+def _proven(gap: BulkGap, level: float) -> Outcome:
+    place = Place(phase=gap.phase, momentum=gap.momentum)
     if not gap.is_open:
-        return Finding(
-            "Fermi level in gap",
-            "alarm",
-            gap.distance_upper,
-            0.0,
-            "E",
-            f"A bulk band meets the Fermi level {level:g} or comes within "
-            f"{max(gap.distance_upper, FLOOR / 2):.1e} of it, so it is not gapped and any integer is an accident.",
-            "Move the Fermi level into a gap, or change the cycle so that the gap stays open.",
-            where,
-        )
+        near = max(gap.distance_upper, FLOOR / 2)
+        text = f"A bulk band meets the Fermi level {level:g} or comes within {near:.1e} of it, so it is not gapped"
+        return alarm(gap.distance_upper, 0, text + " and any integer is an accident.", place, basis="proven")
     width = gap.upper_edge.lower - gap.lower_edge.upper
-    message = f"The Fermi level stays at least {gap.distance_lower:.4g} away from every bulk band."
     limit = THIN * width if isfinite(width) else 0.0
+    text = f"The Fermi level stays at least {gap.distance_lower:.4g} away from every bulk band."
     if gap.distance_lower < limit:
-        return Finding(
-            "Fermi level in gap",
-            "caution",
-            gap.distance_lower,
-            limit,
-            "E",
-            message,
-            "Move the Fermi level towards the middle of the window.",
-            where,
-        )
-    return Finding("Fermi level in gap", "pass", gap.distance_lower, limit, "E", message, where=where)
+        return caution(gap.distance_lower, limit, text, place, basis="proven")
+    return passed(gap.distance_lower, limit, text, place, basis="proven")
 
 
-def integer_agrees(evidence: Evidence) -> Finding | None:
-    """The winding of a long clean pump is the Chern number of its filled bands."""
-    winding, chern = evidence.winding, evidence.chern
-    if winding is None or winding.number is None or chern is None:
-        return None
-    difference = winding.number - chern
-    if difference == 0:
-        return Finding(
-            "integer agrees with bulk",
-            "pass",
-            0,
-            0,
-            "charges",
-            f"The winding equals the Chern number {chern:+d} of the filled bands.",
-        )
-    return Finding(
-        "integer agrees with bulk",
-        "alarm",
-        difference,
-        0,
-        "charges",
-        f"The winding is {winding.number}, but the filled bands of the endless interior carry {chern}: "
-        + _explanation(evidence, chern),
-        "Mend what is named here, or take the winding for what it is.",
-    )
-
-
-def _explanation(evidence: Evidence, chern: int) -> str:
-    """Say which of a closed far end, a contact weaker than the leak, or a finite length accounts for the difference."""
-    if evidence.pump.drain is None:
-        return "the far end is closed, and its level takes back what the near one took in."
-    if behind_good_contact(evidence.pump) == chern:
-        return (
-            "the contact is weaker than the leak, so the edge level fills and drains through the far end; behind a "
-            f"good contact this device winds {chern:+d}."
-        )
-    leak = float(evidence.trace.leakage.max())
-    if leak > MUCH:
-        return f"the device is too short, up to {leak:.1e} of the electrons pass through it."
-    return "the device differs from its interior, by disorder or by its ends."
+def _sampled(evidence: Evidence) -> Outcome:
+    """The same from a grid of k and phi."""
+    cell, level = bloch_cell(evidence.pump), evidence.pump.fermi_level
+    n_k, n_phi = GRID if cell.bands <= SMALL_CELL else SMALL_GRID
+    momenta, phases = (2 * np.pi * np.arange(n) / n for n in (n_k, n_phi))
+    h, hop = np.moveaxis(cell.blocks(phases), 1, 0)
+    turned = np.exp(-1j * momenta)[:, None, None, None] * hop
+    energies = np.linalg.eigvalsh(h + turned + turned.conj().swapaxes(-1, -2)) - level
+    distances = np.abs(energies).min(axis=2)
+    k, phi = np.unravel_index(int(distances.argmin()), distances.shape)
+    place = Place(phase=float(phases[phi]), momentum=float(momenta[k]))
+    distance, filled = float(distances.min()), (energies < 0).sum(axis=2)
+    if filled.min() != filled.max() or distance <= FLOOR / 2:
+        text = f"A bulk band crosses the Fermi level {level:g}, so it is not gapped and any integer is an accident."
+        return alarm(0.0, 0, text, place)
+    above = float(energies[energies > 0].min(initial=inf))
+    below = float(-energies[energies < 0].max(initial=-inf))
+    limit = THIN * (above + below) if isfinite(above + below) else 0.0
+    text = f"At the {distances.size} (k, phi) sampled the Fermi level is {distance:.4g} away from the bulk bands."
+    return caution(distance, limit, text, place) if distance < limit else passed(distance, limit, text, place)

@@ -1,78 +1,110 @@
-"""Checks on the leads: the probe must be open and still, and a drain must be there."""
+"""Checks on the leads' modes: the probe must be open, still, and away from the edges of its bands."""
 
 from __future__ import annotations
 
-from scatterpump.audit.finding import Finding
-from scatterpump.errors import ClosedProbeError
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+
+from scatterpump.audit.check import Outcome, alarm, check, graded, passed
+from scatterpump.audit.evidence import Evidence
+from scatterpump.audit.finding import Place
+from scatterpump.errors import ClosedProbeError, InputError
 from scatterpump.pump import Pump
-from scatterpump.solver.modes import varying_leads, with_modes
+from scatterpump.solver.modes import varying_leads
 
-__all__ = ["drain_present", "leads_still", "probe_open"]
+__all__ = ["leads_still", "modes_move", "probe_open"]
+
+COUNTED_AT = 8
+SLOW = 0.02  # of 2|V|: an energy of 4e-4 hoppings from the edge of a cosine band, where a contact is 50 times weaker
+STANDING = 1e-6  # of 2|V|: 1e-12 hoppings from the edge, where velocities are lost in rounding
 
 
-def leads_still(pump: Pump) -> Finding:
-    """No lead may depend on the cycle: det r is comparable between phases on one set of modes only."""
-    varying = varying_leads(pump)
+@check(
+    "leads still",
+    unit="leads",
+    because="The phases of lead modes are arbitrary; det r is comparable between phases on one set of modes only.",
+    alarm="a lead changes along the cycle",
+    remedy="Move the modulated part of the lead into the scattering region.",
+)
+def leads_still(evidence: Evidence) -> Outcome | None:
+    """Do all leads stay as they are along the cycle, with the same modes?"""
+    varying = varying_leads(evidence.pump)
     if not varying:
-        return Finding("leads still", "pass", 0, 0, "leads", "No lead depends on the cycle.")
+        return passed(0, 0, "No lead depends on the cycle.", basis="exact")
     lead, names = varying[0]
-    return Finding(
-        "leads still",
-        "alarm",
-        len(varying),
-        0,
-        "leads",
-        f"Lead {lead} depends on {', '.join(names)}, so its modes change along the cycle and det r is not comparable.",
-        "Move the modulated part of the lead into the scattering region.",
-        f"lead {lead}",
-    )
+    text = f"Lead {lead} depends on {', '.join(names)}, so its modes change along the cycle"
+    counts = _mode_counts(evidence.pump, lead)
+    if len(counts) > 1:
+        text += f" (between {min(counts)} and {max(counts)} of them are open)"
+    return alarm(len(varying), 0, text + " and det r is not comparable.", Place(lead=lead), basis="exact")
 
 
-def probe_open(pump: Pump) -> Finding:
-    """The probe needs an open mode, else r is empty and its determinant is 1 for any device."""
+def _mode_counts(pump: Pump, lead: int) -> set[int]:
+    """Numbers of open modes met along the cycle, as far as they can be computed."""
+    found = set()
+    for phase in 2 * np.pi * np.arange(COUNTED_AT) / COUNTED_AT:
+        try:
+            modes = pump.finalized.leads[lead].modes(pump.fermi_level, params=pump.parameters(float(phase)))[0]
+        except Exception:  # only a remark in a message that is an alarm anyway
+            return set()
+        found.add(len(modes.momenta) // 2)
+    return found
+
+
+@check(
+    "modes move",
+    unit="1",
+    because="A mode close to the edge of its band hardly moves: the contact becomes weak and sharply dependent on "
+    "energy, and at the edge itself there is no mode to normalise.",
+    caution=f"an open mode is slower than {SLOW:g} of the largest velocity that its lead allows",
+    alarm=f"a mode is slower than {STANDING:g} of it, or cannot be computed at all",
+    remedy="Shift the lead's level or its hopping, so that the Fermi level is well inside its band.",
+)
+def modes_move(evidence: Evidence) -> Outcome | None:
+    """Is the Fermi level away from the edges of every lead's bands?"""
+    level = evidence.pump.fermi_level
     try:
-        system = with_modes(pump)
+        system = evidence.system
     except ClosedProbeError:
-        return Finding(
-            "probe open",
-            "alarm",
-            0,
-            1,
-            "modes",
-            f"The probe has no open mode at the Fermi level {pump.fermi_level:g}, so there is no r to wind.",
-            "Raise the probe's hopping or shift its level until the Fermi level lies in its band.",
-            f"lead {pump.probe}",
+        return None
+    except InputError:
+        return alarm(
+            0, STANDING, f"At the Fermi level {level:g} a lead has a mode that stands still, at the edge of its band."
         )
-    modes = len(system.leads[pump.probe].modes(pump.fermi_level)[0].momenta) // 2
-    return Finding("probe open", "pass", modes, 1, "modes", f"The probe has {modes} open mode(s) at the Fermi level.")
+    shares = [(_speed(evidence, system, lead), lead) for lead in range(len(system.leads))]
+    value, lead = min(shares, default=(1.0, 0))
+    text = f"The slowest open mode at the Fermi level {level:g} has {value:.2g} of the largest velocity its lead allows"
+    found = graded(-value, (-SLOW, -STANDING), text + ".", text + ": the edge of its band is near.", Place(lead=lead))
+    return replace(found, value=value, limit=-found.limit, basis="exact")
 
 
-def drain_present(pump: Pump) -> Finding:
-    """Without a drain the far edge level unwinds what the near one wound, and the true total is 0."""
-    if pump.drain is not None:
-        modes = len(with_modes(pump).leads[pump.drain].modes(pump.fermi_level)[0].momenta) // 2
-        if modes:
-            return Finding(
-                "drain present", "pass", modes, 1, "modes", f"The drain has {modes} open mode(s) at the Fermi level."
-            )
-        return Finding(
-            "drain present",
-            "alarm",
-            0,
-            1,
-            "modes",
-            f"The drain has no open mode at the Fermi level {pump.fermi_level:g}, so it takes nothing "
-            "and the true winding is 0.",
-            "Raise the drain's hopping or shift its level until the Fermi level lies in its band.",
-            f"lead {pump.drain}",
-        )
-    return Finding(
-        "drain present",
-        "alarm",
-        0,
-        1,
-        "drains",
-        "The far end is a hard wall: r is unitary whatever happens, and the narrow level of the far edge takes back "
-        "exactly what the near edge took in, so the true winding is 0.",
-        "Attach a drain at the far end.",
-    )
+def _speed(evidence: Evidence, system: Any, lead: int) -> float:
+    """Slowest open mode of a lead against the bound 2|V| on all of its velocities; 1 if it has none."""
+    cells = evidence.pump.finalized.leads[lead]
+    if not hasattr(cells, "inter_cell_hopping"):
+        return 1.0
+    velocities = np.abs(system.leads[lead].modes(evidence.pump.fermi_level)[0].velocities)
+    bound = 2 * float(np.linalg.norm(cells.inter_cell_hopping(params=evidence.pump.parameters(0.0)), ord=2))
+    return float(velocities.min()) / bound if velocities.size and bound > 0 else 1.0
+
+
+@check(
+    "probe open",
+    unit="modes",
+    because="Without an open mode r is empty, and the determinant of nothing is 1 for any device.",
+    alarm="the probe has no open mode at the Fermi level",
+    remedy="Raise the probe's hopping or shift its level until the Fermi level lies in its band.",
+)
+def probe_open(evidence: Evidence) -> Outcome | None:
+    """Has the probe an open mode at the Fermi level?"""
+    pump = evidence.pump
+    try:
+        modes = len(evidence.system.leads[pump.probe].modes(pump.fermi_level)[0].momenta) // 2
+    except ClosedProbeError:
+        text = f"The probe has no open mode at the Fermi level {pump.fermi_level:g}, so there is no r to wind."
+        return alarm(0, 1, text, Place(lead=pump.probe), basis="exact")
+    except InputError:
+        return None
+    return passed(modes, 1, f"The probe has {modes} open mode(s) at the Fermi level.", basis="exact")

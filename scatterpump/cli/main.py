@@ -7,8 +7,10 @@ from __future__ import annotations
 
 import click
 
+from scatterpump.cli.audit import audit
 from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.example import example
+from scatterpump.cli.inspect import inspect
 from scatterpump.cli.verdict import verdict
 from scatterpump.errors import PumpError
 from scatterpump.version import version
@@ -36,5 +38,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, example):
+for command in (verdict, audit, inspect, example):
     main.add_command(command)

@@ -12,7 +12,7 @@ from scatterpump.pump import Pump
 from scatterpump.solver.modes import with_modes
 from scatterpump.solver.trace import ReflectionTrace
 
-__all__ = ["scattering_matrix", "solve"]
+__all__ = ["scattering_matrices", "solve"]
 
 
 def solve(pump: Pump, phases: NDArray[np.float64], *, transmission: bool = True) -> ReflectionTrace:
@@ -29,11 +29,11 @@ def solve(pump: Pump, phases: NDArray[np.float64], *, transmission: bool = True)
     )
 
 
-def scattering_matrix(pump: Pump, phase: float) -> NDArray[np.complex128]:
-    """Return the full S at `phase`, all leads in and out in the order of their numbers."""
+def scattering_matrices(pump: Pump, phases: NDArray[np.float64]) -> NDArray[np.complex128]:
+    """Return the full S at each of `phases`, all leads in and out in the order of their numbers, shape (n, N, N)."""
     system = with_modes(pump)
     leads = list(range(len(system.leads)))
-    return np.asarray(_solve_one(pump, system, phase, leads, leads).data)
+    return np.array([_solve_one(pump, system, phase, leads, leads).data for phase in phases.tolist()], dtype=complex)
 
 
 def _solve_one(pump: Pump, system: Any, phase: float, out: list[int], into: list[int]) -> Any:

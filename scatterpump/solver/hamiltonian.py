@@ -112,6 +112,12 @@ class DrivenHamiltonian:
             self._arrays = False
         return np.array([self.at(float(phase))[self.live] for phase in phases]).reshape(len(phases), len(self.live))
 
+    def many(self, phases: Floats) -> Complex:
+        """Return all elements at each of `phases`, shape (n, nnz)."""
+        every: Complex = np.repeat(self.still[None], len(phases), axis=0)
+        every[:, self.live] = self.sample(phases)
+        return every
+
     def _built(self, phase: float) -> tuple[Any, Indices]:
         parameters = self.pump.parameters(phase)
         self.calls += 1

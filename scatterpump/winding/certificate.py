@@ -21,19 +21,30 @@ trigonometric nor straight between corners.
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterpump.errors import InputError, SingularReflectionError
 from scatterpump.pump import Pump
 from scatterpump.solver.band import EPS, norm_bound, row_sum_norm
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.path import Slopes
-from scatterpump.winding.cover import START, Cover, Progress, cover_cycle, covering, join, open_gaps, smallest_over
+from scatterpump.winding.cover import (
+    START,
+    Cover,
+    Progress,
+    cover_cycle,
+    covering,
+    is_leaky,
+    join,
+    open_gaps,
+    smallest_over,
+)
 from scatterpump.winding.crossings import find_crossings
 from scatterpump.winding.look import ROUNDING
 from scatterpump.winding.reference import FIRST, Contact, Reference, survey
 from scatterpump.winding.result import Leak, Winding
 
-__all__ = ["behind_good_contact", "certify", "certify_device"]
+__all__ = ["behind_good_contact", "certify", "certify_device", "good_contact"]
 
 TURN = 2 * np.pi
 SINGULAR = 1e-7
@@ -86,7 +97,7 @@ def behind_good_contact(pump: Pump) -> int | None:
     through.
     """
     device = fold(pump)
-    good, _ = device.with_broadening(GOOD_CONTACT * _scale(device))
+    good, _ = good_contact(device)
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
     cover = cover_cycle(good, slopes, budget=200)
     return round(sum(join(list(cover.centres))) / TURN) if cover.closed else None
@@ -95,7 +106,7 @@ def behind_good_contact(pump: Pump) -> int | None:
 def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progress | None = None) -> Winding:
     """Prove the winding of a device already folded; see `certify`."""
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
-    good, excess = device.with_broadening(GOOD_CONTACT * _scale(device))
+    good, excess = good_contact(device)
     contact = Contact(excess)
     here = Cover((), 0, "the contact is weaker than rounding can resolve")
     if not _below_rounding(device):
@@ -106,9 +117,14 @@ def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progres
     if device.drain.shape[1] == 0:
         return _by_absence_of_drain(device, here)
     _refuse_singular(here)
-    if budget - here.looks < FIRST:
+    if budget - here.looks < FIRST or is_leaky(here):
         return _refused(device, here, Reference(1.0, False, (), 0, 0), here.looks, here.reason)
     return _at_open_reference(device, good, contact, slopes, here, budget, progress)
+
+
+def good_contact(device: FoldedDevice) -> tuple[FoldedDevice, NDArray[np.float64]]:
+    """Return the device behind a good contact, and by how much its broadening of every channel is larger."""
+    return device.with_broadening(GOOD_CONTACT * _scale(device))
 
 
 def _scale(device: FoldedDevice) -> float:

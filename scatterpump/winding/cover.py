@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -26,9 +26,11 @@ __all__ = [
     "centre_of",
     "cover_cycle",
     "covering",
+    "is_leaky",
     "join",
     "neighbours",
     "open_gaps",
+    "smallest_met",
     "smallest_over",
 ]
 
@@ -37,6 +39,8 @@ Progress = Callable[[float], None]
 TURN = 2 * np.pi
 START = 5
 MARGIN = 1e-9
+LEAKY = 0.5  # smallest singular value of r: three quarters leak, so no charge is quantised whatever the number
+FAIR, HOPELESS = 30, 0.2  # what closes within 400 looks has covered more by then; levels inside a band cover a tenth
 
 
 @dataclass(frozen=True, eq=False)
@@ -89,6 +93,11 @@ class Cover:
         return not self.reason
 
 
+def is_leaky(cover: Cover) -> bool:
+    """Tell whether a look met so much leak that no charge can be quantised."""
+    return smallest_met(cover.centres) < LEAKY
+
+
 def cover_cycle(
     device: FoldedDevice, slopes: Slopes, *, budget: int, progress: Progress | None = None, seeds: tuple[Look, ...] = ()
 ) -> Cover:
@@ -105,11 +114,15 @@ def cover_cycle(
         centres = sorted([*centres, *(c for c in found if c is not None)], key=lambda c: c.phase)
         gaps = open_gaps(centres) if centres else []
         if progress is not None:
-            progress(1 - sum(gap.end - gap.start for gap in gaps) / TURN)
+            progress(1 - _share_open(gaps))
         places = [place for gap in gaps for place in gap.places]
         reason = _reason_to_stop(centres, found, gaps, places, looks, budget)
         if reason is not None:
             return Cover(tuple(centres), looks, reason)
+
+
+def _share_open(gaps: list[Gap]) -> float:
+    return sum(gap.end - gap.start for gap in gaps) / TURN
 
 
 def _reason_to_stop(
@@ -120,6 +133,12 @@ def _reason_to_stop(
         return ""
     if any(c is None or max(c.above.reach, c.below.reach) == 0.0 for c in found):
         return "a level there is too narrow for double precision"
+    worst, share = smallest_met(centres), 1 - _share_open(gaps)
+    if worst < LEAKY and looks >= FAIR and share < HOPELESS:
+        return (
+            f"most of what is sent in is not reflected (|r| down to {worst:.2g}), and {looks} looks cover only "
+            f"{100 * share:.2g} % of the cycle; a Fermi level inside a gap, or a longer device, may close the proof"
+        )
     if looks + len(places) > budget:
         return f"the budget of {budget} looks is spent; a larger one, or a wider gap, may close the proof"
     if len({c.phase for c in centres} | {p % TURN for p in places}) < len(centres) + len(places):
@@ -233,6 +252,11 @@ def smallest_over(centres: list[Centre]) -> float:
     its own floor.
     """
     return min(arm.floor for c in centres for arm in (c.below, c.above))
+
+
+def smallest_met(centres: Sequence[Centre]) -> float:
+    """Return the smallest singular value of r at the looks themselves, 1 if there are none."""
+    return min((c.seen.smallest for c in centres), default=1.0)
 
 
 def join(centres: list[Centre]) -> list[float]:
