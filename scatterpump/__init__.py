@@ -16,7 +16,11 @@ import warnings
 from scatterpump.audit.examine import examine
 from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.builder.chain import ModulatedChain
+from scatterpump.builder.channel import GatedChannel
 from scatterpump.builder.description import Disorder, Lead, Wave
+from scatterpump.builder.gates import Comb, Gate, SlidingWave
+from scatterpump.builder.optical import OpticalLattice
+from scatterpump.builder.quantity import quantity
 from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.cycle import Cycle
@@ -29,7 +33,7 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
-from scatterpump.pump import Pump
+from scatterpump.pump import Continuum, Pump, Units
 from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
@@ -41,18 +45,25 @@ __all__ = [
     "BulkGap",
     "ClosedGapError",
     "ClosedProbeError",
+    "Comb",
+    "Continuum",
     "Crossing",
     "Cycle",
     "Disorder",
     "Finding",
+    "Gate",
+    "GatedChannel",
     "InputError",
     "Lead",
     "ModulatedChain",
+    "OpticalLattice",
     "Pump",
     "PumpError",
     "ReflectionTrace",
     "SingularReflectionError",
+    "SlidingWave",
     "SolverError",
+    "Units",
     "Verdict",
     "Wave",
     "Winding",
@@ -62,6 +73,7 @@ __all__ = [
     "examine",
     "judge",
     "load_device",
+    "quantity",
     "reflect",
 ]
 

@@ -1,7 +1,7 @@
 """Device files: TOML to a description, and every mistake in one to a single line.
 
-A device file has the fields of the description it stands for under the same names; ``kind`` says which ("chain").
-The table ``[cycle]`` names one of the constructors of `Cycle` in its own ``kind`` and gives that constructor's
+A device file has the fields of the description it stands for under the same names; ``kind`` says which: "chain",
+"channel" or "optical".  The table ``[cycle]`` names one of the constructors of `Cycle` in its own ``kind`` and gives that constructor's
 arguments; a table's file is looked for next to the device file.
 """
 
@@ -16,17 +16,20 @@ from pathlib import Path
 from typing import Any
 
 from scatterpump.builder.chain import ModulatedChain
+from scatterpump.builder.channel import GatedChannel
 from scatterpump.builder.description import Disorder, Lead, Wave
+from scatterpump.builder.optical import OpticalLattice
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
 __all__ = ["load_device", "read_device"]
 
-KINDS: dict[str, type[ModulatedChain]] = {"chain": ModulatedChain}
+Device = ModulatedChain | GatedChannel | OpticalLattice
+KINDS: dict[str, type[Device]] = {"chain": ModulatedChain, "channel": GatedChannel, "optical": OpticalLattice}
 CYCLES: dict[str, Callable[..., Cycle]] = {"angle": Cycle.angle, "ellipse": Cycle.ellipse, "table": Cycle.through}
 
 
-def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain:
+def load_device(path: str | Path, changes: Iterable[str] = ()) -> Device:
     """Read a device file.
 
     Parameters
@@ -64,14 +67,14 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
     return read_device(content, folder=path.parent, source=str(path))
 
 
-def read_device(content: dict[str, Any], *, folder: Path = Path("."), source: str = "device") -> ModulatedChain:
+def read_device(content: dict[str, Any], *, folder: Path = Path("."), source: str = "device") -> Device:
     """Turn the content of a device file into the description it stands for."""
     from pydantic import TypeAdapter, ValidationError
 
     content = {"cycle": {"kind": "angle"}, **content}
     description = _choice(content.pop("kind", "chain"), KINDS, f"{source}: kind")
     try:  # through JSON, whose strict mode still takes lists for tuples
-        device: ModulatedChain = TypeAdapter(description).validate_json(
+        device: Device = TypeAdapter(description).validate_json(
             json.dumps(content, default=lambda value: [str(value)]),
             strict=True,
             context={"cycle": lambda table: _cycle(table, folder)},

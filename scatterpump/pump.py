@@ -14,7 +14,60 @@ from typing import Any
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
-__all__ = ["Pump"]
+__all__ = ["Continuum", "Pump", "Units"]
+
+
+@dataclass(frozen=True)
+class Continuum:
+    """The continuum that a lattice stands for: electrons of one mass, on sites a step apart.
+
+    Parameters
+    ----------
+    step : float
+        Distance of neighbouring sites, in metres.
+    mass : float
+        Effective mass, in kilograms.
+    energy : float
+        What one unit of the pump's energies is, in joules.
+
+    Raises
+    ------
+    InputError
+        If one of them is not a positive number.
+    """
+
+    step: float
+    mass: float
+    energy: float
+
+    def __post_init__(self) -> None:
+        for name in ("step", "mass", "energy"):
+            value = getattr(self, name)
+            if not (isfinite(value) and value > 0):
+                raise InputError(f"{name} is {value!r}", allowed="a positive number, in SI units")
+
+    @property
+    def hopping(self) -> float:
+        """hbar^2 / (2 mass step^2), in the pump's unit of energy."""
+        from scipy.constants import hbar
+
+        return float(hbar / self.step) * float(hbar / self.step) / (2 * self.mass) / self.energy
+
+
+@dataclass(frozen=True)
+class Units:
+    """What a pump's numbers are in the laboratory.
+
+    Attributes
+    ----------
+    energy : float
+        One unit of energy, in joules.
+    length : float
+        One lattice constant, in metres.
+    """
+
+    energy: float
+    length: float
 
 
 @dataclass(frozen=True)
@@ -40,6 +93,10 @@ class Pump:
         Parameters of the Hamiltonian that the cycle does not set.
     name : str
         What to call the pump in a report.
+    continuum : Continuum, optional
+        The continuum that the lattice stands for; then the audit checks that its step is fine enough.
+    units : Units, optional
+        What its energies and lengths are in the laboratory.
 
     Raises
     ------
@@ -55,6 +112,8 @@ class Pump:
     bulk: Any = None
     constants: dict[str, Any] = field(default_factory=dict)
     name: str = "pump"
+    continuum: Continuum | None = None
+    units: Units | None = None
 
     def __post_init__(self) -> None:
         if not isfinite(self.fermi_level):

@@ -16,13 +16,13 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
-from inspect import Parameter, Signature
 from math import lcm, pi
 from typing import TYPE_CHECKING, Any, ClassVar, Literal
 
 import numpy as np
 
-from scatterpump.builder.description import LARGEST, Disorder, Lead, Wave, require
+from scatterpump.builder.description import LARGEST, LONGEST, Disorder, Lead, Wave, require
+from scatterpump.builder.values import box_noise, with_parameters
 from scatterpump.cycle import NAMES, Cycle, is_name
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
@@ -31,8 +31,6 @@ if TYPE_CHECKING:
     import kwant
 
 __all__ = ["ModulatedChain"]
-
-LONGEST = 10_000_000
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -141,12 +139,12 @@ class ModulatedChain:
         return cell
 
     def _fill(self, builder: Any, lattice: Any, sites: range, bonds: range, disorder: Disorder) -> None:
-        onsite_noise = _noise(disorder.onsite, len(sites), f"onsite {disorder.seed}")
-        bond_noise = _noise(disorder.bonds, len(bonds), f"bonds {disorder.seed}")
+        onsite_noise = box_noise(disorder.onsite, len(sites), f"onsite {disorder.seed}")
+        bond_noise = box_noise(disorder.bonds, len(bonds), f"bonds {disorder.seed}")
         onsite = self._sum(self.onsite, lambda x, value: self.level + value + onsite_noise[x])
         bond = self._sum(self.bonds, lambda x, value: -(self.hopping + value + bond_noise[x]))
-        onsite_value = _with_parameters(lambda site, *values: onsite(site.tag[0], 0.0, values), 1, self.cycle.names)
-        bond_value = _with_parameters(
+        onsite_value = with_parameters(lambda site, *values: onsite(site.tag[0], 0.0, values), 1, self.cycle.names)
+        bond_value = with_parameters(
             lambda right, left, *values: bond(min(right.tag[0], left.tag[0]), 0.5, values), 2, self.cycle.names
         )
         builder[(lattice(x) for x in sites)] = onsite_value
@@ -168,20 +166,3 @@ class ModulatedChain:
             return finish(x, result)
 
         return total
-
-
-def _noise(width: float, count: int, salt: str) -> np.ndarray[Any, np.dtype[np.float64]]:
-    if width == 0:
-        return np.zeros(count)
-    import kwant.digest
-
-    return np.array([width * (kwant.digest.uniform(str(x), salt) - 0.5) for x in range(count)])
-
-
-def _with_parameters(function: Callable[..., Any], places: int, names: Sequence[str]) -> Callable[..., Any]:
-    """Give a value function the signature (site(s), *names) that kwant reads parameter names from."""
-    free = (f"site_{i}" for i in range(places + len(names)) if f"site_{i}" not in names)
-    parts = [Parameter(next(free), Parameter.POSITIONAL_ONLY) for _ in range(places)]
-    parts += [Parameter(name, Parameter.POSITIONAL_OR_KEYWORD) for name in names]
-    function.__signature__ = Signature(parts)  # type: ignore[attr-defined]  # the protocol inspect.signature reads
-    return function

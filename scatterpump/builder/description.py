@@ -12,9 +12,10 @@ from typing import Any, ClassVar
 from scatterpump.cycle import is_name
 from scatterpump.errors import InputError
 
-__all__ = ["LARGEST", "Disorder", "Lead", "Wave", "require"]
+__all__ = ["LARGEST", "LONGEST", "Disorder", "Lead", "Wave", "require"]
 
 LARGEST = 1e60
+LONGEST = 10_000_000  # sites
 SMALLEST = 1e-60
 
 
