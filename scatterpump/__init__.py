@@ -33,6 +33,9 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
+from scatterpump.operation.length import ShortestDevice, shortest_device
+from scatterpump.operation.plateaus import Plateau, plateaus
+from scatterpump.operation.tolerance import DisorderTolerance, DriveTolerance, disorder_tolerance, drive_tolerance
 from scatterpump.pump import Continuum, Pump, Units
 from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace
@@ -50,6 +53,8 @@ __all__ = [
     "Crossing",
     "Cycle",
     "Disorder",
+    "DisorderTolerance",
+    "DriveTolerance",
     "Finding",
     "Gate",
     "GatedChannel",
@@ -57,9 +62,11 @@ __all__ = [
     "Lead",
     "ModulatedChain",
     "OpticalLattice",
+    "Plateau",
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "ShortestDevice",
     "SingularReflectionError",
     "SlidingWave",
     "SolverError",
@@ -70,11 +77,15 @@ __all__ = [
     "bulk_gap",
     "certify",
     "chern_number",
+    "disorder_tolerance",
+    "drive_tolerance",
     "examine",
     "judge",
     "load_device",
+    "plateaus",
     "quantity",
     "reflect",
+    "shortest_device",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

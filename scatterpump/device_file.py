@@ -1,8 +1,8 @@
 """Device files: TOML to a description, and every mistake in one to a single line.
 
 A device file has the fields of the description it stands for under the same names; ``kind`` says which: "chain",
-"channel" or "optical".  The table ``[cycle]`` names one of the constructors of `Cycle` in its own ``kind`` and gives that constructor's
-arguments; a table's file is looked for next to the device file.
+"channel" or "optical".  The table ``[cycle]`` names one of the constructors of `Cycle` in its own ``kind`` and gives
+that constructor's arguments; a table's file is looked for next to the device file.
 """
 
 from __future__ import annotations

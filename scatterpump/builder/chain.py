@@ -14,7 +14,7 @@ still uniform. A dimerised or a quasi-periodic chain is a matter of two lines:
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from math import lcm, pi
 from typing import TYPE_CHECKING, Any, ClassVar, Literal
@@ -101,6 +101,12 @@ class ModulatedChain:
         )
         cell = lcm(*(ratio.numerator for ratio in ratios))
         return cell if exact and cell <= self.sites else None
+
+    def resized(self, cells: int) -> ModulatedChain:
+        """Return the same chain `cells` periods long."""
+        if self.period is None:
+            raise InputError("the chain's waves do not repeat within it", allowed="waves with a common period")
+        return replace(self, sites=cells * self.period)
 
     def pump(self) -> Pump:
         """Build the kwant system and return it as a `Pump`: probe lead 0, drain lead 1."""

@@ -129,11 +129,6 @@ class GatedChannel:
         cell = lcm(*(len(count) for count in counts if count is not None))
         return cell if cell <= round(self.length / self.step) else None
 
-    @property
-    def cells(self) -> float | None:
-        """How many cells long the channel is, or None if its interior does not repeat."""
-        return None if self.cell is None else self.length / self.step / self.cell
-
     def resized(self, cells: int) -> GatedChannel:
         """Return the same channel `cells` cells long."""
         if self.cell is None:
