@@ -34,7 +34,9 @@ from scatterpump.errors import (
     SolverError,
 )
 from scatterpump.operation.length import ShortestDevice, shortest_device
+from scatterpump.operation.lines import Line as SheetLine
 from scatterpump.operation.plateaus import Plateau, plateaus
+from scatterpump.operation.sheet import Sheet, operating_sheet
 from scatterpump.operation.tolerance import DisorderTolerance, DriveTolerance, disorder_tolerance, drive_tolerance
 from scatterpump.pump import Continuum, Pump, Units
 from scatterpump.solver.reflect import reflect
@@ -66,6 +68,8 @@ __all__ = [
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "Sheet",
+    "SheetLine",
     "ShortestDevice",
     "SingularReflectionError",
     "SlidingWave",
@@ -82,6 +86,7 @@ __all__ = [
     "examine",
     "judge",
     "load_device",
+    "operating_sheet",
     "plateaus",
     "quantity",
     "reflect",

@@ -10,6 +10,7 @@ import click
 from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.example import example
 from scatterpump.cli.verdict import verdict
+from scatterpump.cli.window import window
 from scatterpump.errors import PumpError
 from scatterpump.version import version
 
@@ -36,5 +37,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, example):
+for command in (verdict, window, example):
     main.add_command(command)

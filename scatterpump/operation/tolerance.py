@@ -23,17 +23,16 @@ from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.errors import ClosedGapError, InputError
 from scatterpump.operation.altered import with_disorder, with_drive
 from scatterpump.pump import Pump
-from scatterpump.solver.band import norm_bound
-from scatterpump.solver.folded import fold
-from scatterpump.winding.cover import Cover, cover_cycle, join
+from scatterpump.solver.reflect import reflect
+from scatterpump.winding.unwrap import steps
 
 __all__ = ["DisorderTolerance", "DriveTolerance", "Reach", "disorder_tolerance", "drive_tolerance"]
 
-SAMPLES = 4
-LARGEST = 16.0  # times the proven distance of the level: beyond it nothing is tried
-RESOLVED = 0.25  # of a width: samples differ by more
-LOOKS = 400  # for the proof of the device without disorder
-MORE_LOOKS = (3, 32)  # a sample may take so many times as many, and so many more
+SAMPLES = 3
+LADDER = (1.0, 1.5, 2.0, 3.0, 4.0)  # widths to try, in proven ones: samples differ by more than these steps
+READINGS = 360  # phases at which the integer of a sample is read off
+FAST = np.pi / 2  # a step between two of them that may have been read wrong
+LEAKS = 1e-2  # what passes a device that is no pump any more
 ROUGH = 0.1  # accuracy of a gap that only decides how far the next step goes
 LAST_STEP = 0.005  # of the factor: below it a march along the drive has arrived
 MOST_STEPS = 60
@@ -57,7 +56,8 @@ class DisorderTolerance:
         The Fermi level at which that width is largest, the middle of its window, and the width there; the pump's own
         where the window is open on one side.
     samples : tuple of float
-        Estimated: for each sample of disorder the largest width tried at which the device kept its proven integer.
+        Estimated: for each sample of disorder the largest width tried up to which the device kept its integer, read off
+        at 360 phases without a proof; nothing above four times `width` is tried.
     exact : bool
         False if the proven bound rests on an estimate of how H varies between samples.
     """
@@ -127,8 +127,10 @@ def disorder_tolerance(pump: Pump, *, samples: int = SAMPLES) -> DisorderToleran
     low, high = gap.lower_edge.upper, gap.upper_edge.lower
     closed = np.isfinite(high - low)
     level, half = ((low + high) / 2, (high - low) / 2) if closed else (pump.fermi_level, gap.distance_lower)
-    clean = _covered(pump, LOOKS)
-    tried = tuple(_borne(pump, seed, clean, gap.distance_lower) for seed in range(samples)) if clean.closed else ()
+    number = _read_off(pump)
+    tried: tuple[float, ...] = ()
+    if number is not None:
+        tried = tuple(_borne(pump, seed, number, 2 * gap.distance_lower) for seed in range(samples))
     return DisorderTolerance(gap.distance_lower, 2 * gap.distance_lower, level, 2 * half, tried, gap.exact)
 
 
@@ -165,32 +167,23 @@ def _open_gap(pump: Pump) -> BulkGap:
     return gap
 
 
-def _covered(pump: Pump, budget: int) -> Cover:
-    """Return a proof of the winding alone, without a bound on the leak; closed if it is one."""
-    device = fold(pump)
-    return cover_cycle(device, device.path.slopes(lambda entries: norm_bound(device.band(entries))), budget=budget)
-
-
-def _turns(cover: Cover) -> int:
-    return round(sum(join(list(cover.centres))) / (2 * np.pi))
-
-
-def _borne(pump: Pump, seed: int, clean: Cover, start: float) -> float:
-    """Return the largest width tried at which sample `seed` kept its integer: doubled while it does, then halved."""
-    times, more = MORE_LOOKS
-
-    def holds(width: float) -> bool:
-        cover = _covered(with_disorder(pump, width, seed=seed), times * clean.looks + more)
-        return cover.closed and _turns(cover) == _turns(clean)
-
-    good, bad, width = 0.0, LARGEST * start, 2 * start
-    while bad - good > RESOLVED * bad:
-        if holds(width):
-            good = width
-        else:
-            bad = width
-        width = min(2 * width, (good + bad) / 2)
+def _borne(pump: Pump, seed: int, number: int, proven: float) -> float:
+    """Return the largest width on the ladder up to which sample `seed` kept its integer, 0 if it did at none."""
+    good = 0.0
+    for rung in LADDER:
+        if _read_off(with_disorder(pump, rung * proven, seed=seed)) != number:
+            return good
+        good = rung * proven
     return good
+
+
+def _read_off(pump: Pump) -> int | None:
+    """Return the winding of det r between many phases, or None if it leaks or turns too fast to be read off them."""
+    trace = reflect(pump, np.linspace(0, 2 * np.pi, READINGS + 1))
+    if trace.leakage.max() > LEAKS:
+        return None
+    found = steps(trace.reflection)
+    return round(found.turns) if found.largest.max() < FAST else None
 
 
 @dataclass
