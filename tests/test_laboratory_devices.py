@@ -65,9 +65,9 @@ def test_traces_are_voltages():
     names = ("v0", "v1", "v2", "v3")
     cycle = sp.Cycle(lambda phi: {name: 10 * cos(phi - pi / 2 * j) for j, name in enumerate(names)})
     traced = replace(CONVEYOR, comb=replace(COMB, amplitude=0, traces=names), cycle=cycle)
+    one, other = (DrivenHamiltonian(device.pump()) for device in (CONVEYOR, traced))
     for phase in (0.0, 0.4, 3.3):
-        one, other = (DrivenHamiltonian(device.pump()).at(phase) for device in (CONVEYOR, traced))
-        assert_allclose(one, other, atol=1e-12)  # derived
+        assert_allclose(one.at(phase), other.at(phase), atol=1e-12)  # derived
 
 
 # ---- the grid --------------------------------------------------------------------------------------------------------
@@ -109,7 +109,7 @@ def test_hopping_is_the_handbooks():
 @pytest.mark.parametrize(("level", "number"), [(-1.05, 1), (-0.05, 2)])
 def test_conveyor_carries_the_levels_that_each_well_holds(level, number):
     """A sliding potential that traps n filled levels carries n: D. J. Thouless, Phys. Rev. B 27, 6083 (1983)."""
-    pump = replace(CONVEYOR, fermi_level=level).pump()
+    pump = replace(CONVEYOR, fermi_level=level, length=480).pump()
     winding = sp.certify(pump)
     assert winding.certified
     assert winding.number == sp.chern_number(pump) == number
@@ -117,7 +117,7 @@ def test_conveyor_carries_the_levels_that_each_well_holds(level, number):
 
 def test_sliding_wave_carries_one_and_backwards_one_back():
     wave = sp.SlidingWave(amplitude="2.5 meV", wavelength="0.16 um")
-    channel = replace(CONVEYOR, comb=None, waves=[wave])
+    channel = replace(CONVEYOR, comb=None, waves=[wave], length=480)
     pump = channel.pump()
     assert sp.certify(pump).number == 1
     assert sp.certify(pump.on(pump.cycle.reversed())).number == -1
@@ -133,14 +133,13 @@ SUPERLATTICES = [
     (10, 5, 8.0, 0),
     (6, 3, 3.5, 1),
     (6, 3, 5.5, 0),
-    (3, 10, 4.5, 1),
     (0.5, 10, 3.2, 1),
 ]
 
 
 @pytest.mark.parametrize(("short", "long", "level", "number"), SUPERLATTICES)
 def test_superlattice_of_light(short, long, level, number):
-    cells = 24 if level == 5.145 else 10
+    cells = 16 if level == 5.145 else 8
     lattice = sp.OpticalLattice(cells=cells, short_depth=short, long_depth=long, fermi_level=level)
     winding = sp.certify(lattice.pump())
     assert winding.certified

@@ -19,7 +19,7 @@ from scatterpump.operation.sheet import Sheet
 EXAMPLES = Path(__file__).parents[1] / "examples"
 CONVEYOR = EXAMPLES / "conveyor.toml"
 WIRE = sp.Lead(hopping=2.0)
-CHAIN = sp.ModulatedChain(sites=36, fermi_level=-1.2, onsite=[sp.Wave(1.5, 3)], probe=WIRE, drain=WIRE)
+CHAIN = sp.ModulatedChain(sites=24, fermi_level=-1.2, onsite=[sp.Wave(1.5, 3)], probe=WIRE, drain=WIRE)
 
 
 def call(*arguments: object) -> Result:
@@ -77,7 +77,7 @@ def test_json_is_plain_and_whole(sheet: Sheet) -> None:
 
 
 def test_closed_gap_leaves_the_plateaus_to_move_to() -> None:
-    sheet = sp.operating_sheet(replace(CHAIN, fermi_level=0.3), samples=0)
+    sheet = sp.operating_sheet(replace(CHAIN, sites=6, fermi_level=0.3), samples=0)
     assert not sheet.trustworthy
     assert sheet.limits == ()
     assert {p.number for p in sheet.plateaus} >= {1, -1}
@@ -112,19 +112,20 @@ def test_energies_in_their_units() -> None:
 
 
 def test_command_from_device_file_to_sheet(tmp_path: Path) -> None:
-    result = call("window", CONVEYOR, "--samples", 0, "--json", tmp_path / "sheet.json")
+    out = tmp_path / "sheet.json"
+    result = call("window", CONVEYOR, "--set", "length=480 nm", "--samples", 0, "--json", out)
     assert result.exit_code == 0, result.output
-    found = json.loads((tmp_path / "sheet.json").read_text())
+    found = json.loads(out.read_text())
     assert "meV" in result.stdout and "nm" in result.stdout
     assert found["verdict"]["winding"]["number"] == found["verdict"]["chern"] == 1
     # a well holds one level more in each window: D. J. Thouless, Phys. Rev. B 27, 6083 (1983)
     assert [plateau["number"] for plateau in found["plateaus"]] == [0, 1, 2]
 
 
-def test_command_on_a_closed_gap_is_exit_code_one(tmp_path: Path) -> None:
+def test_command_on_a_hard_wall_is_exit_code_one(tmp_path: Path) -> None:
     path = tmp_path / "chain.toml"
-    path.write_text('sites = 12\nonsite = [{amplitude = 1.5, period = 3}]\nprobe = {hopping = 2.0}\ndrain = "wall"\n')
-    result = call("window", path, "--set", "fermi_level=-1.2", "--samples", 0, "--json", "-")
+    path.write_text('sites = 6\nonsite = [{amplitude = 1.5, period = 3}]\nprobe = {hopping = 2.0}\ndrain = "wall"\n')
+    result = call("window", path, "--set", "fermi_level=-2.6", "--samples", 0, "--json", "-")
     assert result.exit_code == 1
     assert json.loads(result.stdout)["trustworthy"] is False
 

@@ -9,20 +9,23 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cache
 from math import ceil, log
 from typing import Protocol, runtime_checkable
 
 import numpy as np
 
 from scatterpump.bulk.decay import decay_per_cell
-from scatterpump.errors import ClosedGapError, InputError
+from scatterpump.errors import ClosedGapError, InputError, SingularReflectionError
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.winding.certificate import certify
+from scatterpump.winding.result import Winding
 
 __all__ = ["Resizable", "ShortestDevice", "shortest_device"]
 
 PHASES, ROUNDS = 64, 3
+AROUND = (-1.0, -0.5, 0.0, 0.5, 1.0)  # half-widths from where a level crosses the Fermi level
 PROPAGATING = 1 - 1e-6
 MOST_CELLS = 10_000
 
@@ -91,20 +94,35 @@ def shortest_device(device: Resizable, *, leak: float = 1e-6) -> ShortestDevice:
     decay = decay_per_cell(pump)
     if decay >= PROPAGATING:
         raise ClosedGapError(pump.fermi_level, "a state there propagates through the interior")
-    cells = _cells(lambda n: _leak(device.resized(n).pump()), decay, leak)
-    found, shorter = (_leak(device.resized(n).pump()) if n else 1.0 for n in (cells, cells - 1))
-    winding = certify(device.resized(cells).pump())
-    return ShortestDevice(cells, found, winding.leak.bound, shorter, winding.number, decay, leak)
+
+    @cache
+    def seen(n: int) -> tuple[float, Winding | None]:
+        return _seen(device.resized(n).pump()) if n else (1.0, None)
+
+    cells = _cells(lambda n: seen(n)[0], decay, leak)
+    found, winding = seen(cells)
+    bound, number = (1.0, None) if winding is None else (float(winding.leak.bound), winding.number)
+    return ShortestDevice(cells, found, bound, seen(cells - 1)[0], number, decay, leak)
 
 
-def _leak(pump: Pump) -> float:
-    """Return the largest |t|^2 on a grid of the cycle, then on finer ones about the largest."""
+def _seen(pump: Pump) -> tuple[float, Winding | None]:
+    """Return the largest |t|^2 met, and the winding.
+
+    Looked at are a grid of the cycle, finer ones about the largest, and wherever the proof of the winding has a level
+    cross the Fermi level: a device of few cells leaks there through resonances that no grid would meet.
+    """
+    try:
+        winding = certify(pump)
+    except SingularReflectionError:
+        return 1.0, None
+    crossings = [c.phase + part * c.width for c in winding.crossings for part in AROUND]
+    worst = float(reflect(pump, crossings).leakage.max()) if crossings else 0.0
     centre, half = np.pi, np.pi
     for _ in range(ROUNDS):
         phases = centre + half * np.linspace(-1, 1, PHASES)
         leak = reflect(pump, phases).leakage
-        centre, half = float(phases[leak.argmax()]), 4 * half / PHASES
-    return float(leak.max())
+        worst, centre, half = max(worst, float(leak.max())), float(phases[leak.argmax()]), 4 * half / PHASES
+    return worst, winding
 
 
 def _cells(leak: Callable[[int], float], decay: float, goal: float) -> int:

@@ -96,9 +96,12 @@ def length(bench: Bench) -> Line | None:
         return None
     found = shortest_device(bench.device, leak=bench.error)
     cell = bench.pump.finalized_bulk.cell_size
-    text = f"{found.cells} cells, {bench.measure.length(found.cells * cell)}, for a leak of {bench.error:.1g}: "
-    text += f"{found.leak:.1e}, and {found.shorter_leak:.1e} with one cell less"
-    values = {"cells": found.cells, "leak": found.leak, "shorter_leak": found.shorter_leak, "goal": found.goal}
+    plural = "" if found.cells == 1 else "s"
+    text = f"{found.cells} cell{plural}, {bench.measure.length(found.cells * cell)}, leaks up to {found.leak:.1e}"
+    text += f" ({f'proven {found.leak_bound:.1e}' if found.leak_bound < 1 else 'no bound proven'})"
+    if found.cells > 1:
+        text += f"; one cell less {found.shorter_leak:.1e}, where {found.goal:.1g} is allowed"
+    values = {name: getattr(found, name) for name in ("cells", "leak", "leak_bound", "shorter_leak", "goal", "number")}
     return Line("shortest", "computed", text, values)
 
 

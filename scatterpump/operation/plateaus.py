@@ -21,7 +21,7 @@ from scatterpump.errors import ClosedGapError, ClosedProbeError, InputError, Sin
 from scatterpump.pump import Pump
 from scatterpump.winding.certificate import certify
 
-__all__ = ["Plateau", "plateaus"]
+__all__ = ["Plateau", "plateaus", "require_range"]
 
 Reals = NDArray[np.float64]
 
@@ -109,8 +109,7 @@ def plateaus(
     >>> [(round(p.lower, 4), round(p.upper, 4), p.number) for p in sp.plateaus(pump, between=(-2, 2))]
     [(-1.75, -0.6712, 1), (0.6712, 1.75, -1)]
     """
-    if between is not None and not (all(map(isfinite, between)) and between[0] < between[1]):
-        raise InputError(f"the range is {between}", allowed="two finite energies, the lower one first")
+    require_range(between)
     bands = _Bands(bloch_cell(pump))
     low, high = between or (-inf, inf)
     found = []
@@ -119,6 +118,12 @@ def plateaus(
         if gap is not None:
             found.append(_plateau(pump, gap, (low, high)))
     return tuple(found)
+
+
+def require_range(between: tuple[float, float] | None) -> None:
+    """Refuse a range of Fermi levels that is none."""
+    if between is not None and not (all(map(isfinite, between)) and between[0] < between[1]):
+        raise InputError(f"the range is {between}", allowed="two finite energies, the lower one first")
 
 
 class _Bands:

@@ -12,7 +12,7 @@ from scatterpump.errors import InputError
 from scatterpump.operation.bench import Bench
 from scatterpump.operation.lines import LIMITS, OUTPUT, Line
 from scatterpump.operation.measure import Measure
-from scatterpump.operation.plateaus import Plateau
+from scatterpump.operation.plateaus import Plateau, require_range
 from scatterpump.operation.tolerance import SAMPLES
 from scatterpump.plain import plain
 from scatterpump.verdict import Verdict, judge
@@ -136,6 +136,7 @@ def operating_sheet(
     """
     if not 0 < error < 0.5:
         raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
+    require_range(between)
     from threadpoolctl import threadpool_limits
 
     tell = progress or (lambda share: None)
