@@ -17,8 +17,12 @@ from scatterpump.anatomy.layout import Layout, inspect
 from scatterpump.audit.examine import examine
 from scatterpump.audit.finding import AuditReport, Finding, Place
 from scatterpump.builder.chain import ModulatedChain
+from scatterpump.builder.channel import GatedChannel
 from scatterpump.builder.cylinder import FluxCylinder
 from scatterpump.builder.description import Disorder, Lead, SheetLead, Wave
+from scatterpump.builder.gates import Comb, Gate, SlidingWave
+from scatterpump.builder.optical import OpticalLattice
+from scatterpump.builder.quantity import quantity
 from scatterpump.builder.ribbon import ModulatedRibbon
 from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
@@ -34,7 +38,12 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
-from scatterpump.pump import Continuum, Pump
+from scatterpump.operation.length import ShortestDevice, shortest_device
+from scatterpump.operation.lines import Line as SheetLine
+from scatterpump.operation.plateaus import Plateau, plateaus
+from scatterpump.operation.sheet import Sheet, operating_sheet
+from scatterpump.operation.tolerance import DisorderTolerance, DriveTolerance, disorder_tolerance, drive_tolerance
+from scatterpump.pump import Continuum, Pump, Units
 from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
@@ -47,41 +56,59 @@ __all__ = [
     "BulkGap",
     "ClosedGapError",
     "ClosedProbeError",
+    "Comb",
     "Continuum",
     "Crossing",
     "Cycle",
     "CycleError",
     "Disorder",
+    "DisorderTolerance",
+    "DriveTolerance",
     "Finding",
     "FluxCylinder",
+    "Gate",
+    "GatedChannel",
     "InputError",
     "Layout",
     "Lead",
     "ModulatedChain",
     "ModulatedRibbon",
     "NoBulkError",
+    "OpticalLattice",
     "Place",
+    "Plateau",
     "Pump",
     "PumpError",
     "ReflectionTrace",
     "Resolved",
     "Sector",
+    "Sheet",
     "SheetLead",
+    "SheetLine",
+    "ShortestDevice",
     "SingularReflectionError",
+    "SlidingWave",
     "SolverError",
+    "Units",
     "Verdict",
     "Wave",
     "Winding",
     "bulk_gap",
     "certify",
     "chern_number",
+    "disorder_tolerance",
+    "drive_tolerance",
     "examine",
     "inspect",
     "judge",
     "load_device",
+    "operating_sheet",
+    "plateaus",
+    "quantity",
     "reflect",
     "reflect_grid",
     "resolve",
+    "shortest_device",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

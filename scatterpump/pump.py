@@ -17,7 +17,7 @@ from scatterpump.adoption import finalized, finalized_cell
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
-__all__ = ["Continuum", "Pump"]
+__all__ = ["Continuum", "Pump", "Units"]
 
 
 @dataclass(frozen=True)
@@ -58,6 +58,22 @@ class Continuum:
 
 
 @dataclass(frozen=True)
+class Units:
+    """What a pump's numbers are in the laboratory.
+
+    Attributes
+    ----------
+    energy : float
+        One unit of energy, in joules.
+    length : float
+        One lattice constant, in metres.
+    """
+
+    energy: float
+    length: float
+
+
+@dataclass(frozen=True)
 class Pump:
     """A quantum transport system driven round a cycle.
 
@@ -85,6 +101,8 @@ class Pump:
         What to call the leads, in the order they were attached; empty for plain numbers.
     continuum : Continuum, optional
         The continuum that the lattice stands for; then the audit checks that its step is fine enough.
+    units : Units, optional
+        What its energies and lengths are in the laboratory.
 
     Attributes
     ----------
@@ -107,6 +125,7 @@ class Pump:
     name: str = "pump"
     lead_names: Sequence[str] = ()
     continuum: Continuum | None = None
+    units: Units | None = None
     remembered: dict[str, Any] = field(default_factory=dict, init=False, repr=False, compare=False)
 
     def __post_init__(self) -> None:

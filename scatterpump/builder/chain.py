@@ -15,15 +15,17 @@ dimerised or a quasi-periodic chain is a matter of two lines:
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any, ClassVar, Literal
 
 import numpy as np
 
-from scatterpump.builder.description import LARGEST, Disorder, Lead, Wave, require
+from scatterpump.builder.description import LARGEST, LONGEST, Disorder, Lead, Wave, require
 from scatterpump.builder.matrix import Matrix, as_array, as_hermitian, as_rows
-from scatterpump.builder.waves import common_period, require_parameters, wave_sum, with_parameters
+from scatterpump.builder.values import box_noise, with_parameters
+from scatterpump.builder.waves import common_period, require_parameters, wave_sum
 from scatterpump.cycle import Cycle
+from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 
 if TYPE_CHECKING:
@@ -31,7 +33,6 @@ if TYPE_CHECKING:
 
 __all__ = ["ModulatedChain"]
 
-LONGEST = 10_000_000
 MANY = 64
 MATRICES = ("onsite_matrix", "bond_matrix", "conserved")
 
@@ -114,6 +115,12 @@ class ModulatedChain:
         """Smallest number of sites after which all waves repeat, or None if they do not within the chain."""
         return common_period((*self.onsite, *self.bonds), self.sites)
 
+    def resized(self, cells: int) -> ModulatedChain:
+        """Return the same chain `cells` periods long."""
+        if self.period is None:
+            raise InputError("the chain's waves do not repeat within it", allowed="waves with a common period")
+        return replace(self, sites=cells * self.period)
+
     def pump(self) -> Pump:
         """Build the kwant system and return it as a `Pump`: probe lead 0, drain lead 1."""
         walled = isinstance(self.drain, str)
@@ -165,8 +172,8 @@ class ModulatedChain:
 
     def _fill(self, builder: Any, lattice: Any, sites: range, bonds: range, disorder: Disorder) -> None:
         one, names = self._one, self.cycle.names
-        onsite_noise = _noise(disorder.onsite, len(sites), f"onsite {disorder.seed}")
-        bond_noise = _noise(disorder.bonds, len(bonds), f"bonds {disorder.seed}")
+        onsite_noise = box_noise(disorder.onsite, len(sites), f"onsite {disorder.seed}")
+        bond_noise = box_noise(disorder.bonds, len(bonds), f"bonds {disorder.seed}")
         waves, hopping_waves = wave_sum(self.onsite, names, one), wave_sum(self.bonds, names, one)
         level = self.level * one + self._matrix(self.onsite_matrix)
         hopping = self.hopping * one + self._matrix(self.bond_matrix)
@@ -188,11 +195,3 @@ def _adjoint(value: Any) -> Any:
     """The conjugate transpose of a matrix, of each in a stack, or of a number."""
     turned = np.conj(value)
     return turned.swapaxes(-1, -2) if turned.ndim > 1 else turned
-
-
-def _noise(width: float, count: int, salt: str) -> np.ndarray[Any, np.dtype[np.float64]]:
-    if width == 0:
-        return np.zeros(count)
-    import kwant.digest
-
-    return np.array([width * (kwant.digest.uniform(str(x), salt) - 0.5) for x in range(count)])

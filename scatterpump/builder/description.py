@@ -13,9 +13,10 @@ from scatterpump.builder.matrix import Matrix, as_rows
 from scatterpump.cycle import is_name
 from scatterpump.errors import InputError
 
-__all__ = ["LARGEST", "Disorder", "Lead", "SheetLead", "Wave", "require"]
+__all__ = ["LARGEST", "LONGEST", "Disorder", "Lead", "SheetLead", "Wave", "require"]
 
 LARGEST = 1e60
+LONGEST = 10_000_000  # sites
 SMALLEST = 1e-60
 
 

@@ -18,7 +18,8 @@ import numpy as np
 
 from scatterpump.builder.description import LARGEST, Disorder, SheetLead, Wave, require
 from scatterpump.builder.sheet import attach_sheet, noise
-from scatterpump.builder.waves import common_period, require_parameters, wave_sum, with_parameters
+from scatterpump.builder.values import with_parameters
+from scatterpump.builder.waves import common_period, require_parameters, wave_sum
 from scatterpump.cycle import Cycle
 from scatterpump.pump import Pump
 

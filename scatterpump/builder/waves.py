@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from fractions import Fraction
-from inspect import Parameter, Signature
 from math import lcm, pi
 from typing import Any
 
@@ -15,7 +14,7 @@ from scatterpump.builder.matrix import as_array
 from scatterpump.cycle import NAMES, Cycle, is_name
 from scatterpump.errors import InputError
 
-__all__ = ["common_period", "require_parameters", "wave_sum", "with_parameters"]
+__all__ = ["common_period", "require_parameters", "wave_sum"]
 
 
 def require_parameters(waves: Sequence[Wave], cycle: Cycle) -> None:
@@ -62,12 +61,3 @@ def wave_sum(waves: Sequence[Wave], names: Sequence[str], one: Any = 1.0) -> Cal
 
 def _factor(wave: Wave, one: Any) -> Any:
     return one if wave.matrix is None else as_array(wave.matrix, np.size(one, 0) if np.ndim(one) else 1, "matrix")
-
-
-def with_parameters(function: Callable[..., Any], places: int, names: Sequence[str]) -> Callable[..., Any]:
-    """Give a value function the signature (site(s), *names) that kwant reads parameter names from."""
-    free = (f"site_{i}" for i in range(places + len(names)) if f"site_{i}" not in names)
-    parts = [Parameter(next(free), Parameter.POSITIONAL_ONLY) for _ in range(places)]
-    parts += [Parameter(name, Parameter.POSITIONAL_OR_KEYWORD) for name in names]
-    function.__signature__ = Signature(parts)  # type: ignore[attr-defined]  # the protocol inspect.signature reads
-    return function

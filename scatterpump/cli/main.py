@@ -12,6 +12,7 @@ from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.example import example
 from scatterpump.cli.inspect import inspect
 from scatterpump.cli.verdict import verdict
+from scatterpump.cli.window import window
 from scatterpump.errors import PumpError
 from scatterpump.version import version
 
@@ -38,5 +39,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, audit, inspect, example):
+for command in (verdict, audit, inspect, window, example):
     main.add_command(command)

@@ -9,7 +9,9 @@ from __future__ import annotations
 from typing import Protocol
 
 from scatterpump.builder.chain import ModulatedChain
+from scatterpump.builder.channel import GatedChannel
 from scatterpump.builder.cylinder import FluxCylinder
+from scatterpump.builder.optical import OpticalLattice
 from scatterpump.builder.python_file import PythonFile
 from scatterpump.builder.ribbon import ModulatedRibbon
 from scatterpump.pump import Pump
@@ -28,6 +30,8 @@ KINDS: dict[str, type[Description]] = {
     "chain": ModulatedChain,
     "ribbon": ModulatedRibbon,
     "cylinder": FluxCylinder,
+    "channel": GatedChannel,
+    "optical": OpticalLattice,
     "python": PythonFile,
 }
 USUAL = "chain"

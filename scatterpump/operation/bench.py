@@ -1,0 +1,57 @@
+"""One device on the bench: what the lines of its sheet are taken from, each worked out once."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
+
+from scatterpump.bulk.gap import BulkGap
+from scatterpump.operation.measure import Measure
+from scatterpump.operation.plateaus import Plateau, plateaus
+from scatterpump.pump import Pump
+from scatterpump.verdict import Verdict
+
+__all__ = ["Bench"]
+
+
+@dataclass(frozen=True, eq=False)
+class Bench:
+    """A device, its verdict, and what is asked.
+
+    Attributes
+    ----------
+    device : object
+        The description, with a method ``pump()``.
+    pump : Pump
+    verdict : Verdict
+    error : float
+        Allowed deviation from the integer: of the leak, and of the charge.
+    samples : int
+        Samples of disorder to try.
+    between : (low, high) or None
+        Range of Fermi levels in which to look for plateaus.
+    """
+
+    device: Any
+    pump: Pump
+    verdict: Verdict
+    error: float
+    samples: int
+    between: tuple[float, float] | None
+
+    @property
+    def measure(self) -> Measure:
+        """The units of the sheet."""
+        return Measure(self.pump.units)
+
+    @property
+    def gap(self) -> BulkGap | None:
+        """The proven gap, or None without one that is open at the Fermi level."""
+        gap = self.verdict.gap
+        return gap if gap is not None and gap.is_open else None
+
+    @cached_property
+    def plateaus(self) -> tuple[Plateau, ...]:
+        """The windows of Fermi levels; none without a bulk cell."""
+        return () if self.pump.bulk is None else plateaus(self.pump, between=self.between)
