@@ -1,0 +1,159 @@
+"""The charge that a cycle of finite frequency carries: scattering between energies a whole number of quanta apart.
+
+With H(t) = sum_k H_k exp(ik omega t) the amplitudes at the energies e_n = e + n hbar omega obey
+
+    (e_n - Sigma(e_n)) psi_n - sum_k H_k psi_n+k = W_n,
+
+one sparse system for all rungs n = -N ... N-1 of the ladder.  |S_mb(e_i, e_j)|^2 follows from it, and the charge that
+enters from lead m in one cycle is (M. Moskalets, M. Buettiker, Phys. Rev. B 66, 205320 (2002))
+
+    Q_m = -(1/hbar omega) integral de  sum_b,n |S_mb(e_n, e)|^2 [f(e) - f(e_n)]
+        = integral de w(e) q_m(e),            w(e) = [f(e - hbar omega) - f(e)] / hbar omega,
+    q_m(e) = sum_b ( sum_{i < 0 <= j} - sum_{j < 0 <= i} ) |S_mb(e_i, e_j)|^2,
+
+f being the Fermi function of all leads: q_m counts what crosses from the rungs below e to those from e on.  In the slow
+limit w becomes -f' and q_m Brouwer's charge at e.
+
+A ladder cut off at N is unitary for every N, so that unitarity checks the solution and not the cut; the cut is checked
+by doubling N.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterpump.operation.wires import Wire, wires
+from scatterpump.pump import Pump
+from scatterpump.solver.hamiltonian import DrivenHamiltonian
+
+__all__ = ["Ladder", "LadderCharge", "crossing_charge", "ladder"]
+
+Complex = NDArray[np.complex128]
+Floats = NDArray[np.float64]
+Indices = NDArray[np.int64]
+TURN = 2 * np.pi
+SAMPLES = 4  # phases at which H is asked for, for each sideband: the ones beyond fold back far from the middle
+NEGLIGIBLE = 1e-14
+
+
+@dataclass(frozen=True, eq=False)
+class LadderCharge:
+    """What crosses one energy of a ladder.
+
+    Attributes
+    ----------
+    leads : (l,) float array
+        q_m, the charge that enters from each lead.
+    unitarity : float
+        Largest deviation of a column's sum of |S|^2 from 1.
+    """
+
+    leads: Floats
+    unitarity: float
+
+
+@dataclass(frozen=True, eq=False)
+class Ladder:
+    """A driven device with 2N rungs.
+
+    Attributes
+    ----------
+    sidebands : int
+        N.
+    size : int
+        Orbitals of the device.
+    drive : sparse matrix
+        sum_k H_k between rungs; unknowns are sorted by orbital, then by rung.
+    leads : list of Wire
+    """
+
+    sidebands: int
+    size: int
+    drive: Any
+    leads: list[Wire]
+
+    def charge(self, energy: float, frequency: float) -> LadderCharge:
+        """Solve the ladder whose rung 0 lies at `energy`, with rungs `frequency` (hbar omega) apart."""
+        rungs = np.arange(-self.sidebands, self.sidebands)
+        energies = energy + frequency * rungs
+        folded, widths, owner, rung = self._leads(energies)
+        solved = _solve(self.drive, np.tile(energies, self.size), folded, widths)
+        scattering = 1j * (widths.conj().T @ solved) - np.eye(widths.shape[1])
+        passed = np.abs(scattering) ** 2
+        leads = crossing_charge(passed, owner, rung - self.sidebands >= 0, len(self.leads))
+        return LadderCharge(leads, float(np.abs(passed.sum(axis=0) - 1).max(initial=0.0)))
+
+    def _leads(self, energies: Floats) -> tuple[Any, Any, Indices, Indices]:
+        """Sum of Sigma, and W with the lead and the rung of each of its columns."""
+        from scipy.sparse import coo_matrix
+
+        count, total = len(energies), self.size * len(energies)
+        places: list[list[Any]] = [[], [], []]
+        columns: list[list[Any]] = [[], [], []]
+        owner: list[int] = []
+        rung: list[int] = []
+        for number, lead in enumerate(self.leads):
+            sigma, widths = lead.selfenergy(energies)
+            down, across = np.meshgrid(lead.orbitals, lead.orbitals, indexing="ij")
+            for n in range(count):
+                _put(places, down * count + n, across * count + n, sigma[n])
+                first, open_modes = len(owner), widths[n].shape[1]
+                _put(columns, *np.meshgrid(lead.orbitals * count + n, first + np.arange(open_modes), indexing="ij"), widths[n])
+                owner += [number] * open_modes
+                rung += [n] * open_modes
+        folded, broad = (
+            coo_matrix((np.concatenate(values), (np.concatenate(rows), np.concatenate(cols))), shape=shape)
+            for (rows, cols, values), shape in ((places, (total, total)), (columns, (total, len(owner))))
+        )
+        return folded.tocsc(), broad.tocsc(), np.array(owner, dtype=int), np.array(rung, dtype=int)
+
+
+def ladder(pump: Pump, sidebands: int) -> Ladder:
+    """Prepare the ladder of `pump` with rungs -sidebands ... sidebands - 1."""
+    from scipy.sparse import csc_matrix, eye, kron
+
+    driven, count = DrivenHamiltonian(pump), 2 * sidebands
+    samples = SAMPLES * count
+    values = np.fft.fft(driven.many(TURN * np.arange(samples) / samples), axis=0) / samples
+    values[np.abs(values) < NEGLIGIBLE * np.abs(values).max(axis=0)] = 0.0
+    drive = csc_matrix((driven.size * count,) * 2, dtype=complex)
+    for k in range(1 - count, count):
+        if values[k].any():
+            harmonic = csc_matrix((values[k], (driven.rows, driven.columns)), shape=(driven.size,) * 2)
+            harmonic.eliminate_zeros()
+            drive = drive + kron(harmonic, eye(count, k=k), format="csc")
+    return Ladder(sidebands, driven.size, drive, wires(pump))
+
+
+def crossing_charge(passed: Floats, owner: Indices, upper: NDArray[np.bool_], leads: int) -> Floats:
+    """Return q_m of every lead from probabilities.
+
+    Parameters
+    ----------
+    passed : (c, c) float array
+        |S|^2 from the channel of a column into that of a row.
+    owner : (c,) int array
+        Lead of every channel.
+    upper : (c,) bool array
+        Whether its energy is rung 0 or above.
+    """
+    fallen = passed[:, upper].sum(axis=1) * ~upper
+    risen = passed[:, ~upper].sum(axis=1) * upper
+    return np.asarray(np.bincount(owner, weights=fallen - risen, minlength=leads))
+
+
+def _solve(drive: Any, energies: Floats, folded: Any, widths: Any) -> Complex:
+    """(E - H - Sigma)^-1 W."""
+    from scipy.sparse import diags
+    from scipy.sparse.linalg import splu
+
+    return np.asarray(splu((diags(energies) - drive - folded).tocsc()).solve(widths.toarray()))
+
+
+def _put(into: list[list[Any]], rows: Indices, columns: Indices, values: Complex) -> None:
+    for part, array in zip(into, (rows, columns, values), strict=True):
+        part.append(np.ravel(array))
