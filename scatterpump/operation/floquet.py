@@ -48,11 +48,15 @@ class LadderCharge:
     ----------
     leads : (l,) float array
         q_m, the charge that enters from each lead.
+    reach : float
+        Probability, summed over all channels, of crossing by way of the outer half of the rungs: an overestimate of
+        what lies beyond the last one.
     unitarity : float
         Largest deviation of a column's sum of |S|^2 from 1.
     """
 
     leads: Floats
+    reach: float
     unitarity: float
 
 
@@ -79,37 +83,36 @@ class Ladder:
     def charge(self, energy: float, frequency: float) -> LadderCharge:
         """Solve the ladder whose rung 0 lies at `energy`, with rungs `frequency` (hbar omega) apart."""
         rungs = np.arange(-self.sidebands, self.sidebands)
-        energies = energy + frequency * rungs
-        folded, widths, owner, rung = self._leads(energies)
-        solved = _solve(self.drive, np.tile(energies, self.size), folded, widths)
-        scattering = 1j * (widths.conj().T @ solved) - np.eye(widths.shape[1])
-        passed = np.abs(scattering) ** 2
-        leads = crossing_charge(passed, owner, rung - self.sidebands >= 0, len(self.leads))
-        return LadderCharge(leads, float(np.abs(passed.sum(axis=0) - 1).max(initial=0.0)))
+        folded, widths, owner, rung = self._leads(energy + frequency * rungs)
+        solved = _solve(self.drive, np.tile(energy + frequency * rungs, self.size), folded, widths)
+        passed = np.abs(1j * (widths.conj().T @ solved) - np.eye(widths.shape[1])) ** 2
+        unitarity = np.abs(passed.sum(axis=0) - 1).max(initial=0.0)
+        across = (rungs[rung] >= 0)[:, None] ^ (rungs[rung] >= 0)
+        far = np.abs(rungs[rung] + 0.5) > self.sidebands / 2
+        reach = passed[across & (far[:, None] | far)].sum()
+        return LadderCharge(
+            crossing_charge(passed, owner, rungs[rung] >= 0, len(self.leads)), float(reach), float(unitarity)
+        )
 
     def _leads(self, energies: Floats) -> tuple[Any, Any, Indices, Indices]:
         """Sum of Sigma, and W with the lead and the rung of each of its columns."""
-        from scipy.sparse import coo_matrix
+        from scipy.sparse import hstack
 
         count, total = len(energies), self.size * len(energies)
-        places: list[list[Any]] = [[], [], []]
-        columns: list[list[Any]] = [[], [], []]
-        owner: list[int] = []
-        rung: list[int] = []
+        rung = np.arange(count)[:, None, None]
+        sigmas, widths, owner, rungs = [], [], [], []
         for number, lead in enumerate(self.leads):
-            sigma, widths = lead.selfenergy(energies)
-            down, across = np.meshgrid(lead.orbitals, lead.orbitals, indexing="ij")
-            for n in range(count):
-                _put(places, down * count + n, across * count + n, sigma[n])
-                first, open_modes = len(owner), widths[n].shape[1]
-                _put(columns, *np.meshgrid(lead.orbitals * count + n, first + np.arange(open_modes), indexing="ij"), widths[n])
-                owner += [number] * open_modes
-                rung += [n] * open_modes
-        folded, broad = (
-            coo_matrix((np.concatenate(values), (np.concatenate(rows), np.concatenate(cols))), shape=shape)
-            for (rows, cols, values), shape in ((places, (total, total)), (columns, (total, len(owner))))
-        )
-        return folded.tocsc(), broad.tocsc(), np.array(owner, dtype=int), np.array(rung, dtype=int)
+            sigma, width = lead.selfenergy(energies)
+            place, modes = lead.orbitals * count, np.arange(width.shape[2])
+            rows, columns, channels = np.broadcast_arrays(
+                place[:, None] + rung, place + rung, modes + len(modes) * rung
+            )
+            is_open = width.any(axis=1).ravel()
+            sigmas.append(_sparse(sigma, rows, columns, (total, total)))
+            widths.append(_sparse(width, rows, channels, (total, len(is_open)))[:, is_open])
+            owner.append(np.full(is_open.sum(), number))
+            rungs.append(np.repeat(np.arange(count), len(modes))[is_open])
+        return sum(sigmas), hstack(widths, format="csc"), np.concatenate(owner), np.concatenate(rungs)
 
 
 def ladder(pump: Pump, sidebands: int) -> Ladder:
@@ -154,6 +157,7 @@ def _solve(drive: Any, energies: Floats, folded: Any, widths: Any) -> Complex:
     return np.asarray(splu((diags(energies) - drive - folded).tocsc()).solve(widths.toarray()))
 
 
-def _put(into: list[list[Any]], rows: Indices, columns: Indices, values: Complex) -> None:
-    for part, array in zip(into, (rows, columns, values), strict=True):
-        part.append(np.ravel(array))
+def _sparse(values: Complex, rows: Indices, columns: Indices, shape: tuple[int, int]) -> Any:
+    from scipy.sparse import coo_matrix
+
+    return coo_matrix((values.ravel(), (rows.ravel(), columns.ravel())), shape=shape).tocsc()

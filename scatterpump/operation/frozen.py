@@ -48,6 +48,8 @@ class FrozenCharge:
 
     Attributes
     ----------
+    probe : int
+        Number of the probe.
     leads : (l,) float array
         Charge that enters from each lead; 0 from one that is closed.
     leak : float
@@ -62,6 +64,7 @@ class FrozenCharge:
     converged : bool
     """
 
+    probe: int
     leads: Floats
     leak: float
     error: float
@@ -72,7 +75,13 @@ class FrozenCharge:
 
 
 def frozen_charge(
-    pump: Pump, *, levels: Iterable[float] = (), leak: bool = False, accuracy: float = ACCURACY, budget: int = BUDGET
+    pump: Pump,
+    *,
+    levels: Iterable[float] = (),
+    edges: Floats | None = None,
+    leak: bool = False,
+    accuracy: float = ACCURACY,
+    budget: int = BUDGET,
 ) -> FrozenCharge:
     """Integrate Brouwer's formula over the cycle at the pump's Fermi level.
 
@@ -81,6 +90,8 @@ def frozen_charge(
     pump : Pump
     levels : iterable of float
         Phases at which panels have to end, in radians: a level too narrow to be seen from far away.
+    edges : (p+1,) float array, optional
+        Phases between the panels to begin with, in place of corners, levels and even cuts.
     leak : bool
         Whether the leak is wanted; it needs r to be invertible all along the cycle.
     accuracy : float
@@ -99,7 +110,7 @@ def frozen_charge(
     count = len(device.leads)
     found = integrate(
         device.measure,
-        _edges(pump.cycle.corners, levels),
+        _edges(pump.cycle.corners, levels) if edges is None else edges,
         absolute=np.append(np.full(count, accuracy), LEAK_FLOOR),
         relative=np.append(np.zeros(count), LEAK_ACCURACY),
         budget=budget,
@@ -107,6 +118,7 @@ def frozen_charge(
     leads = np.zeros(len(pump.finalized.leads))
     leads[device.leads] = found.values[:-1]
     return FrozenCharge(
+        pump.probe,
         leads,
         float(found.values[-1]),
         float(found.errors[:-1].max()),

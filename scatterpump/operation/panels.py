@@ -62,14 +62,16 @@ def integrate(
         Most panels to measure.
     """
     starts, ends = edges[:-1], edges[1:]
-    whole, measured = measure(starts, ends), len(starts)
     values, sizes, errors = (np.zeros(len(absolute)) for _ in range(3))
+    whole, measured = np.empty((0, len(absolute))), 0
     kept: list[Floats] = [edges[-1:]]
     while True:
-        middles = (starts + ends) / 2
-        halves = measure(np.concatenate([starts, middles]), np.concatenate([middles, ends]))
-        measured += len(halves)
-        left, right = halves[: len(starts)], halves[len(starts) :]
+        middles, fresh = (starts + ends) / 2, len(starts) - len(whole)  # at first the panels, then only their halves
+        found = measure(
+            np.concatenate([starts[:fresh], starts, middles]), np.concatenate([ends[:fresh], middles, ends])
+        )
+        measured += len(found)
+        whole, left, right = np.split(np.concatenate([whole, found]), 3)
         off, size = np.abs(left + right - whole), np.abs(left) + np.abs(right)
         allowed = np.maximum(absolute, relative * (sizes + size.sum(axis=0)))
         refine = _worst((off / allowed).max(axis=1), 1.0 - float((errors / allowed).max()))

@@ -46,8 +46,8 @@ class Wire:
     cell: Complex
     hopping: Complex
 
-    def selfenergy(self, energies: Floats) -> tuple[Complex, list[Complex]]:
-        """Return Sigma on the orbitals and W with W W^+ = i (Sigma - Sigma^+), one column for each open channel.
+    def selfenergy(self, energies: Floats) -> tuple[Complex, Complex]:
+        """Return Sigma on the orbitals, and W with W W^+ = i (Sigma - Sigma^+).
 
         Parameters
         ----------
@@ -55,39 +55,40 @@ class Wire:
 
         Returns
         -------
-        (n, m, m) complex array, n arrays of shape (m, channels)
+        (n, m, m) complex array, (n, m, m) complex array
+            Columns of W that belong to closed channels are zero.
         """
         bundle = _bundle(self.cell, self.hopping)
         if bundle is None:
             return self._by_kwant(energies)
         states, levels, hops = bundle
         sigma = _single(energies[:, None] - levels, hops)
-        broadening = np.maximum(-2 * sigma.imag, 0.0)
-        widths = [states[:, row > 0] * np.sqrt(row[row > 0]) for row in broadening]
+        widths = states * np.sqrt(np.maximum(-2 * sigma.imag, 0.0))[:, None, :]
         return np.einsum("ia,na,ja->nij", states, sigma, states.conj()), widths
 
     def channels(self, energy: float) -> int:
         """Return the number of open modes at `energy`."""
-        return int(self.selfenergy(np.array([energy]))[1][0].shape[1])
+        return int(self.selfenergy(np.array([energy]))[1].any(axis=1).sum())
 
-    def _by_kwant(self, energies: Floats) -> tuple[Complex, list[Complex]]:
+    def _by_kwant(self, energies: Floats) -> tuple[Complex, Complex]:
+        found = [self._solved_by_kwant(energy) for energy in energies.tolist()]
+        sigmas, widths = (np.array(part) for part in zip(*found, strict=True))
+        return sigmas, widths
+
+    def _solved_by_kwant(self, energy: float) -> tuple[Complex, Complex]:
         from kwant.physics import modes
 
-        sigmas, widths = [], []
-        for energy in energies.tolist():
-            try:
-                propagating, stabilized = modes(self.cell - energy * np.eye(len(self.cell)), self.hopping)
-            except Exception as cause:  # kwant meets modes without velocity at a band edge
-                raise InputError(
-                    f"the modes of a lead cannot be computed at the energy {energy:g} ({cause})",
-                    allowed="energies away from every lead's band edges",
-                ) from cause
-            sigma = stabilized.selfenergy()
-            strength, states = np.linalg.eigh(1j * (sigma - sigma.conj().T))
-            first = len(strength) - len(propagating.momenta) // 2
-            sigmas.append(sigma)
-            widths.append(states[:, first:] * np.sqrt(np.maximum(strength[first:], 0.0)))
-        return np.array(sigmas), widths
+        try:
+            propagating, stabilized = modes(self.cell - energy * np.eye(len(self.cell)), self.hopping)
+        except Exception as cause:  # kwant meets modes without velocity at a band edge
+            raise InputError(
+                f"the modes of a lead cannot be computed at the energy {energy:g} ({cause})",
+                allowed="energies away from every lead's band edges",
+            ) from cause
+        sigma = stabilized.selfenergy()
+        strength, states = np.linalg.eigh(1j * (sigma - sigma.conj().T))
+        strength[: len(strength) - len(propagating.momenta) // 2] = 0.0
+        return sigma, states * np.sqrt(np.maximum(strength, 0.0))
 
 
 def wires(pump: Pump) -> list[Wire]:
