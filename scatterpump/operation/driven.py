@@ -8,14 +8,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.operation.floquet import Ladder, ladder
-from scatterpump.operation.thermal import Average, Levels, average, edges, weight
+from scatterpump.operation.thermal import Levels, average, edges, weight
 from scatterpump.pump import Pump
 
 __all__ = ["DrivenCharge", "driven_charge"]
 
 Floats = NDArray[np.float64]
 ABSOLUTE = 1e-9
-RELATIVE = 1e-2  # of the deviation
+RELATIVE = 1e-2  # of the shift
 FIRST_SIDEBANDS = 8
 MOST_UNKNOWNS = 30_000  # orbitals times rungs: some seconds for each energy
 
@@ -29,7 +29,7 @@ class DrivenCharge:
     shift : (l,) float array
         Charge from each lead, less the reference.
     error : float
-        Estimated from panels and their halves, from what passes by way of the outer rungs, and from unitarity.
+        Estimated from panels and their halves, from what more sidebands change, and from unitarity.
     sidebands, evaluations : int
         Rungs on either side of the Fermi level, and ladders solved.
     """
@@ -61,31 +61,43 @@ def driven_charge(
     absolute, relative : float
         Error to be allowed, and the same as a share of the shift; the larger one counts.
     """
-    sidebands, evaluations = FIRST_SIDEBANDS, 0
-    while True:
-        rungs = ladder(pump, sidebands)
-        found, unitarity, solved = _averaged(rungs, pump.fermi_level, reference, (temperature, frequency), absolute, relative)
-        evaluations += solved
-        shift, reach = found.shift[0, :-1], float(found.shift[0, -1])
-        settled = reach <= max(absolute, relative * float(np.abs(shift).max()))
-        if settled or 4 * sidebands * rungs.size > MOST_UNKNOWNS:
-            error = float(found.errors[0, :-1].max()) + reach + unitarity
-            return DrivenCharge(shift, error, sidebands, evaluations)
-        sidebands *= 2
-
-
-def _averaged(
-    rungs: Ladder, level: float, reference: Floats, at: tuple[float, float], absolute: float, relative: float
-) -> tuple[Average, float, int]:
-    """Average over energy of the shifts and, in the last place, of what passes by way of the outer rungs."""
+    rungs, cut, evaluations = _settled(pump, frequency, temperature, absolute, relative)
     unitarity = [0.0]
 
     def charge_at(energy: float) -> Floats:
-        found = rungs.charge(level + energy, at[1])
+        found = rungs.charge(pump.fermi_level + energy, frequency)
         unitarity.append(found.unitarity)
-        return np.append(found.leads, found.reach)
+        return found.leads
 
-    levels = Levels(charge_at, np.append(reference, 0.0))
-    allowed = np.append(np.full(len(reference), absolute), np.inf)
-    found = average(levels, lambda energies: weight(energies, *at)[None], edges(*at), absolute=allowed, relative=relative)
-    return found, max(unitarity), len(levels.known)
+    levels = Levels(charge_at, reference)
+    found = average(
+        levels,
+        lambda energies: weight(energies, temperature, frequency)[None],
+        edges(temperature, frequency),
+        absolute=np.full(len(reference), absolute),
+        relative=relative,
+    )
+    error = float(found.errors.max()) + cut + max(unitarity)
+    return DrivenCharge(found.shift[0], error, rungs.sidebands, evaluations + len(levels.known))
+
+
+def _settled(
+    pump: Pump, frequency: float, temperature: float, absolute: float, relative: float
+) -> tuple[Ladder, float, int]:
+    """A ladder at which more rungs change nothing at a few energies, by how much they still do, and ladders solved."""
+    energies = pump.fermi_level + np.array([-2 * temperature, 0.3 * frequency, frequency + 2 * temperature])
+    rungs = ladder(pump, FIRST_SIDEBANDS)
+    found, solved = _charges(rungs, energies, frequency), len(energies)
+    while True:
+        more = ladder(pump, rungs.sidebands * 3 // 2)
+        better, solved = _charges(more, energies, frequency), solved + len(energies)
+        cut, scale = float(np.abs(better - found).max()), float(np.abs(better - np.round(better)).max())
+        if cut <= max(absolute, relative * scale):
+            return rungs, cut, solved
+        if 3 * more.sidebands * more.size > MOST_UNKNOWNS:
+            return more, cut, solved
+        rungs, found = more, better
+
+
+def _charges(rungs: Ladder, energies: Floats, frequency: float) -> Floats:
+    return np.array([rungs.charge(energy, frequency).leads for energy in energies.tolist()])

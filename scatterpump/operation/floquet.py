@@ -20,7 +20,7 @@ by doubling N.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -38,6 +38,7 @@ Indices = NDArray[np.int64]
 TURN = 2 * np.pi
 SAMPLES = 4  # phases at which H is asked for, for each sideband: the ones beyond fold back far from the middle
 NEGLIGIBLE = 1e-14
+PIVOT = 0.1  # a diagonal element within a factor of 10 of its column's largest is kept, and the band with it
 
 
 @dataclass(frozen=True, eq=False)
@@ -48,15 +49,11 @@ class LadderCharge:
     ----------
     leads : (l,) float array
         q_m, the charge that enters from each lead.
-    reach : float
-        Probability, summed over all channels, of crossing by way of the outer half of the rungs: an overestimate of
-        what lies beyond the last one.
     unitarity : float
         Largest deviation of a column's sum of |S|^2 from 1.
     """
 
     leads: Floats
-    reach: float
     unitarity: float
 
 
@@ -87,12 +84,7 @@ class Ladder:
         solved = _solve(self.drive, np.tile(energy + frequency * rungs, self.size), folded, widths)
         passed = np.abs(1j * (widths.conj().T @ solved) - np.eye(widths.shape[1])) ** 2
         unitarity = np.abs(passed.sum(axis=0) - 1).max(initial=0.0)
-        across = (rungs[rung] >= 0)[:, None] ^ (rungs[rung] >= 0)
-        far = np.abs(rungs[rung] + 0.5) > self.sidebands / 2
-        reach = passed[across & (far[:, None] | far)].sum()
-        return LadderCharge(
-            crossing_charge(passed, owner, rungs[rung] >= 0, len(self.leads)), float(reach), float(unitarity)
-        )
+        return LadderCharge(crossing_charge(passed, owner, rungs[rung] >= 0, len(self.leads)), float(unitarity))
 
     def _leads(self, energies: Floats) -> tuple[Any, Any, Indices, Indices]:
         """Sum of Sigma, and W with the lead and the rung of each of its columns."""
@@ -120,16 +112,18 @@ def ladder(pump: Pump, sidebands: int) -> Ladder:
     from scipy.sparse import csc_matrix, eye, kron
 
     driven, count = DrivenHamiltonian(pump), 2 * sidebands
+    place = _narrow_band(driven)
     samples = SAMPLES * count
     values = np.fft.fft(driven.many(TURN * np.arange(samples) / samples), axis=0) / samples
     values[np.abs(values) < NEGLIGIBLE * np.abs(values).max(axis=0)] = 0.0
     drive = csc_matrix((driven.size * count,) * 2, dtype=complex)
     for k in range(1 - count, count):
         if values[k].any():
-            harmonic = csc_matrix((values[k], (driven.rows, driven.columns)), shape=(driven.size,) * 2)
+            harmonic = csc_matrix((values[k], (place[driven.rows], place[driven.columns])), shape=(driven.size,) * 2)
             harmonic.eliminate_zeros()
             drive = drive + kron(harmonic, eye(count, k=k), format="csc")
-    return Ladder(sidebands, driven.size, drive, wires(pump))
+    leads = [replace(wire, orbitals=place[wire.orbitals]) for wire in wires(pump)]
+    return Ladder(sidebands, driven.size, drive, leads)
 
 
 def crossing_charge(passed: Floats, owner: Indices, upper: NDArray[np.bool_], leads: int) -> Floats:
@@ -154,7 +148,18 @@ def _solve(drive: Any, energies: Floats, folded: Any, widths: Any) -> Complex:
     from scipy.sparse import diags
     from scipy.sparse.linalg import splu
 
-    return np.asarray(splu((diags(energies) - drive - folded).tocsc()).solve(widths.toarray()))
+    matrix = (diags(energies) - drive - folded).tocsc()
+    return np.asarray(splu(matrix, permc_spec="NATURAL", diag_pivot_thresh=PIVOT).solve(widths.toarray()))
+
+
+def _narrow_band(driven: DrivenHamiltonian) -> Indices:
+    """Number of every orbital in an order in which neighbours are near each other; others fill up a factorisation."""
+    from scipy.sparse import csr_matrix
+    from scipy.sparse.csgraph import reverse_cuthill_mckee
+
+    ones, shape = np.ones(len(driven.rows)), (driven.size, driven.size)
+    order = reverse_cuthill_mckee(csr_matrix((ones, (driven.rows, driven.columns)), shape=shape), symmetric_mode=True)
+    return np.asarray(np.argsort(order), dtype=np.int64)
 
 
 def _sparse(values: Complex, rows: Indices, columns: Indices, shape: tuple[int, int]) -> Any:

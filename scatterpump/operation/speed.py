@@ -32,10 +32,10 @@ from scatterpump.winding.result import Winding
 __all__ = ["adiabatic_frequency", "landau_zener", "speed_limit", "sweep_rate"]
 
 Entries = NDArray[np.complex128]
-SHARE = 0.02  # of the allowed deviation: accuracy of what is compared with it
+SHARE = 0.05  # of the allowed deviation: accuracy of what is compared with it
 STEPS = 30  # halvings or doublings of the frequency before it is given up
 BELOW = 2  # halvings by which the limit is looked at from below
-FINE = 0.01  # relative accuracy of the limit
+FINE = 0.03  # relative accuracy of the limit
 TINY = 1e-300
 
 
