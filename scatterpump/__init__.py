@@ -29,6 +29,11 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
+from scatterpump.operation.charge import Charge, charge
+from scatterpump.operation.current import Current, current
+from scatterpump.operation.heat import temperature_limit
+from scatterpump.operation.limit import Limit
+from scatterpump.operation.speed import speed_limit
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace
@@ -39,14 +44,17 @@ from scatterpump.winding.result import Crossing, Winding
 __all__ = [
     "AuditReport",
     "BulkGap",
+    "Charge",
     "ClosedGapError",
     "ClosedProbeError",
     "Crossing",
+    "Current",
     "Cycle",
     "Disorder",
     "Finding",
     "InputError",
     "Lead",
+    "Limit",
     "ModulatedChain",
     "Pump",
     "PumpError",
@@ -58,11 +66,15 @@ __all__ = [
     "Winding",
     "bulk_gap",
     "certify",
+    "charge",
     "chern_number",
+    "current",
     "examine",
     "judge",
     "load_device",
     "reflect",
+    "speed_limit",
+    "temperature_limit",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

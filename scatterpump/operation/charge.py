@@ -1,9 +1,10 @@
 """The charge a pump carries in a cycle, and by how much and why it misses the integer.
 
-The cold and slow charge is Brouwer's (`frozen`), temperature averages it over energy (`thermal`), and a finite frequency
-replaces it by Floquet scattering (`floquet`).  What each of them takes off the integer is told separately.
+The cold and slow charge is Brouwer's (`frozen`), temperature averages it over energy (`thermal`), and a finite
+frequency replaces it by Floquet scattering (`floquet`).  What each of them takes off the integer is told separately.
 
-Single-particle theory: no interaction, no charging energy, no decoherence, no phonons; all leads share one Fermi function.
+Single-particle theory: no interaction, no charging energy, no decoherence, no phonons; all leads share one Fermi
+function.
 """
 
 from __future__ import annotations
@@ -79,9 +80,7 @@ class Charge:
         return float(sum(self.leads))
 
 
-def charge(
-    pump: Pump, *, temperature: float = 0.0, frequency: float = 0.0, winding: Winding | None = None
-) -> Charge:
+def charge(pump: Pump, *, temperature: float = 0.0, frequency: float = 0.0, winding: Winding | None = None) -> Charge:
     """Return the charge that `pump` carries in one cycle.
 
     Parameters

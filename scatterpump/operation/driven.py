@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.operation.floquet import Ladder, ladder
+from scatterpump.operation.floquet import MOST_SIDEBANDS, Ladder, drive_of
 from scatterpump.operation.thermal import Levels, average, edges, weight
 from scatterpump.pump import Pump
 
@@ -61,7 +61,7 @@ def driven_charge(
     absolute, relative : float
         Error to be allowed, and the same as a share of the shift; the larger one counts.
     """
-    rungs, cut, evaluations = _settled(pump, frequency, temperature, absolute, relative)
+    rungs, cut, evaluations = _settled(pump, reference, frequency, temperature, absolute, relative)
     unitarity = [0.0]
 
     def charge_at(energy: float) -> Floats:
@@ -82,19 +82,21 @@ def driven_charge(
 
 
 def _settled(
-    pump: Pump, frequency: float, temperature: float, absolute: float, relative: float
+    pump: Pump, reference: Floats, frequency: float, temperature: float, absolute: float, relative: float
 ) -> tuple[Ladder, float, int]:
     """A ladder at which more rungs change nothing at a few energies, by how much they still do, and ladders solved."""
     energies = pump.fermi_level + np.array([-2 * temperature, 0.3 * frequency, frequency + 2 * temperature])
-    rungs = ladder(pump, FIRST_SIDEBANDS)
+    drive = drive_of(pump)
+    rungs = drive.ladder(FIRST_SIDEBANDS)
     found, solved = _charges(rungs, energies, frequency), len(energies)
     while True:
-        more = ladder(pump, rungs.sidebands * 3 // 2)
+        more = drive.ladder(rungs.sidebands * 3 // 2)
         better, solved = _charges(more, energies, frequency), solved + len(energies)
-        cut, scale = float(np.abs(better - found).max()), float(np.abs(better - np.round(better)).max())
+        cut, scale = float(np.abs(better - found).max()), float(np.abs(better - reference).max())
         if cut <= max(absolute, relative * scale):
             return rungs, cut, solved
-        if 3 * more.sidebands * more.size > MOST_UNKNOWNS:
+        next_up = more.sidebands * 3 // 2
+        if next_up > MOST_SIDEBANDS or 2 * next_up * more.size > MOST_UNKNOWNS:
             return more, cut, solved
         rungs, found = more, better
 

@@ -29,14 +29,16 @@ from numpy.typing import NDArray
 from scatterpump.operation.wires import Wire, wires
 from scatterpump.pump import Pump
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
+from scatterpump.solver.path import follow
 
-__all__ = ["Ladder", "LadderCharge", "crossing_charge", "ladder"]
+__all__ = ["MOST_SIDEBANDS", "Drive", "Ladder", "LadderCharge", "crossing_charge", "drive_of"]
 
 Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 TURN = 2 * np.pi
-SAMPLES = 4  # phases at which H is asked for, for each sideband: the ones beyond fold back far from the middle
+SAMPLES = 1024  # phases at which H is asked for; twice the most rungs of a ladder
+MOST_SIDEBANDS = SAMPLES // 4
 NEGLIGIBLE = 1e-14
 PIVOT = 0.1  # a diagonal element within a factor of 10 of its column's largest is kept, and the band with it
 
@@ -79,9 +81,10 @@ class Ladder:
 
     def charge(self, energy: float, frequency: float) -> LadderCharge:
         """Solve the ladder whose rung 0 lies at `energy`, with rungs `frequency` (hbar omega) apart."""
-        rungs = np.arange(-self.sidebands, self.sidebands)
-        folded, widths, owner, rung = self._leads(energy + frequency * rungs)
-        solved = _solve(self.drive, np.tile(energy + frequency * rungs, self.size), folded, widths)
+        rungs: Indices = np.arange(-self.sidebands, self.sidebands)
+        energies: Floats = np.asarray(energy + frequency * rungs, dtype=float)
+        folded, widths, owner, rung = self._leads(energies)
+        solved = _solve(self.drive, np.tile(energies, self.size), folded, widths)
         passed = np.abs(1j * (widths.conj().T @ solved) - np.eye(widths.shape[1])) ** 2
         unitarity = np.abs(passed.sum(axis=0) - 1).max(initial=0.0)
         return LadderCharge(crossing_charge(passed, owner, rungs[rung] >= 0, len(self.leads)), float(unitarity))
@@ -107,23 +110,49 @@ class Ladder:
         return sum(sigmas), hstack(widths, format="csc"), np.concatenate(owner), np.concatenate(rungs)
 
 
-def ladder(pump: Pump, sidebands: int) -> Ladder:
-    """Prepare the ladder of `pump` with rungs -sidebands ... sidebands - 1."""
-    from scipy.sparse import csc_matrix, eye, kron
+@dataclass(frozen=True, eq=False)
+class Drive:
+    """H(phi) of a pump as harmonics, from which ladders are built.
 
-    driven, count = DrivenHamiltonian(pump), 2 * sidebands
-    place = _narrow_band(driven)
-    samples = SAMPLES * count
-    values = np.fft.fft(driven.many(TURN * np.arange(samples) / samples), axis=0) / samples
+    Attributes
+    ----------
+    size : int
+        Orbitals of the device.
+    rows, columns : (nnz,) int array
+        Places of the elements of H, in an order in which neighbours are near each other.
+    harmonics : (n, nnz) complex array
+        H_k for k = 0 ... n/2 - 1, -n/2 ... -1.
+    leads : list of Wire
+    """
+
+    size: int
+    rows: Indices
+    columns: Indices
+    harmonics: Complex
+    leads: list[Wire]
+
+    def ladder(self, sidebands: int) -> Ladder:
+        """Return the ladder with rungs -sidebands ... sidebands - 1."""
+        from scipy.sparse import csc_matrix, eye, kron
+
+        count, shape = 2 * sidebands, (self.size, self.size)
+        drive = csc_matrix((self.size * count,) * 2, dtype=complex)
+        for k in range(1 - count, count):
+            if self.harmonics[k].any():
+                harmonic = csc_matrix((self.harmonics[k], (self.rows, self.columns)), shape=shape)
+                harmonic.eliminate_zeros()
+                drive = drive + kron(harmonic, eye(count, k=k), format="csc")
+        return Ladder(sidebands, self.size, drive, self.leads)
+
+
+def drive_of(pump: Pump) -> Drive:
+    """Find the harmonics of H along the cycle of `pump`."""
+    driven = DrivenHamiltonian(pump)
+    place, path = _narrow_band(driven), follow(driven.many, pump.cycle)
+    values = np.fft.fft(path.many(TURN * np.arange(SAMPLES) / SAMPLES), axis=0) / SAMPLES
     values[np.abs(values) < NEGLIGIBLE * np.abs(values).max(axis=0)] = 0.0
-    drive = csc_matrix((driven.size * count,) * 2, dtype=complex)
-    for k in range(1 - count, count):
-        if values[k].any():
-            harmonic = csc_matrix((values[k], (place[driven.rows], place[driven.columns])), shape=(driven.size,) * 2)
-            harmonic.eliminate_zeros()
-            drive = drive + kron(harmonic, eye(count, k=k), format="csc")
     leads = [replace(wire, orbitals=place[wire.orbitals]) for wire in wires(pump)]
-    return Ladder(sidebands, driven.size, drive, leads)
+    return Drive(driven.size, place[driven.rows], place[driven.columns], values, leads)
 
 
 def crossing_charge(passed: Floats, owner: Indices, upper: NDArray[np.bool_], leads: int) -> Floats:

@@ -4,8 +4,8 @@ With S(phi) the scattering matrix of the device frozen at phi, the charge that e
 
     Q_m = (1/2 pi) contour integral  sum_b Im tr(S_mb^+ dS_mb),
 
-P. W. Brouwer, Phys. Rev. B 58, R10135 (1998).  What the integer W = (1/2 pi i) contour integral d log det r misses of it
-is, by unitarity and without any difference of large numbers,
+P. W. Brouwer, Phys. Rev. B 58, R10135 (1998).  What the integer W = (1/2 pi i) contour integral d log det r misses of
+it is, by unitarity and without any difference of large numbers,
 
     Q_0 - W = (1/2 pi) contour integral  sum_b Im tr(S_0b^+ dS_0b - S_0b^+ dr r^-1 S_0b),      b not the probe,
 

@@ -6,10 +6,11 @@ is then a sum.
 
 from __future__ import annotations
 
-from math import log
+from math import isfinite, log
 
 import numpy as np
 
+from scatterpump.bulk.gap import bulk_gap
 from scatterpump.errors import InputError
 from scatterpump.operation.limit import Limit, why_not
 from scatterpump.operation.slow import SlowCharge, SlowCharges, slow_charge
@@ -54,11 +55,17 @@ def temperature_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | Non
             return _limit(pump, 0.0 if slow.number is not None else None, slow, error, None, 0, refused)
         charges = SlowCharges(pump, slow)
         levels = Levels(charges.at, slow.found.leads)
-        distance = _window(pump, levels)
+        distance = _distance(pump) or _window(pump, levels)
         estimate = distance / log(1 / error)
         value = _warmest(pump, slow, levels, error, estimate)
         reason = "no such temperature was met" if value is None else f"states {distance:.3g} from the Fermi level"
         return _limit(pump, value, slow, error, estimate, charges.evaluations, reason)
+
+
+def _distance(pump: Pump) -> float:
+    """Distance of the nearest bulk band from the Fermi level; 0 where none is known."""
+    distance = 0.0 if pump.bulk is None else bulk_gap(pump).distance_upper
+    return float(distance) if isfinite(distance) else 0.0
 
 
 def _window(pump: Pump, levels: Levels) -> float:

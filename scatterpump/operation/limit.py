@@ -16,8 +16,9 @@ class Limit:
     Attributes
     ----------
     value : float or None
-        Largest k_B T or hbar omega, as an energy in the pump's unit, up to which the charge is found within `allowed` of
-        the integer; 0 where it is not even so when cold and slow; None without a proven integer.
+        Largest k_B T or hbar omega, as an energy in the pump's unit, up to which the charge is found within `allowed`
+        of the integer; 0 where it is not even so when cold and slow; None without a proven integer, or where none was
+        met.
     si : float or None
         The same in kelvin or hertz; None for a pump that does not say what its unit of energy is.
     unit : "K" or "Hz"

@@ -48,7 +48,9 @@ class SlowCharge:
     @property
     def residual(self) -> float | None:
         """Charge less number and leak, which is what the integral misses; None without a number."""
-        return None if self.number is None else float(self.found.leads[self.found.probe]) - self.number - self.found.leak
+        return (
+            None if self.number is None else float(self.found.leads[self.found.probe]) - self.number - self.found.leak
+        )
 
     @property
     def error(self) -> float:

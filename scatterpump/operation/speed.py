@@ -5,10 +5,10 @@ an electron with the probability
 
     P = exp(-pi D^2 / 2 hbar v)
 
-(L. D. Landau, Phys. Z. Sowjetunion 2, 46 (1932); C. Zener, Proc. R. Soc. Lond. A 137, 696 (1932), citations from memory).
-With v = omega s, s = 2 max |dH/dphi|, this is a scale for the frequency beyond which nothing is quantised.  It is an
-estimate and no bound: a pump between leads also misses the integer by a power of the frequency, which only the
-Floquet charge knows.
+(L. D. Landau, Phys. Z. Sowjetunion 2, 46 (1932); C. Zener, Proc. R. Soc. Lond. A 137, 696 (1932), citations from
+memory).  With v = omega s, s = 2 max |dH/dphi|, this is a scale for the frequency beyond which nothing is quantised.
+It is an estimate and no bound: what leaks through the device grows with the square of the frequency as well, which only
+the Floquet charge knows.
 """
 
 from __future__ import annotations
@@ -29,7 +29,7 @@ from scatterpump.solver.hamiltonian import DrivenHamiltonian
 from scatterpump.solver.path import follow
 from scatterpump.winding.result import Winding
 
-__all__ = ["adiabatic_frequency", "landau_zener", "speed_limit", "sweep_rate"]
+__all__ = ["adiabatic_frequency", "landau_zener", "level_scale", "speed_limit", "sweep_rate"]
 
 Entries = NDArray[np.complex128]
 SHARE = 0.05  # of the allowed deviation: accuracy of what is compared with it
@@ -37,6 +37,12 @@ STEPS = 30  # halvings or doublings of the frequency before it is given up
 BELOW = 2  # halvings by which the limit is looked at from below
 FINE = 0.03  # relative accuracy of the limit
 TINY = 1e-300
+
+
+def level_scale(pump: Pump) -> float:
+    """Return a bound on |H| at phi = 0 by sums over rows: an energy beyond which a device has no levels."""
+    driven = DrivenHamiltonian(pump)
+    return float(np.bincount(driven.rows, weights=np.abs(driven.at(0.0)), minlength=1).max())
 
 
 def landau_zener(gap: float, rate: float) -> float:
@@ -67,7 +73,7 @@ def adiabatic_frequency(pump: Pump, error: float = 1e-6) -> float | None:
     if pump.bulk is None:
         return None
     gap, rate = bulk_gap(pump).lower, sweep_rate(pump)
-    return pi * gap**2 / (2 * rate * log(1 / error)) if rate > 0 and isfinite(gap) else None
+    return float(pi * gap**2 / (2 * rate * log(1 / error))) if rate > 0 and isfinite(gap) else None
 
 
 def speed_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | None = None) -> Limit:

@@ -5,9 +5,9 @@ At temperature T (k_B T, an energy) and frequency omega (hbar omega, an energy) 
     Q = integral de w(e) q(e),            w(e) = [f(e - hbar omega) - f(e)] / hbar omega,
 
 f being the leads' Fermi function: w is -f' for a slow cycle, a box for a cold one, and q(mu) is left where it is both
-(see `floquet`).  All of q is averaged, inside the window and in the bands; energies at which a lead is closed add nothing
-from it.  What is integrated is q(e) - q(mu), which vanishes throughout the window: a deviation of 1e-9 does not have to
-come out as a difference of numbers of order 1.
+(see `floquet`).  All of q is averaged, inside the window and in the bands; energies at which a lead is closed add
+nothing from it.  What is integrated is q(e) - q(mu), which vanishes throughout the window: a deviation of 1e-9 does not
+have to come out as a difference of numbers of order 1.
 """
 
 from __future__ import annotations

@@ -96,7 +96,10 @@ def wires(pump: Pump) -> list[Wire]:
     system, parameters = pump.finalized, pump.parameters(0.0)
     counts = system.hamiltonian_submatrix(params=parameters, sparse=True, return_norb=True)[1]
     offsets = np.concatenate([[0], np.cumsum(counts)])
-    return [_wire(lead, sites, offsets, parameters) for lead, sites in zip(system.leads, system.lead_interfaces, strict=True)]
+    return [
+        _wire(lead, sites, offsets, parameters)
+        for lead, sites in zip(system.leads, system.lead_interfaces, strict=True)
+    ]
 
 
 def _wire(lead: Any, sites: Any, offsets: NDArray[np.int64], parameters: dict[str, Any]) -> Wire:
@@ -114,7 +117,7 @@ def _single(z: Floats, hops: Floats) -> Complex:
 
 
 def _bundle(cell: Complex, hopping: Complex) -> tuple[Complex, Floats, Floats] | None:
-    """States, levels and moduli of hoppings of single-channel wires that make up the lead, or None if there are none."""
+    """States, levels and moduli of hoppings of the single-channel wires that make up the lead, or None."""
     if cell.shape != hopping.shape:
         return None
     both = hopping + hopping.conj().T, 1j * (hopping - hopping.conj().T)
