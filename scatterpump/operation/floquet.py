@@ -40,7 +40,6 @@ TURN = 2 * np.pi
 SAMPLES = 1024  # phases at which H is asked for; twice the most rungs of a ladder
 MOST_SIDEBANDS = SAMPLES // 4
 NEGLIGIBLE = 1e-14
-PIVOT = 0.1  # a diagonal element within a factor of 10 of its column's largest is kept, and the band with it
 
 
 @dataclass(frozen=True, eq=False)
@@ -173,16 +172,23 @@ def crossing_charge(passed: Floats, owner: Indices, upper: NDArray[np.bool_], le
 
 
 def _solve(drive: Any, energies: Floats, folded: Any, widths: Any) -> Complex:
-    """(E - H - Sigma)^-1 W."""
+    """(E - H - Sigma)^-1 W, by a pivoted factorisation of the band (LAPACK's gbsv)."""
+    from scipy.linalg import solve_banded
     from scipy.sparse import diags
-    from scipy.sparse.linalg import splu
 
-    matrix = (diags(energies) - drive - folded).tocsc()
-    return np.asarray(splu(matrix, permc_spec="NATURAL", diag_pivot_thresh=PIVOT).solve(widths.toarray()))
+    matrix = (diags(energies) - drive - folded).tocoo()
+    away = matrix.row - matrix.col
+    reach = int(np.abs(away).max(initial=0))
+    band = np.zeros((2 * reach + 1, len(energies)), dtype=complex)
+    band[reach + away, matrix.col] = matrix.data
+    found = solve_banded(
+        (reach, reach), band, widths.toarray(), overwrite_ab=True, overwrite_b=True, check_finite=False
+    )
+    return np.asarray(found, dtype=complex)
 
 
 def _narrow_band(driven: DrivenHamiltonian) -> Indices:
-    """Number of every orbital in an order in which neighbours are near each other; others fill up a factorisation."""
+    """Number of every orbital in an order in which neighbours are near each other, so that the band is narrow."""
     from scipy.sparse import csr_matrix
     from scipy.sparse.csgraph import reverse_cuthill_mckee
 
