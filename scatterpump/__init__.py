@@ -38,10 +38,15 @@ from scatterpump.errors import (
     SingularReflectionError,
     SolverError,
 )
+from scatterpump.operation.charge import Charge, charge
+from scatterpump.operation.current import Current, current
+from scatterpump.operation.heat import temperature_limit
 from scatterpump.operation.length import ShortestDevice, shortest_device
+from scatterpump.operation.limit import Limit
 from scatterpump.operation.lines import Line as SheetLine
 from scatterpump.operation.plateaus import Plateau, plateaus
 from scatterpump.operation.sheet import Sheet, operating_sheet
+from scatterpump.operation.speed import speed_limit
 from scatterpump.operation.tolerance import DisorderTolerance, DriveTolerance, disorder_tolerance, drive_tolerance
 from scatterpump.pump import Continuum, Pump, Units
 from scatterpump.solver.reflect import reflect, reflect_grid
@@ -54,11 +59,13 @@ from scatterpump.winding.result import Crossing, Winding
 __all__ = [
     "AuditReport",
     "BulkGap",
+    "Charge",
     "ClosedGapError",
     "ClosedProbeError",
     "Comb",
     "Continuum",
     "Crossing",
+    "Current",
     "Cycle",
     "CycleError",
     "Disorder",
@@ -71,6 +78,7 @@ __all__ = [
     "InputError",
     "Layout",
     "Lead",
+    "Limit",
     "ModulatedChain",
     "ModulatedRibbon",
     "NoBulkError",
@@ -95,7 +103,9 @@ __all__ = [
     "Winding",
     "bulk_gap",
     "certify",
+    "charge",
     "chern_number",
+    "current",
     "disorder_tolerance",
     "drive_tolerance",
     "examine",
@@ -109,6 +119,8 @@ __all__ = [
     "reflect_grid",
     "resolve",
     "shortest_device",
+    "speed_limit",
+    "temperature_limit",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

@@ -1,0 +1,107 @@
+"""How warm a pump may be: the temperature at which the averaged charge goes wrong.
+
+The slow charge is found once at the energies that matter for a whole range of temperatures; an average at any of them
+is then a sum.
+"""
+
+from __future__ import annotations
+
+from math import isfinite, log
+
+import numpy as np
+
+from scatterpump.bulk.gap import bulk_gap
+from scatterpump.errors import InputError
+from scatterpump.operation.limit import Limit, why_not
+from scatterpump.operation.slow import SlowCharge, SlowCharges, slow_charge
+from scatterpump.operation.speed import level_scale
+from scatterpump.operation.thermal import Levels, average, edges, weight
+from scatterpump.operation.units import kelvin
+from scatterpump.pump import Pump
+from scatterpump.winding.result import Winding
+
+__all__ = ["temperature_limit"]
+
+SHARE = 0.02  # of the average, or of the allowed deviation: accuracy of what is compared with it
+SEARCHED = 2.0 ** np.arange(-2.0, 1.25, 0.25)  # temperatures, in units of the estimate
+FIRST = 1e-3  # of the estimated scale: where the search for the window's edge begins
+STEPS = 22  # of half an octave: up to the scale itself
+HALF = 0.5  # of a charge: where the window is taken to end
+
+
+def temperature_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | None = None) -> Limit:
+    """Return the largest k_B T at which the slow charge in a cycle is within `error` of the proven integer.
+
+    Parameters
+    ----------
+    pump : Pump
+    error : float
+        Deviation to be allowed, in e; between 0 and 1/2.
+    winding : Winding, optional
+        The pump's winding, if it is known already.
+
+    Notes
+    -----
+    Electrons alone are warm: phonons and charging energies are not part of the theory.
+    """
+    if not 0 < error < HALF:
+        raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
+    from threadpoolctl import threadpool_limits
+
+    with threadpool_limits(1):  # many small problems: threads would only get in each other's way
+        slow = slow_charge(pump, winding)
+        refused = why_not(slow, error)
+        if refused:
+            return _limit(pump, 0.0 if slow.number is not None else None, slow, error, None, 0, refused)
+        charges = SlowCharges(pump, slow)
+        levels = Levels(charges.at, slow.found.leads)
+        distance = _distance(pump) or _window(pump, levels)
+        estimate = distance / log(1 / error)
+        value = _warmest(pump, slow, levels, error, estimate)
+        reason = "no such temperature was met" if value is None else f"states {distance:.3g} from the Fermi level"
+        return _limit(pump, value, slow, error, estimate, charges.evaluations, reason)
+
+
+def _distance(pump: Pump) -> float:
+    """Distance of the nearest bulk band from the Fermi level; 0 where none is known."""
+    distance = 0.0 if pump.bulk is None else bulk_gap(pump).distance_upper
+    return float(distance) if isfinite(distance) else 0.0
+
+
+def _window(pump: Pump, levels: Levels) -> float:
+    """Distance from the Fermi level, to a factor of sqrt 2, at which the charge from the probe is off by a half."""
+    scale = level_scale(pump)
+    for distance in scale * FIRST * np.sqrt(2.0) ** np.arange(STEPS):
+        shifts = levels.shifts(distance * np.array([-1.0, 1.0]))[:, pump.probe]
+        if np.abs(shifts).max() > HALF:
+            return float(distance)
+    return scale
+
+
+def _warmest(pump: Pump, slow: SlowCharge, levels: Levels, error: float, estimate: float) -> float | None:
+    """Average at a range of temperatures at once, and find where between two of them the deviation passes `error`."""
+    temperatures = estimate * SEARCHED
+    found = average(
+        levels,
+        lambda energies: np.array([weight(energies, temperature, 0.0) for temperature in temperatures]),
+        edges(temperatures[-1], 0.0),
+        absolute=np.full(len(levels.reference), SHARE * error),
+        relative=SHARE,
+    )
+    off = np.abs(slow.found.leak + found.shift[:, pump.probe])
+    bad = np.flatnonzero(off > error)
+    if not bad.size:
+        return None
+    if bad[0] == 0:
+        return 0.0
+    cold, warm = temperatures[bad[0] - 1], temperatures[bad[0]]
+    share = log(error / off[bad[0] - 1]) / log(off[bad[0]] / off[bad[0] - 1])  # log |deviation| is straight in 1/T
+    return float(1 / (1 / cold + share * (1 / warm - 1 / cold)))
+
+
+def _limit(
+    pump: Pump, value: float | None, slow: SlowCharge, error: float, estimate: float | None, work: int, reason: str
+) -> Limit:
+    leakage = None if slow.number is None else slow.found.leak
+    si = None if value is None else kelvin(pump, value)
+    return Limit(value, si, "K", error, leakage, estimate, slow.found.evaluations + work, reason)
