@@ -21,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.pump import Pump
-from scatterpump.solver.blocks import Blocks
+from scatterpump.solver.blocks import Blocks, Stack
 from scatterpump.solver.cells import Run, layer_table, longest_run
 from scatterpump.solver.doubling import Load, behind, closed_by, closed_by_pair, ports, repeated, segment
 from scatterpump.solver.elimination import eliminate, eliminate_single
@@ -179,10 +179,10 @@ def _swept(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, 
 
 def _eliminated(problem: Problem, elements: Numbers, first: int, amplitude: bool) -> tuple[Numbers, Complex, Floats]:
     """D and T of layer `first`, with all beyond it eliminated, and the growth met."""
-    blocks, count, last = problem.blocks, len(elements), len(problem.layers.widths) - 1
-    diagonal, lower, upper = _between(problem, elements, first, last)
+    blocks = problem.blocks
+    diagonal, lower, upper = (Stack(blocks, step, first, elements) for step in (0, 1, -1))
     found = eliminate(
-        [np.broadcast_to(block, (count, *block.shape[1:])) for block in diagonal],
+        diagonal,
         lower,
         upper,
         problem.wanted(first) if amplitude else None,
