@@ -174,7 +174,8 @@ def _carry(
     """T_n = S_n - T_n+1 D_n+1^-1 A_n+1,n in place of T_n+1."""
     deep, w = shape
     _clear(spare, tall * deep)
-    subtract_product(spare, 0, deep, kept, 0, deep, inverse, 0, deep, tall, deep, deep)
+    origin = w - w  # a literal 0 would be compiled apart
+    subtract_product(spare, origin, deep, kept, origin, deep, inverse, origin, deep, tall, deep, deep)
     for k in range(tall * deep):
         store(spare, k, product(load(spare, k), constant(spare, -1.0, 0.0)))
     _times_lower(spare, tall, kept, n, deep, w, problem[2], group)

@@ -140,8 +140,9 @@ def inverted(a: Any, w: int, spare: Any, worst: Any) -> Any:
 
     `spare` is a store for at least PANEL (2 w + PANEL) lanes.
     """
+    origin = w - w  # a literal 0 would be a type of its own, compiled apart
     if w <= UNDIVIDED:
-        return _inverted_undivided(a, 0, w, w, worst)
+        return _inverted_undivided(a, origin, w, w, worst)
     zero = constant(a, 0.0, 0.0)
     for first in range(0, w, PANEL):
         b = min(PANEL, w - first)
@@ -158,13 +159,13 @@ def inverted(a: Any, w: int, spare: Any, worst: Any) -> Any:
                 store(a, (first + i) * w + j, zero)
             for j in range(b):
                 store(spare, i * w + first + j, constant(a, 1.0 if i == j else 0.0, 0.0))
-        subtract_product(a, first * w, w, spare, pivots, b, spare, 0, w, b, w, b)
+        subtract_product(a, first * w, w, spare, pivots, b, spare, origin, w, b, w, b)
         for i in range(w):
             if i < first or i >= first + b:
                 for j in range(b):
                     store(spare, columns + i * b + j, load(a, i * w + first + j))
                     store(a, i * w + first + j, zero)
-        subtract_product(a, 0, w, spare, columns, b, a, first * w, w, first, w, b)
+        subtract_product(a, origin, w, spare, columns, b, a, first * w, w, first, w, b)
         end = first + b
         subtract_product(a, end * w, w, spare, columns + end * b, b, a, first * w, w, w - end, w, b)
     return worst
