@@ -14,9 +14,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.solver.elements import Elements, listed
 from scatterpump.solver.layers import Layers
 
-__all__ = ["Band", "Block", "Blocks"]
+__all__ = ["Band", "Block", "Blocks", "Stack"]
 
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Complex = NDArray[np.complex128]
@@ -80,6 +81,38 @@ class Band(Sequence[Any]):
 
 
 @dataclass(frozen=True, eq=False)
+class Stack(Sequence[Numbers]):
+    """Blocks of one diagonal from a layer on, each formed for all phases when it is asked for.
+
+    Attributes
+    ----------
+    blocks : Blocks
+    step : int
+        0 for A_nn, 1 for A_n+1,n, -1 for A_n,n+1.
+    first : int
+        The layer of the first block.
+    moving : (n, elements) array
+    """
+
+    blocks: Blocks
+    step: int
+    first: int
+    moving: Numbers
+
+    def __len__(self) -> int:
+        return len(self.blocks.layers.widths) - abs(self.step) - self.first
+
+    def __getitem__(self, n: Any) -> Any:
+        block = self.blocks.block(self.step, self.first + range(len(self))[n]).at(self.moving)
+        return block if self.step else np.broadcast_to(block, (len(self.moving), *block.shape[1:]))
+
+    @property
+    def elements(self) -> Elements:
+        """The same blocks as lists of elements."""
+        return self.blocks.elements(self.step).beyond(self.first)
+
+
+@dataclass(frozen=True, eq=False)
 class Blocks:
     """All blocks of a layered problem.
 
@@ -107,15 +140,15 @@ class Blocks:
 
     def diagonal(self, n: int) -> Block:
         """A_nn."""
-        return self._block(0, n)
+        return self.block(0, n)
 
     def lower(self, n: int) -> Block:
         """A_n+1,n."""
-        return self._block(1, n)
+        return self.block(1, n)
 
     def upper(self, n: int) -> Block:
         """A_n,n+1."""
-        return self._block(-1, n)
+        return self.block(-1, n)
 
     @cached_property
     def fixed(self) -> tuple[Indices, Indices, Complex]:
@@ -155,7 +188,28 @@ class Blocks:
         near = np.minimum(level[rows], level[columns])
         return near, (level[rows] - level[columns] == step) & (near >= 0)
 
-    def _block(self, step: int, n: int) -> Block:
+    def elements(self, step: int) -> Elements:
+        """All blocks of one `step` as lists of elements."""
+        if step not in self._listed:
+            count = len(self.layers.widths) - abs(step)
+            rows, columns, values = self.fixed
+            near, fits = self._near(rows, columns, step)
+            still = near[fits], rows[fits], columns[fits], values[fits], np.full(int(fits.sum()), -1)
+            near, fits = self._near(self.rows, self.columns, step)
+            fits &= self.place >= 0
+            moving = near[fits], self.rows[fits], self.columns[fits], np.zeros(int(fits.sum())), self.place[fits]
+            number, rows, columns, values, place = map(np.concatenate, zip(still, moving, strict=True))
+            rows, columns = self.layers.place[rows], self.layers.place[columns]
+            lines = columns if step == 1 else rows
+            self._listed[step] = listed(number, rows, columns, values, place, count=count, lines=lines)
+        return self._listed[step]
+
+    @cached_property
+    def _listed(self) -> dict[int, Elements]:
+        return {}
+
+    def block(self, step: int, n: int) -> Block:
+        """The block of layer n, `step` (0, 1, -1) as in `Stack`."""
         if (step, n) not in self._made:
             self._made[step, n] = self._formed(step, n)
         return self._made[step, n]

@@ -17,10 +17,15 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
+from functools import cache
+from importlib.util import find_spec
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
+
+from scatterpump.solver.blocks import Stack
+from scatterpump.solver.elements import listed_all
 
 __all__ = ["Eliminated", "EliminatedSingle", "backward", "eliminate", "eliminate_single"]
 
@@ -125,6 +130,7 @@ def eliminate(
     wanted: Sequence[Complex] | None,
     *,
     real_below: int,
+    kernel: Literal["numpy", "compiled"] | None = None,
 ) -> Eliminated:
     """Eliminate blocks of any size.
 
@@ -136,12 +142,64 @@ def eliminate(
         S_n: which amplitudes lie in which block.
     real_below : int
         The first so many blocks are real, with what couples them.
+    kernel : {"numpy", "compiled"}, optional
+        By default the compiled sweep, if numba is installed.
 
     Raises
     ------
     numpy.linalg.LinAlgError
-        If a block is singular to the last digit.
+        If a block is singular to the last digit; the compiled sweep lets the growth tell instead.
     """
+    if kernel == "compiled" or (kernel is None and has_compiler()):
+        return _eliminated_compiled(diagonal, lower, upper, wanted, real_below)
+    return _eliminated_numpy(diagonal, lower, upper, wanted, real_below)
+
+
+@cache
+def has_compiler() -> bool:
+    """Whether numba is installed."""
+    return find_spec("numba") is not None
+
+
+def _widths(diagonal: Sequence[Numbers]) -> Indices:
+    if isinstance(diagonal, Stack):
+        return np.asarray(diagonal.blocks.layers.widths[diagonal.first :], dtype=np.int64)
+    return np.array([block.shape[1] for block in diagonal], dtype=np.int64)
+
+
+def _eliminated_compiled(
+    diagonal: Sequence[Numbers],
+    lower: Sequence[Numbers],
+    upper: Sequence[Numbers],
+    wanted: Sequence[Complex] | None,
+    real_below: int,
+) -> Eliminated:
+    from scatterpump.solver.compiled import swept
+
+    stacks = diagonal, lower, upper
+    if isinstance(diagonal, Stack) and isinstance(lower, Stack) and isinstance(upper, Stack):
+        elements, moving = [each.elements for each in (diagonal, lower, upper)], diagonal.moving
+    else:
+        elements, moving = listed_all(stacks, len(diagonal[-1]))
+    widths = _widths(diagonal)
+    chosen, _ = listed_all([[each[None] for each in wanted or [np.zeros((0, w), dtype=complex) for w in widths]]], 1)
+    count, height = len(moving), len(wanted[0]) if wanted else 0
+    parts = 2 if np.iscomplexobj(moving) else 1
+    block = np.empty((count, widths[0], widths[0]), dtype=complex)
+    amplitudes, growth = np.empty((count, height, widths[0]), dtype=complex), np.empty(count)
+    problem = (widths, *map(tuple, elements), tuple(chosen[0]))
+    moving = np.ascontiguousarray(moving).view(np.float64)
+    swept(problem, moving, parts, height, real_below, block, amplitudes, growth)
+    return Eliminated(block, amplitudes, growth)
+
+
+def _eliminated_numpy(
+    diagonal: Sequence[Numbers],
+    lower: Sequence[Numbers],
+    upper: Sequence[Numbers],
+    wanted: Sequence[Complex] | None,
+    real_below: int,
+) -> Eliminated:
     here = diagonal[-1]
     amplitudes = None if wanted is None else np.broadcast_to(wanted[-1], (len(here), *wanted[-1].shape))
     growth = np.ones(len(here))
@@ -149,7 +207,7 @@ def eliminate(
         if n < real_below and n % LOOK_EVERY == 0:
             here = _real_if_negligible(here)
         inverse: Numbers = np.linalg.inv(here)
-        growth = np.maximum(growth, _largest(inverse))
+        growth = np.maximum(growth, _largest(inverse) + _taint(here))
         here, amplitudes = backward(diagonal[n], lower[n], upper[n], inverse, amplitudes)
         if amplitudes is not None and wanted is not None:
             amplitudes = wanted[n] + amplitudes
@@ -177,6 +235,11 @@ def _real_if_negligible(block: Numbers) -> Numbers:
 def _largest(blocks: Numbers) -> NDArray[np.float64]:
     """Largest real or imaginary part of each block."""
     return np.asarray(np.abs(blocks.view(np.float64)).max(axis=(1, 2), initial=0.0))
+
+
+def _taint(blocks: Numbers) -> NDArray[np.float64]:
+    """Zero, or not a number for blocks that are not finite."""
+    return np.asarray(0.0 * np.abs(blocks.sum(axis=(1, 2))))
 
 
 def _times(amplitudes: Numbers, inverse: Numbers) -> Numbers:

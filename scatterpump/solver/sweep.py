@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.solver.blocks import Stack
 from scatterpump.solver.doubling import Load, closed_by, closed_by_pair
 from scatterpump.solver.elimination import eliminate, eliminate_single
 from scatterpump.solver.problem import Problem
@@ -41,10 +42,10 @@ def swept(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, F
 
 def eliminated(problem: Problem, elements: Numbers, first: int, amplitude: bool) -> tuple[Numbers, Complex, Floats]:
     """D and T of layer `first`, with all beyond it eliminated, and the growth met."""
-    blocks, count, last = problem.blocks, len(elements), len(problem.layers.widths) - 1
-    diagonal, lower, upper = between(problem, elements, first, last)
+    blocks = problem.blocks
+    diagonal, lower, upper = (Stack(blocks, step, first, elements) for step in (0, 1, -1))
     found = eliminate(
-        [np.broadcast_to(block, (count, *block.shape[1:])) for block in diagonal],
+        diagonal,
         lower,
         upper,
         problem.wanted(first) if amplitude else None,
