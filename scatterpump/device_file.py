@@ -11,6 +11,7 @@ import json
 import tomllib
 from collections.abc import Callable, Iterable
 from dataclasses import fields
+from functools import cache
 from inspect import signature
 from pathlib import Path
 from typing import Any
@@ -20,7 +21,7 @@ from scatterpump.builder.description import Disorder, Lead, Wave
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 
-__all__ = ["load_device", "read_device"]
+__all__ = ["load_device", "put", "read_content", "read_device"]
 
 KINDS: dict[str, type[ModulatedChain]] = {"chain": ModulatedChain}
 CYCLES: dict[str, Callable[..., Cycle]] = {"angle": Cycle.angle, "ellipse": Cycle.ellipse, "table": Cycle.through}
@@ -42,8 +43,16 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
         On anything that cannot be used, with file, key, and what is allowed.
     """
     path = Path(path)
+    content = read_content(path)
+    for change in changes:
+        _apply(content, change)
+    return read_device(content, folder=path.parent, source=str(path))
+
+
+def read_content(path: Path) -> dict[str, Any]:
+    """Return what stands in a TOML file, and say in one line why it cannot be used if it cannot."""
     try:
-        content = tomllib.loads(path.read_text(encoding="utf-8"))
+        return tomllib.loads(path.read_text(encoding="utf-8"))
     except (OSError, UnicodeDecodeError) as error:
         reason = getattr(error, "strerror", None) or "it is not UTF-8 text"
         raise InputError(
@@ -59,19 +68,16 @@ def load_device(path: str | Path, changes: Iterable[str] = ()) -> ModulatedChain
             allowed="the values of a device",
             where=str(path),
         ) from error
-    for change in changes:
-        _apply(content, change)
-    return read_device(content, folder=path.parent, source=str(path))
 
 
 def read_device(content: dict[str, Any], *, folder: Path = Path("."), source: str = "device") -> ModulatedChain:
     """Turn the content of a device file into the description it stands for."""
-    from pydantic import TypeAdapter, ValidationError
+    from pydantic import ValidationError
 
     content = {"cycle": {"kind": "angle"}, **content}
     description = _choice(content.pop("kind", "chain"), KINDS, f"{source}: kind")
     try:  # through JSON, whose strict mode still takes lists for tuples
-        device: ModulatedChain = TypeAdapter(description).validate_json(
+        device: ModulatedChain = _reader(description).validate_json(
             json.dumps(content, default=lambda value: [str(value)]),
             strict=True,
             context={"cycle": lambda table: _cycle(table, folder)},
@@ -79,6 +85,14 @@ def read_device(content: dict[str, Any], *, folder: Path = Path("."), source: st
         return device
     except ValidationError as error:
         raise _first_mistake(error, source) from None
+
+
+@cache
+def _reader(description: type[ModulatedChain]) -> Any:
+    """Return pydantic's reader of a description, which takes it some ten milliseconds to put together."""
+    from pydantic import TypeAdapter
+
+    return TypeAdapter(description)
 
 
 def _choice(name: Any, among: dict[str, Any], where: str) -> Any:
@@ -199,29 +213,34 @@ def _apply(content: dict[str, Any], change: str) -> None:
         value = tomllib.loads(f"value = {text}")["value"]
     except tomllib.TOMLDecodeError:
         value = text
-    *path, last = key.strip().split(".")
+    put(content, key.strip(), value, where="--set")
+
+
+def put(content: dict[str, Any], key: str, value: Any, *, where: str) -> None:
+    """Set one dotted key of a device file's content; `where` is what an error message names as its place."""
+    *path, last = key.split(".")
     place: Any = content
     for part in path:
-        place = place.setdefault(part, {}) if isinstance(place, dict) else _item(place, part, key)
+        place = place.setdefault(part, {}) if isinstance(place, dict) else _item(place, part, key, where)
     if isinstance(place, dict):
         place[last] = value
     else:
-        _item(place, last, key)
+        _item(place, last, key, where)
         place[int(last)] = value
 
 
-def _item(place: Any, part: str, key: str) -> Any:
+def _item(place: Any, part: str, key: str, where: str) -> Any:
     """Return the entry of a list that a part of a dotted key names."""
     if not isinstance(place, list):
         raise InputError(
             f"what comes before {part!r} in {key!r} has no parts",
             allowed="keys of tables, numbers of lists",
-            where="--set",
+            where=where,
         )
     if not (part.isascii() and part.isdigit()) or int(part) >= len(place):
         raise InputError(
             f"there is no {part!r} in {key!r}",
-            where="--set",
+            where=where,
             allowed=f"one of {len(place)} entries, counted from 0" if place else "nothing, the list is empty",
         )
     return place[int(part)]
