@@ -28,16 +28,26 @@ from scatterpump.errors import (
     PumpError,
     SingularReflectionError,
     SolverError,
+    SweepError,
 )
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.solver.trace import ReflectionTrace
+from scatterpump.sweep.axis import Axis
+from scatterpump.sweep.gather import gather_sweep
+from scatterpump.sweep.plan import SweepPlan
+from scatterpump.sweep.plan_file import load_plan
+from scatterpump.sweep.point import Bisection
+from scatterpump.sweep.run import SweepReport, run_sweep
+from scatterpump.sweep.status import SweepStatus, sweep_status
 from scatterpump.verdict import Verdict, judge
 from scatterpump.winding.certificate import certify
 from scatterpump.winding.result import Crossing, Winding
 
 __all__ = [
     "AuditReport",
+    "Axis",
+    "Bisection",
     "BulkGap",
     "ClosedGapError",
     "ClosedProbeError",
@@ -53,6 +63,10 @@ __all__ = [
     "ReflectionTrace",
     "SingularReflectionError",
     "SolverError",
+    "SweepError",
+    "SweepPlan",
+    "SweepReport",
+    "SweepStatus",
     "Verdict",
     "Wave",
     "Winding",
@@ -60,9 +74,13 @@ __all__ = [
     "certify",
     "chern_number",
     "examine",
+    "gather_sweep",
     "judge",
     "load_device",
+    "load_plan",
     "reflect",
+    "run_sweep",
+    "sweep_status",
 ]
 
 # Without MUMPS kwant falls back to SciPy's solver, which serves as well but for very wide devices.

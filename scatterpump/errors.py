@@ -5,7 +5,15 @@ Every message answers four questions in one line: what is wrong, where, what is 
 
 from __future__ import annotations
 
-__all__ = ["ClosedGapError", "ClosedProbeError", "InputError", "PumpError", "SingularReflectionError", "SolverError"]
+__all__ = [
+    "ClosedGapError",
+    "ClosedProbeError",
+    "InputError",
+    "PumpError",
+    "SingularReflectionError",
+    "SolverError",
+    "SweepError",
+]
 
 
 class PumpError(Exception):
@@ -89,3 +97,7 @@ class SolverError(PumpError):
         super().__init__(
             f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): {type(cause).__name__}: {cause}"
         )
+
+
+class SweepError(PumpError):
+    """A sweep cannot go on: its results cannot be written, or its workers die.  What is finished is safe."""

@@ -9,6 +9,9 @@ import click
 
 from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.example import example
+from scatterpump.cli.gather import gather
+from scatterpump.cli.status import status
+from scatterpump.cli.sweep import sweep
 from scatterpump.cli.verdict import verdict
 from scatterpump.errors import PumpError
 from scatterpump.version import version
@@ -36,5 +39,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, example):
+for command in (verdict, sweep, status, gather, example):
     main.add_command(command)
