@@ -74,7 +74,7 @@ def sweep_leftovers(folder: Path) -> int:
 
 
 def _temporary(path: Path) -> Path:
-    return path.with_name(f".{path.name}.{os.getpid()}.{next(_numbers)}.{gethostname()}{LEFTOVER}")
+    return path.with_name(f".{path.name}.{os.getpid()}-{next(_numbers)}@{gethostname()}{LEFTOVER}")
 
 
 def _fill(path: Path, data: bytes, durable: bool) -> None:
@@ -112,11 +112,8 @@ def _refused(path: Path, temporary: Path, error: OSError) -> SweepError:
 
 
 def _is_abandoned(path: Path) -> bool:
-    process, _, host = (
-        path.name.removesuffix(LEFTOVER).rsplit(".", 2)[-3:] if path.name.count(".") > 3 else ("", "", "")
-    )
     if time.time() - path.stat().st_mtime > OLD:
         return True
-    return (
-        host == gethostname() and process.isdigit() and not Path("/proc", process).exists() and Path("/proc").exists()
-    )
+    name, _, host = path.name.removesuffix(LEFTOVER).rpartition("@")
+    process = name.rpartition(".")[2].partition("-")[0]
+    return host == gethostname() and Path("/proc/self").exists() and not Path("/proc", process).exists()

@@ -50,6 +50,7 @@ class Quantity:
     of: Callable[[Point], Iterable[Any]]
 
 
+RIGHT_ANGLE = np.pi / 2  # with larger steps even a device without narrow levels may be misread
 ENERGY = "energy unit of the device"
 
 
@@ -98,7 +99,8 @@ def _chern(point: Point) -> tuple[Any, ...]:
 def _sampled(point: Point) -> tuple[Any, ...]:
     r = point.trace.reflection
     taken = steps(np.concatenate((r, r[:1])))
-    return round(taken.turns), float(taken.largest.max()), float(point.trace.leakage.max())
+    largest = float(taken.largest.max())
+    return round(taken.turns) if largest < RIGHT_ANGLE else None, largest, float(point.trace.leakage.max())
 
 
 QUANTITIES = {
@@ -150,7 +152,7 @@ QUANTITIES = {
         Quantity(
             "sampled",
             (
-                Column("sampled_integer", "turns of det r read from samples: no proof", kind="integer"),
+                Column("sampled_integer", "turns of det r read from samples, no proof; missing if a step is a right angle", kind="integer"),
                 Column("largest_step", "largest eigenphase between neighbouring samples", "rad"),
                 Column("sampled_leak", "largest share of electrons that leaks at the sampled phases"),
             ),

@@ -16,6 +16,7 @@ import io
 import json
 import platform
 import time
+import zipfile
 from contextlib import suppress
 from dataclasses import dataclass
 from functools import cache
@@ -134,12 +135,17 @@ class Store:
 
     def load(self, part: Part) -> tuple[dict[str, NDArray[Any]], dict[str, Any]]:
         """Return the arrays of `part`, a row a position, and what is said about them."""
-        content = self._content(part)
+        content, path = self._content(part), self.folder / "parts" / part.name
         if content is None:
-            raise InputError("the part is gone or damaged", where=str(self.folder / "parts" / part.name))
-        with np.load(io.BytesIO(content), allow_pickle=False) as arrays:
-            found = {name: arrays[name] for name in arrays.files}
-        return found, json.loads(str(found.pop("about")))
+            raise InputError("the part is gone or damaged", where=str(path))
+        try:
+            with np.load(io.BytesIO(content), allow_pickle=False) as arrays:
+                found = {name: arrays[name] for name in arrays.files}
+            return found, json.loads(str(found.pop("about")))
+        except (ValueError, KeyError, OSError, EOFError, zipfile.BadZipFile) as error:
+            raise InputError(
+                f"the part was not written by a sweep ({error})", allowed="remove it", where=str(path)
+            ) from error
 
     def write(self, batch: Batch) -> Part:
         """Keep a finished batch.
