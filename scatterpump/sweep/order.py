@@ -20,15 +20,26 @@ from numpy.typing import NDArray
 __all__ = ["points_at", "positions_of", "runs", "share_bounds"]
 
 GOLDEN = (sqrt(5) - 1) / 2
+SEARCHED = 100  # far more than the largest gap between numbers coprime to one of ten digits
 
 Integers = NDArray[np.int64]
 
 
 @cache
 def _stride(count: int) -> int:
+    """Return the number near `count` / golden ratio whose ratio to `count` is the hardest to approximate."""
     wanted = round(count * GOLDEN)
-    candidates = (wanted + sign * step for step in range(count + 1) for sign in (1, -1))
-    return next(s for s in candidates if s > 0 and gcd(s, count) == 1)
+    near = range(max(1, wanted - SEARCHED), min(count, wanted + SEARCHED) + 1)
+    return min((s for s in near if gcd(s, count) == 1), key=lambda s: (max(_quotients(s, count)), abs(s - wanted)))
+
+
+def _quotients(part: int, whole: int) -> list[int]:
+    """Return the partial quotients of the continued fraction of `part` / `whole`: small ones spread evenly."""
+    quotients = []
+    while part:
+        quotients.append(whole // part)
+        whole, part = part, whole % part
+    return quotients
 
 
 def points_at(positions: Integers, count: int) -> Integers:
