@@ -248,7 +248,10 @@ def test_example_plan_can_be_read() -> None:
         (DEVICE + "[sweep]\n" + AXIS.replace("fermi_level", "fermi_levl"), "fermi_levl: this key is unknown"),
         (DEVICE + "[sweep]\n" + AXIS.replace("fermi_level", "onsite.3.amplitude"), "there is no '3'"),
         (DEVICE + "[sweep]\n" + AXIS.replace("fermi_level", "sites"), "-1.2 is no whole number"),
-        (DEVICE + "[sweep]\n" + AXIS.replace("values = [-1.2, 1.2]", "from = 1"), "sweep.axis.0.to: this key is missing"),
+        (
+            DEVICE + "[sweep]\n" + AXIS.replace("values = [-1.2, 1.2]", "from = 1"),
+            "sweep.axis.0.to: this key is missing",
+        ),
         (DEVICE + "[sweep]\n" + AXIS.replace("[-1.2, 1.2]", "[]"), "has no list of values"),
         (DEVICE + "[sweep]\n" + AXIS + 'name = "leak"\n', "named 'leak' like a result"),
         (DEVICE + '[sweep]\nkeep = ["lost"]\n' + AXIS, "a table [sweep.lost]"),

@@ -152,7 +152,11 @@ QUANTITIES = {
         Quantity(
             "sampled",
             (
-                Column("sampled_integer", "turns of det r read from samples, no proof; missing if a step is a right angle", kind="integer"),
+                Column(
+                    "sampled_integer",
+                    "turns of det r read from samples, no proof; missing if a step is a right angle",
+                    kind="integer",
+                ),
                 Column("largest_step", "largest eigenphase between neighbouring samples", "rad"),
                 Column("sampled_leak", "largest share of electrons that leaks at the sampled phases"),
             ),
