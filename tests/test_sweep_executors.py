@@ -48,7 +48,7 @@ values = [1.0, 0.5]
 seeds = 5
 """
 
-# The first solution of a process differs by rounding from later ones: some 1e-14 were met; a wrong point is off by 1e-3.
+# The first solution of a process differs by rounding from later ones, by some 1e-14; a wrong point is off by 1e-3.
 EQUAL = 1e-10
 
 

@@ -3,6 +3,6 @@
 #
 # "afterany", as a failed task would keep "afterok" waiting for ever; points that are missing are told, and are the exit code 1.
 #SBATCH --time=00:30:00
-#SBATCH --mem=2G
+#SBATCH --mem=1G
 
 exec scatterpump gather "$1" --output "$2"

@@ -154,7 +154,7 @@ QUANTITIES = {
             (
                 Column(
                     "sampled_integer",
-                    "turns of det r read from samples, no proof; missing if a step is a right angle",
+                    "turns of det r read from samples, no proof; missing if they are too coarse",
                     kind="integer",
                 ),
                 Column("largest_step", "largest eigenphase between neighbouring samples", "rad"),
