@@ -14,11 +14,11 @@ from typing import Any
 import numpy as np
 
 from scatterpump.errors import SweepError
-from scatterpump.sweep import files
-from scatterpump.sweep import run as run_module
+from scatterpump.sweep import driver, files
 from scatterpump.sweep.axis import Axis
 from scatterpump.sweep.plan import SweepPlan
 from scatterpump.sweep.quantities import QUANTITIES, Column, Quantity
+from scatterpump.sweep.run import run_sweep
 from scatterpump.sweep.store import Store
 
 QUANTITIES["toy"] = Quantity("toy", (Column("toy", "the square of x"),), lambda point: (point.pump,))
@@ -49,10 +49,10 @@ def deadly_once(x: int, grave: str) -> Any:
     return float(x * x)
 
 
-def deadly(x: int, driver: int) -> Any:
+def deadly(x: int, spared: int) -> Any:
     """Kill the worker at 7, always (but not the tests themselves)."""
     time.sleep(0.01)
-    if x == 7 and os.getpid() != driver:
+    if x == 7 and os.getpid() != spared:
         os.kill(os.getpid(), signal.SIGKILL)
     return float(x * x)
 
@@ -86,13 +86,13 @@ def run_and_die(folder: Path, step: int) -> None:
             os.kill(os.getpid(), signal.SIGKILL)
 
     files.on_step = kill
-    run_module.run_sweep(toy_plan(), folder, workers=1)
+    run_sweep(toy_plan(), folder, workers=1)
 
 
 def run_slowly(folder: Path, count: int) -> None:
     """Run with an eye on other runs."""
-    run_module.LOOK_AROUND = 0.2
-    run_module.run_sweep(toy_plan(slow, count), folder, workers=1)
+    driver.LOOK_AROUND = 0.2
+    run_sweep(toy_plan(slow, count), folder, workers=1)
 
 
 def run_on_small_disk(folder: Path) -> None:
@@ -104,4 +104,4 @@ def run_on_small_disk(folder: Path) -> None:
     signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
     resource.setrlimit(resource.RLIMIT_FSIZE, (1500, 1500))
     with pytest.raises(SweepError, match="File too large"):
-        run_module.run_sweep(toy_plan(), folder, workers=1)
+        run_sweep(toy_plan(), folder, workers=1)

@@ -1,7 +1,7 @@
 """A real Slurm on one node of its own: job arrays, the signal, putting back into the queue, resuming, merging.
 
-It is started here without the system's services, on 127.0.0.1, from Debian's packages slurmctld, slurmd, slurm-client and
-munge.  Where they are not installed, or this is not root, the tests are skipped and say so.
+It is started here without the system's services, on 127.0.0.1, from Debian's packages slurmctld, slurmd, slurm-client
+and munge.  Where they are not installed, or this is not root, the tests are skipped and say so.
 """
 
 from __future__ import annotations

@@ -15,7 +15,7 @@ import pytest
 from sweep_toys import assert_whole, deadly_once, rows_of, toy_plan
 
 from scatterpump.errors import SweepError
-from scatterpump.sweep import run
+from scatterpump.sweep import driver
 from scatterpump.sweep.gather import gather_sweep
 from scatterpump.sweep.run import run_sweep
 
@@ -88,7 +88,7 @@ def test_serial_results_are_what_they_should_be(serial: Any) -> None:
 
 
 def test_processes_give_the_same(plan: Path, serial: Any, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(run, "SMALL", 0.0)
+    monkeypatch.setattr(driver, "SMALL", 0.0)
     watched: list[int] = []
     run_sweep(plan, tmp_path, workers=2, watch=lambda log: watched.append(log.workers))
     assert watched[-1] == 2

@@ -27,7 +27,7 @@ from sweep_toys import (
 )
 
 from scatterpump.errors import InputError, SweepError
-from scatterpump.sweep import files, run
+from scatterpump.sweep import driver, files
 from scatterpump.sweep.journal import runs_in
 from scatterpump.sweep.run import run_sweep
 from scatterpump.sweep.status import sweep_status
@@ -75,7 +75,7 @@ def test_run_killed_at_every_write_step_is_resumed(tmp_path: Path) -> None:
 @pytest.fixture
 def wide(monkeypatch: pytest.MonkeyPatch) -> None:
     """Start processes for however little work."""
-    monkeypatch.setattr(run, "SMALL", 0.0)
+    monkeypatch.setattr(driver, "SMALL", 0.0)
 
 
 @pytest.mark.usefixtures("wide")
@@ -89,7 +89,7 @@ def test_killed_worker_costs_nothing(tmp_path: Path) -> None:
 
 @pytest.mark.usefixtures("wide")
 def test_point_that_always_kills_its_worker_is_kept_as_failed(tmp_path: Path) -> None:
-    report = run_sweep(toy_plan(deadly, 24, driver=os.getpid()), tmp_path, workers=2)
+    report = run_sweep(toy_plan(deadly, 24, spared=os.getpid()), tmp_path, workers=2)
     assert (report.done, report.failed, report.missing) == (23, 1, 0)
     points, values = rows_of(tmp_path)
     assert sorted(points) == list(range(24))
@@ -250,7 +250,7 @@ def test_signal_lets_workers_finish(tmp_path: Path) -> None:
 def run_wide(folder: str) -> None:
     from sweep_toys import slow
 
-    run.SMALL = 0.0
+    driver.SMALL = 0.0
     report = run_sweep(toy_plan(slow, 1000), folder, workers=2)
     raise SystemExit(75 if report.missing else 0)
 

@@ -36,6 +36,9 @@ ALL_DONE, SOME_FAILED, CANNOT_GO_ON = 0, 1, 74  # the last is EX_IOERR of sysexi
     "--dask", metavar="ADDRESS", help="Work on a dask cluster: its scheduler's address, or its scheduler file."
 )
 @click.option("--retry-failed", is_flag=True, help="Do the points again that failed.")
+@click.option(
+    "--batch", type=float, default=0.5, show_default=True, help="Seconds of work in each file that is written."
+)
 @click.option("--dry-run", is_flag=True, help="Only try a few points, and say what the plan will cost.")
 def sweep(
     plan: Path,
@@ -45,6 +48,7 @@ def sweep(
     executor: str,
     dask: str | None,
     retry_failed: bool,
+    batch: float,
     dry_run: bool,
 ) -> None:
     """Work off PLAN, a TOML file with a table [sweep], into a folder.
@@ -76,6 +80,7 @@ def sweep(
                     workers=size or workers,
                     share=share_of(share),
                     retry_failed=retry_failed,
+                    batch=batch,
                     watch=watch,
                     request=request,
                 )
