@@ -20,6 +20,7 @@ from scatterpump.errors import InputError, SweepError
 from scatterpump.sweep.axis import Axis
 from scatterpump.sweep.columns import MISSING, empty, joined
 from scatterpump.sweep.ensemble import QUANTILES, quantiles, quantised, quantised_fraction
+from scatterpump.sweep.order import points_at
 from scatterpump.sweep.plan import SweepPlan
 from scatterpump.sweep.quantities import DTYPES, Column, columns_of
 from scatterpump.sweep.store import Store
@@ -96,9 +97,10 @@ def _merged(store: Store, columns: list[Column]) -> tuple[dict[str, NDArray[Any]
     versions: Counter[str] = Counter()
     errors: Counter[str] = Counter()
     for part in store.parts():
-        found, about = store.load(part)
-        failed = np.array([str(p) in about["errors"] for p in range(part.start, part.stop)])
-        rows = found["point"]
+        found, about = store.load(part, arrays.keys())
+        positions = np.arange(part.start, part.stop)
+        failed = np.isin(positions, [int(p) for p in about["errors"]])
+        rows = points_at(positions, size)
         better = (status[rows] == ABSENT) | ((status[rows] == FAILED) & ~failed)
         status[rows[better]] = np.where(failed[better], FAILED, DONE)
         for name in arrays:

@@ -17,6 +17,7 @@ import json
 import platform
 import time
 import zipfile
+from collections.abc import Collection
 from contextlib import suppress
 from dataclasses import dataclass
 from functools import cache
@@ -133,15 +134,15 @@ class Store:
         """Return the error of each position of `part` that failed."""
         return {int(position): text for position, text in self.load(part)[1]["errors"].items()} if part.failed else {}
 
-    def load(self, part: Part) -> tuple[dict[str, NDArray[Any]], dict[str, Any]]:
-        """Return the arrays of `part`, a row a position, and what is said about them."""
+    def load(self, part: Part, names: Collection[str] | None = None) -> tuple[dict[str, NDArray[Any]], dict[str, Any]]:
+        """Return the arrays of `part`, or those called `names`, a row a position, and what is said about them."""
         content, path = self._content(part), self.folder / "parts" / part.name
         if content is None:
             raise InputError("the part is gone or damaged", where=str(path))
         try:
             with np.load(io.BytesIO(content), allow_pickle=False) as arrays:
-                found = {name: arrays[name] for name in arrays.files}
-            return found, json.loads(str(found.pop("about")))
+                found = {name: arrays[name] for name in names or arrays.files if name != "about"}
+                return found, json.loads(str(arrays["about"]))
         except (ValueError, KeyError, OSError, EOFError, zipfile.BadZipFile) as error:
             raise InputError(
                 f"the part was not written by a sweep ({error})", allowed="remove it", where=str(path)
@@ -243,9 +244,10 @@ def _stored_plan(folder: Path) -> dict[str, Any]:
 
 def _refuse_other(folder: Path, plan: SweepPlan) -> None:
     """Refuse a folder whose results belong to another plan, and name up to three differences."""
-    there, here = flattened(_stored_plan(folder)), flattened(json.loads(plan.to_json()))
-    if there == here:
+    stored, asked = _stored_plan(folder), json.loads(plan.to_json())
+    if stored == asked:
         return
+    there, here = flattened(stored), flattened(asked)
     absent = "nothing"
     differences = [
         f"{key}: {there.get(key, absent)!r:.60} there, {here.get(key, absent)!r:.60} here"
