@@ -163,7 +163,7 @@ def _forecast(plan: SweepPlan, path: Path, into: Path | None, workers: int | Non
     click.echo(f"points        {cost.points} ({shape})")
     failed = f", {cost.failed} of them failed" if cost.failed else ""
     alone, together = duration(cost.seconds), duration(cost.seconds / processors)
-    sample = f"{1000 * cost.point_seconds:.3g} ms a point, from {cost.sample} points{failed}"
+    sample = f"{duration(cost.point_seconds)} a point, the mean of {cost.sample}{failed}"
     click.echo(f"time          {alone} on one processor, {together} on {processors}: {sample}")
     click.echo(f"memory        {cost.memory / 2**20:.0f} MB a worker")
     click.echo(f"results       {cost.stored / 2**20:.2f} MB")

@@ -59,4 +59,4 @@ def duration(seconds: float) -> str:
     for unit, length in (("days", 86_400.0), ("h", 3600.0), ("min", 60.0)):
         if seconds >= 2 * length:
             return f"{seconds / length:.3g} {unit}"
-    return f"{seconds:.2g} s"
+    return f"{seconds:.3g} s" if seconds >= 1 else f"{1000 * seconds:.3g} ms"
