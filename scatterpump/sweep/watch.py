@@ -6,6 +6,7 @@ import sys
 import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from typing import Any
 
 from scatterpump.sweep.journal import Run
 
@@ -20,18 +21,32 @@ def shown() -> Iterator[Callable[[Run], None]]:
     if not sys.stderr.isatty():
         yield _Log()
         return
-    from tqdm import tqdm
+    bar = _Bar()
+    try:
+        yield bar
+    finally:
+        bar.close()
 
-    with tqdm(unit="point", file=sys.stderr, smoothing=0.05, dynamic_ncols=True) as bar:
 
-        def show(run: Run) -> None:
-            if bar.total is None:
-                bar.total, bar.initial, bar.n = run.points, run.done + run.failed, run.done + run.failed
-                bar.set_description(f"share {run.share}/{run.shares}" if run.shares > 1 else "sweep")
-            bar.set_postfix_str(f"{run.failed} failed", refresh=False)
-            bar.update(run.done + run.failed - bar.n)
+class _Bar:
+    """Points, rate, time left and failures on one line, from the first word of a run on."""
 
-        yield show
+    def __init__(self) -> None:
+        self._bar: Any = None
+
+    def __call__(self, run: Run) -> None:
+        known = run.done + run.failed
+        if self._bar is None:
+            from tqdm import tqdm
+
+            label = f"share {run.share}/{run.shares}" if run.shares > 1 else "sweep"
+            self._bar = tqdm(desc=label, total=run.points, initial=known, unit=" points", file=sys.stderr)
+        self._bar.set_postfix_str(f"{run.failed} failed", refresh=False)
+        self._bar.update(known - self._bar.n)
+
+    def close(self) -> None:
+        if self._bar is not None:
+            self._bar.close()
 
 
 class _Log:
