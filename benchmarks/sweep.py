@@ -185,11 +185,11 @@ def main() -> None:
             f"reaches {row['of_machine']:.2f} now)",
             flush=True,
         )
-    for size in (BATCH, 1):
-        written, resumed, gathered = resume_and_gather(options.stored, size)
+    for size, points in ((BATCH, options.stored), (1, options.stored // 10)):
+        written, resumed, gathered = resume_and_gather(points, size)
         found[f"batches_of_{size}"] = {"write_s": written, "resume_s": resumed, "gather_s": gathered}
         print(
-            f"{options.stored} points in batches of {size}: written in {written:.1f} s, resumed in {resumed:.2f} s "
+            f"{points} points in batches of {size}: written in {written:.1f} s, resumed in {resumed:.2f} s "
             f"(goal {GOALS['resume']:.0f}), merged in {gathered:.1f} s (goal {GOALS['gather']:.0f})",
             flush=True,
         )

@@ -15,6 +15,7 @@ import sys
 import time
 from collections.abc import Callable, Iterator
 from pathlib import Path
+from tempfile import TemporaryDirectory
 
 import pytest
 import xarray
@@ -174,12 +175,22 @@ def free_port() -> int:
 
 
 @pytest.fixture(scope="module")
-def slurm(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Cluster]:
-    folder = tmp_path_factory.mktemp("slurm")
+def slurm() -> Iterator[Cluster]:
+    # Not below pytest's folder: munge insists that others can get to its socket, all the way.
+    with TemporaryDirectory(prefix="slurm-") as folder:
+        cluster = configured(Path(folder))
+        try:
+            cluster.start()
+            yield cluster
+        finally:
+            cluster.stop()
+
+
+def configured(folder: Path) -> Cluster:
+    """Write what a Slurm of one node needs into `folder`."""
     for name in ("munge", "mrun", "state", "spool", "log"):
         (folder / name).mkdir(mode=0o755)
-    for path in (folder, *list(folder.parents)[:2]):  # munge insists that others can get to its socket
-        path.chmod(0o755)
+    folder.chmod(0o755)
     (folder / "munge").chmod(0o700)
     (folder / "munge" / "munge.key").write_bytes(os.urandom(128))
     (folder / "munge" / "munge.key").chmod(0o400)
@@ -187,12 +198,7 @@ def slurm(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Cluster]:
     (folder / "slurm.conf").write_text(
         CONFIGURATION.format(host=host, folder=folder, first=free_port(), second=free_port())
     )
-    cluster = Cluster(folder)
-    try:
-        cluster.start()
-        yield cluster
-    finally:
-        cluster.stop()
+    return Cluster(folder)
 
 
 def plan_of(folder: Path, count: int) -> Path:
