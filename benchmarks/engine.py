@@ -1,12 +1,12 @@
 """How much faster r(phi) is than a practised loop over kwant.smatrix, how cost grows, and what a proof costs.
 
-Both sides run on the same pump in one process, BLAS on one thread, in processor time.  The loop computes the lead modes
 Both sides run on the same pump in one process, BLAS on one thread, in processor time.  The loop computes the lead
-modes once and asks for the probe as the only in-lead; it is timed on a few phases and scaled.  The engine starts from the same
-finalized system and finds everything else itself, modes included.  Ratios are medians over paired repeats; every case
-runs in a process of its own, whose peak memory before the loop starts is given, with 100 MiB of imports in it.
+modes once and asks for the probe as the only in-lead; it is timed on a few phases and scaled.  The engine starts from
+the same finalized system and finds everything else itself, modes included.  Ratios are medians over paired repeats;
+every case runs in a process of its own, whose peak memory before the loop starts is given, with some 100 MiB of
+imports in it.  What numba compiles, if it is installed, is compiled before the clock starts.
 
-    python benchmarks/engine.py [--json FILE] [--phases 400] [--repeats 5] [--sizes 300x1 ...] [--only ratios growth proof]
+    python benchmarks/engine.py [--json FILE] [--phases 400] [--repeats 5] [--sizes 300x1 ...] [--only ratios proof]
 """
 
 from __future__ import annotations
@@ -201,20 +201,20 @@ def proof(options: argparse.Namespace) -> list[dict[str, Any]]:
             ratio, seconds = np.median(pairs, axis=0)
             row = {"case": f"{length} x {width}", "number": winding.number, "certify_s": seconds, "ratio": ratio}
             rows.append(row)
-            print(
-                f"proof on {row['case']:<9} W = {winding.number:+d} in {seconds:.3f} s, 401-point loop / proof = {ratio:.1f}"
-            )
-        pump, phases = device(60, 1, 0.0), np.linspace(0, 6, 100)
-        thousand, many = (
-            np.median([timed(lambda n=n: sp.reflect(fresh(pump), phases, repeat=n))[0] for _ in range(5)])
-            for n in (10**3, 10**5)
-        )
+            print(f"proof on {row['case']:<9} W = {winding.number:+d} in {seconds:.3f} s, loop / proof = {ratio:.1f}")
+        thousand, many = (_prolonged(10**3), _prolonged(10**5))
         rows.append({"case": "repeat 1e5 / 1e3", "ratio": many / thousand})
         print(f"10^5 cells against 10^3: {many / thousand:.2f} times the time")
         for length, width in ((300, 1), (100, 10), (60, 100)):
             for count in (1, 4, 100):
                 rows.append(_choice(device(length, width, 0.3), count))
     return rows
+
+
+def _prolonged(cells: int) -> float:
+    """Seconds for r at 100 phases of a chain prolonged by so many cells."""
+    chain, phases = device(60, 1, 0.0), np.linspace(0, 6, 100)
+    return float(np.median([timed(lambda: sp.reflect(fresh(chain), phases, repeat=cells))[0] for _ in range(5)]))
 
 
 def _choice(pump: sp.Pump, count: int) -> dict[str, Any]:

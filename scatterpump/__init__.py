@@ -37,6 +37,7 @@ from scatterpump.errors import (
     PumpError,
     SingularReflectionError,
     SolverError,
+    SweepError,
 )
 from scatterpump.operation.charge import Charge, charge
 from scatterpump.operation.current import Current, current
@@ -51,6 +52,13 @@ from scatterpump.operation.tolerance import DisorderTolerance, DriveTolerance, d
 from scatterpump.pump import Continuum, Pump, Units
 from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
+from scatterpump.sweep.axis import Axis
+from scatterpump.sweep.gather import gather_sweep
+from scatterpump.sweep.plan import SweepPlan
+from scatterpump.sweep.plan_file import load_plan
+from scatterpump.sweep.point import Bisection
+from scatterpump.sweep.run import SweepReport, run_sweep
+from scatterpump.sweep.status import SweepStatus, sweep_status
 from scatterpump.verdict import Verdict, judge
 from scatterpump.winding.certificate import certify
 from scatterpump.winding.resolved import Resolved, Sector, resolve
@@ -58,6 +66,8 @@ from scatterpump.winding.result import Crossing, Winding
 
 __all__ = [
     "AuditReport",
+    "Axis",
+    "Bisection",
     "BulkGap",
     "Charge",
     "ClosedGapError",
@@ -97,6 +107,10 @@ __all__ = [
     "SingularReflectionError",
     "SlidingWave",
     "SolverError",
+    "SweepError",
+    "SweepPlan",
+    "SweepReport",
+    "SweepStatus",
     "Units",
     "Verdict",
     "Wave",
@@ -109,17 +123,21 @@ __all__ = [
     "disorder_tolerance",
     "drive_tolerance",
     "examine",
+    "gather_sweep",
     "inspect",
     "judge",
     "load_device",
+    "load_plan",
     "operating_sheet",
     "plateaus",
     "quantity",
     "reflect",
     "reflect_grid",
     "resolve",
+    "run_sweep",
     "shortest_device",
     "speed_limit",
+    "sweep_status",
     "temperature_limit",
 ]
 

@@ -17,6 +17,7 @@ __all__ = [
     "PumpError",
     "SingularReflectionError",
     "SolverError",
+    "SweepError",
     "told",
 ]
 
@@ -147,3 +148,7 @@ class CycleError(PumpError):
             f"the cycle's function failed at phi = {phase:.6g}: {told(cause)}; "
             "allowed: a function of phi in radians that returns the parameters as a mapping"
         )
+
+
+class SweepError(PumpError):
+    """A sweep cannot go on: its results cannot be written, or its workers die.  What is finished is safe."""

@@ -7,7 +7,7 @@ import sys
 
 import pytest
 
-HEAVY = ("kwant", "scipy.optimize", "matplotlib", "pydantic")
+HEAVY = ("kwant", "scipy.optimize", "matplotlib", "pydantic", "xarray", "h5py", "distributed", "mpi4py", "tqdm")
 
 
 def loaded_after(statement: str) -> set[str]:

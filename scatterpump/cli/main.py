@@ -10,7 +10,10 @@ import click
 from scatterpump.cli.audit import audit
 from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.example import example
+from scatterpump.cli.gather import gather
 from scatterpump.cli.inspect import inspect
+from scatterpump.cli.status import status
+from scatterpump.cli.sweep import sweep
 from scatterpump.cli.verdict import verdict
 from scatterpump.cli.window import window
 from scatterpump.errors import PumpError
@@ -39,5 +42,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, audit, inspect, window, example):
+for command in (verdict, audit, inspect, window, sweep, status, gather, example):
     main.add_command(command)

@@ -5,6 +5,7 @@ The table ``[cycle]`` names one of the constructors of `Cycle` in its own ``kind
 arguments.  Files that are named in it, a table or a Python file, are looked for next to the device file.
 """
 
-from scatterpump.device_file.read import load_device, read_device
+from scatterpump.device_file.changes import put
+from scatterpump.device_file.read import load_device, read_content, read_device
 
-__all__ = ["load_device", "read_device"]
+__all__ = ["load_device", "put", "read_content", "read_device"]

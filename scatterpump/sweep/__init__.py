@@ -1,0 +1,1 @@
+"""Maps over many devices: a plan, any executor to run it on, a store that survives, and one file at the end."""
