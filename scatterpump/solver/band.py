@@ -34,6 +34,7 @@ __all__ = [
 ]
 
 Complex = NDArray[np.complex128]
+SLENDER = 4
 EPS = float(np.finfo(float).eps)
 
 
@@ -130,6 +131,9 @@ def spectral_norm(matrix: NDArray[Any]) -> float:
         return 0.0
     if 1 in matrix.shape:
         return float(np.sqrt(np.vdot(matrix, matrix).real))
+    if max(matrix.shape) > SLENDER * min(matrix.shape):  # the largest eigenvalue of the small product, to rounding
+        tall = matrix if matrix.shape[0] > matrix.shape[1] else matrix.conj().T
+        return float(np.sqrt(max(0.0, np.linalg.eigvalsh(tall.conj().T @ tall)[-1])))
     return float(np.linalg.norm(matrix, ord=2))
 
 

@@ -55,7 +55,7 @@ LEAK_BUDGET = 96
 REFERENCE_BUDGET = 160
 
 
-def certify(pump: Pump, *, budget: int = 400, progress: Progress | None = None) -> Winding:
+def certify(pump: Pump, *, budget: int = 400, leak: bool = True, progress: Progress | None = None) -> Winding:
     """Prove how often det r winds over the cycle of `pump`.
 
     Parameters
@@ -63,6 +63,9 @@ def certify(pump: Pump, *, budget: int = 400, progress: Progress | None = None) 
     pump : Pump
     budget : int
         Most looks to take for the number.
+    leak : bool
+        Whether to bound the leak to the other leads as well, for which the device is looked at behind a good contact;
+        without it the bound is 1, and the number is proven in about half the time.
     progress : callable, optional
         Called with the share of the cycle that is covered so far, 0 to 1.
 
@@ -87,7 +90,7 @@ def certify(pump: Pump, *, budget: int = 400, progress: Progress | None = None) 
     from threadpoolctl import threadpool_limits
 
     with threadpool_limits(1):  # many small factorisations: threads would only get in each other's way
-        return certify_device(fold(pump), budget=budget, progress=progress)
+        return certify_device(fold(pump), budget=budget, leak=leak, progress=progress)
 
 
 def behind_good_contact(pump: Pump) -> int | None:
@@ -103,7 +106,9 @@ def behind_good_contact(pump: Pump) -> int | None:
     return round(sum(join(list(cover.centres))) / TURN) if cover.closed else None
 
 
-def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progress | None = None) -> Winding:
+def certify_device(
+    device: FoldedDevice, *, budget: int = 400, leak: bool = True, progress: Progress | None = None
+) -> Winding:
     """Prove the winding of a device already folded; see `certify`."""
     slopes = device.path.slopes(lambda entries: norm_bound(device.band(entries)))
     good, excess = good_contact(device)
@@ -111,6 +116,8 @@ def certify_device(device: FoldedDevice, *, budget: int = 400, progress: Progres
     here = Cover((), 0, "the contact is weaker than rounding can resolve")
     if not _below_rounding(device):
         here = cover_cycle(device, slopes, budget=budget, progress=progress)
+    if here.closed and not leak:
+        return _proven(device, here, Reference(1.0, False, (), 0, 0), here.looks)
     if here.closed:
         seen = survey(good, slopes, contact, goal=LEAK_GOAL, need_winding=False, budget=LEAK_BUDGET)
         return _proven(device, here, seen, here.looks)

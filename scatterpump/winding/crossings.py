@@ -27,6 +27,7 @@ Complex = NDArray[np.complex128]
 TURN = 2 * np.pi
 FINEST = 4e-16
 SAME = 1e-12
+APART = 1e-3  # of an interval: how far on either side of a guess to look
 
 
 def find_crossings(device: FoldedDevice, centres: list[Centre], contact: Contact | None = None) -> tuple[Crossing, ...]:
@@ -41,13 +42,22 @@ def find_crossings(device: FoldedDevice, centres: list[Centre], contact: Contact
     found: list[Crossing] = []
     for left, right, end in neighbours(centres):
         count = _Counter(device, left, right, end)
-        total = count(end)
-        if total:
-            found += [
-                _described(device, phase, number, contact)
-                for phase, number in _located(count, left.phase, 0, end, total)
-            ]
+        low, high = _Stand(left.phase, 0, _closeness(left.seen.reflection)), count(end)
+        if high.passed:
+            found += [_described(device, phase, number, contact) for phase, number in _located(count, low, high)]
     return tuple(sorted(found, key=lambda crossing: crossing.phase))
+
+
+@dataclass(frozen=True)
+class _Stand:
+    """How things stand at a phase: eigenvalues of r that have passed +1, and tan(theta/2) of the one nearest to it.
+
+    The tangent is linear in the distance of the level from the Fermi level, over its width: 1/K up to a factor.
+    """
+
+    phase: float
+    passed: int
+    closeness: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -59,7 +69,7 @@ class _Counter:
     right: Centre
     end: float
 
-    def __call__(self, phase: float) -> int:
+    def __call__(self, phase: float) -> _Stand:
         start, stop = self.end - self.right.below.reach, self.left.phase + self.left.above.reach
         meet = min(max((start + stop) / 2, self.left.phase), self.end)
         begin = self.left.seen.reflection
@@ -76,7 +86,7 @@ class _Counter:
                 + _turn(self.right.below, phase - self.end, here)
             )
         change = _angles(here).sum() - _angles(begin).sum()
-        return round(float(turned - change) / TURN)
+        return _Stand(phase, round(float(turned - change) / TURN), _closeness(here))
 
 
 def _turn(arm: Arm, s: float, here: Complex) -> float:
@@ -99,17 +109,36 @@ def _reflection(device: FoldedDevice, phase: float) -> Complex:
     )
 
 
-def _located(
-    count: Callable[[float], int], low: float, at_low: int, high: float, at_high: int
-) -> list[tuple[float, int]]:
-    """Bisect for the places where `count` changes, and by how much."""
-    if at_low == at_high:
+def _closeness(reflection: Complex) -> float:
+    """tan(theta/2) of the eigenvalue of r that is nearest to +1."""
+    angles = np.angle(np.linalg.eigvals(reflection))
+    return float(np.tan(angles[np.abs(angles).argmin()] / 2))
+
+
+def _located(count: Callable[[float], _Stand], low: _Stand, high: _Stand) -> list[tuple[float, int]]:
+    """Find the places where the number of passed eigenvalues changes, and by how much.
+
+    Bisection, but for a single eigenvalue guesses by the straight line between the ends, with a look on either side.
+    """
+    if low.passed == high.passed:
         return []
-    middle = (low + high) / 2
-    if high - low <= max(FINEST * max(1.0, abs(high)), 1e-15) or middle in (low, high):
-        return [(middle, at_high - at_low)]
-    at_middle = count(middle)
-    return [*_located(count, low, at_low, middle, at_middle), *_located(count, middle, at_middle, high, at_high)]
+    width, middle = high.phase - low.phase, (low.phase + high.phase) / 2
+    if width <= max(FINEST * max(1.0, abs(high.phase)), 1e-15) or middle in (low.phase, high.phase):
+        return [(middle, high.passed - low.passed)]
+    places = [middle]
+    if abs(high.passed - low.passed) == 1 and low.closeness * high.closeness < 0:
+        guess = low.phase - low.closeness * width / (high.closeness - low.closeness)
+        places = [guess - APART * width, guess + APART * width, middle]
+    for place in places:
+        if low.phase < place < high.phase and high.phase - low.phase > width / 2:
+            here = count(place)
+            if here.passed == low.passed:
+                low = here
+            elif here.passed == high.passed:
+                high = here
+            else:
+                return [*_located(count, low, here), *_located(count, here, high)]
+    return _located(count, low, high)
 
 
 def _described(device: FoldedDevice, phase: float, number: int, contact: Contact | None) -> Crossing:

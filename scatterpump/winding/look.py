@@ -151,9 +151,12 @@ def look(phase: float, band: Complex, probe: Complex, *, splitting: bool = True)
 
 def _advanced(band: Complex, probe: Complex) -> Complex:
     """B = A - i W W^+."""
-    broadening = -1j * (probe @ probe.conj().T)
-    rows, columns = np.nonzero(broadening)
-    return np.asarray(band + pack(rows, columns, broadening[rows, columns], band.shape[1], len(band) // 2))
+    touched = np.flatnonzero(probe.any(axis=1))
+    columns = probe[touched]
+    rows, across = np.meshgrid(touched, touched, indexing="ij")
+    broadening = -1j * (columns @ columns.conj().T)
+    inside = np.abs(rows - across) <= len(band) // 2  # beyond it the broadening is 0: the band holds all of it
+    return np.asarray(band + pack(rows[inside], across[inside], broadening[inside], band.shape[1], len(band) // 2))
 
 
 def _residual(band: Complex, solution: Complex, right: Complex) -> float:
