@@ -196,6 +196,15 @@ class Pump:
             other.remembered["path"] = self.remembered["path"]
         return other
 
+    def seen_from(self, lead: int) -> Pump:
+        """Return the same device with another lead as the probe; the drain is the old probe, or the first lead left."""
+        others = [other for other in (self.probe, *range(len(self.finalized.leads))) if other != lead]
+        drain = others[0] if others else None
+        seen = replace(self, system=self.finalized, bulk=None, probe=lead, drain=drain)
+        if "path" in self.remembered:  # H(phi) does not know the probe
+            seen.remembered["path"] = self.remembered["path"]
+        return seen
+
     def on(self, cycle: Cycle) -> Pump:
         """Return the same pump driven round another cycle."""
         return replace(self, system=self.finalized, bulk=self.finalized_bulk, cycle=cycle)

@@ -179,7 +179,7 @@ def test_moebius_map_between_contacts_of_several_channels(excess: Floats, seed: 
 
 
 @settings(derandomize=True, deadline=None)
-@given(several, st.integers(0, 10**6), st.floats(0, 1), st.floats(0, 0.3))
+@given(several, st.integers(0, 10**6), st.one_of(st.just(0.0), st.floats(1e-290, 1)), st.floats(0, 0.3))
 def test_amplified_leak_is_an_upper_bound(excess: Floats, seed: int, loss: float, error: float) -> None:
     rng = np.random.default_rng(seed)
     contact, m = Contact(excess), len(excess)

@@ -157,5 +157,5 @@ def test_leak_is_checked(leak):
 
 
 def test_wave_that_never_repeats_has_no_length():
-    with pytest.raises(sp.InputError, match="no bulk cell|do not repeat"):
+    with pytest.raises(sp.InputError, match="no cell that changes repeats|do not repeat"):
         sp.shortest_device(replace(SLIDING, onsite=[sp.Wave(1.5, sqrt(7))]))

@@ -16,7 +16,7 @@ the cycle is cut, at its corners and where a level is known to pass, and halved 
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -183,7 +183,7 @@ class _Frozen:
             raise ClosedProbeError(pump.fermi_level, pump.probe)
         self.leads = [lead for lead, count in enumerate(channels) if count]
         self.probe = self.leads.index(pump.probe) if leak else None
-        self.views = [replace(pump, system=pump.finalized, bulk=None, probe=lead, drain=None) for lead in self.leads]
+        self.views = [pump.seen_from(lead) for lead in self.leads]
         self.evaluations = 0
 
     def measure(self, starts: Floats, ends: Floats) -> Floats:

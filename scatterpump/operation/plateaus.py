@@ -217,6 +217,6 @@ def _chern(pump: Pump) -> int | None:
 
 def _wound(pump: Pump) -> int | None:
     try:
-        return certify(pump).number
+        return certify(pump, leak=False).number
     except (ClosedProbeError, SingularReflectionError, InputError):  # the last one: at an edge of a lead's band
         return None

@@ -6,7 +6,7 @@ pass, so panels are made to end there; a charge that is not conserved tells that
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -111,6 +111,6 @@ def _levels(pump: Pump) -> list[float]:
     found: list[float] = []
     for lead, wire in enumerate(wires(pump)):
         if wire.channels(pump.fermi_level):
-            seen = _certified(replace(pump, system=pump.finalized, bulk=None, probe=lead, drain=None))
+            seen = _certified(pump.seen_from(lead))
             found += [] if seen is None else [crossing.phase for crossing in seen.crossings]
     return found
