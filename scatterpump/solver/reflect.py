@@ -15,7 +15,6 @@ __all__ = ["Engine", "reflect", "reflect_grid"]
 
 Engine = Literal["auto", "layered", "direct"]
 ENGINES = ("auto", "layered", "direct")
-FEW = 4
 
 
 def reflect(
@@ -37,7 +36,7 @@ def reflect(
     engine : "auto", "layered" or "direct"
         "direct" is kwant's own solver, one phi at a time: the reference.  "layered" eliminates all phases at once,
         layer by layer, or where layers are wide by one sparse factorisation each.  "auto" takes "layered", but "direct"
-        for very few phases.  The trace says which one ran.
+        for a single phase of a pump that nothing is known about yet.  The trace says which one ran.
     transmission : bool
         Whether t is wanted as well; without it the trace's ``transmission`` has no rows.
     repeat : int
@@ -71,7 +70,8 @@ def reflect(
         if endless:
             return layered.solve_endless(pump, points)
         return layered.solve_repeated(pump, points, repeat, transmission=transmission)
-    if engine == "direct" or (engine == "auto" and len(points) <= FEW):
+    alone = len(points) == 1 and "path" not in pump.remembered  # H is asked for once, instead of along the whole cycle
+    if engine == "direct" or (engine == "auto" and alone):
         return direct.solve(pump, points, transmission=transmission)
     return layered.solve(pump, points, transmission=transmission)
 
