@@ -8,6 +8,9 @@ phase by phase.
 
 from __future__ import annotations
 
+from collections import defaultdict
+from collections.abc import Iterator
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -163,17 +166,22 @@ class DrivenHamiltonian:
 
     def _agrees(self, found: Complex, parameters: dict[str, Any]) -> bool:
         """Whether value functions called for one phase give what was found, for some pairs of each function."""
-        calls: dict[Any, list[int]] = {}
-        for place in self._driven:
-            calls.setdefault(self._values[place][0], []).append(place)
         ends = np.searchsorted(self.live, self._starts)
-        for places in calls.values():
-            for place in {places[i] for i in np.linspace(0, len(places) - 1, SPOTS).astype(int)}:
-                truth = np.asarray(self._called(place, parameters), dtype=complex).ravel()
-                difference = np.abs(found[ends[place] : ends[place] + truth.size] - truth).max()
-                if not difference <= AGREES * max(1e-300, np.abs(truth).max()):
-                    return False
+        for place in self._spots:
+            truth = np.asarray(self._called(place, parameters), dtype=complex).ravel()
+            difference = np.abs(found[ends[place] : ends[place] + truth.size] - truth).max()
+            if not difference <= AGREES * max(1e-300, np.abs(truth).max()):
+                return False
         return True
+
+    @cached_property
+    def _spots(self) -> list[int]:
+        """For every value function some of the pairs that it is called for: the first, the last, and others between."""
+        calls: dict[Any, list[int]] = defaultdict(list)
+        for place in self._driven:
+            calls[self._values[place][0]].append(place)
+        even = [np.unique(np.linspace(0, len(places) - 1, SPOTS).astype(int)) for places in calls.values()]
+        return [places[i] for places, some in zip(calls.values(), even, strict=True) for i in some]
 
     def _called(self, place: int, parameters: dict[str, Any]) -> Any:
         """Value of a pair: of a site (i, i) or a hopping (i, j)."""
@@ -186,25 +194,38 @@ class DrivenHamiltonian:
 
     def _walked(self, places: list[int], parameters: dict[str, Any], count: int) -> Complex:
         """All elements of some pairs at all phases, shape (count, elements), stored element by element."""
-        orbitals, sizes = np.diff(self.offsets), np.diff([*self._starts, len(self.rows)])
-        starts = np.cumsum(sizes[places]) - sizes[places]
-        found = np.empty((int(sizes[places].sum()), count), dtype=complex)
-        single = bool((orbitals == 1).all())
-        for place, start in zip(places, starts.tolist(), strict=True):
-            value = self._called(place, parameters)
-            if single:
+        sizes = np.diff([*self._starts, len(self.rows)])[places]
+        starts = np.cumsum(sizes) - sizes
+        found = np.empty((int(sizes.sum()), count), dtype=complex)
+        blocks = self._evaluated(places, parameters)
+        if bool((np.diff(self.offsets) == 1).all()):
+            for start, value in zip(starts.tolist(), blocks, strict=True):
                 found[start] = value.reshape(-1) if isinstance(value, np.ndarray) else value
-                continue
+            hops = starts[sizes == 2]
+            found[hops + 1] = found[hops].conj()
+            return found.T
+        orbitals = np.diff(self.offsets)
+        for place, start, value in zip(places, starts.tolist(), blocks, strict=True):
             i, j = self._pairs[place]
             block = np.broadcast_to(value, (count, orbitals[i], orbitals[j]))
             end = start + block[0].size
             found[start:end] = block.reshape(count, -1).T
             if i != j:
                 found[end : 2 * end - start] = block.conj().swapaxes(1, 2).reshape(count, -1).T
-        if single:
-            hops = starts[sizes[places] == 2]
-            found[hops + 1] = found[hops].conj()
         return found.T
+
+    def _evaluated(self, places: list[int], parameters: dict[str, Any]) -> Iterator[Any]:
+        """Values of some pairs, one after the other; what `_called` says, without looking names up again and again."""
+        sites, caught = self.pump.finalized.sites, dict[Any, list[Any]]()
+        for place in places:
+            value, names = self._values[place]
+            if names is not None:
+                known = caught.get(names)
+                if known is None:
+                    known = caught[names] = [parameters[name] for name in names]
+                i, j = self._pairs[place]
+                value = value(sites[i], *known) if i == j else value(sites[i], sites[j], *known)
+            yield value
 
 
 def _offsets(system: Any) -> Indices:
