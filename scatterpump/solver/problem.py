@@ -12,6 +12,7 @@ from scatterpump.pump import Pump
 from scatterpump.solver import cost
 from scatterpump.solver.blocks import Blocks
 from scatterpump.solver.cells import layer_table, repeated_cells
+from scatterpump.solver.elimination import has_compiler
 from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.solver.layers import Border, Layers, layer, lead_border
 from scatterpump.solver.modes import with_modes
@@ -84,7 +85,7 @@ class Problem:
         if self.single or self.run is None:
             return False
         inside = self.layers.widths[self.run.first :][: self.run.repeats * self.run.length]
-        swept = cost.sweep(inside, is_real=self.blocks.real_below > 0, transmission=False)
+        swept = self._sweep_cost(inside, transmission=False)
         return swept > cost.joins(inside[: self.run.length], self.run.repeats)
 
     def schur_pays(self, *, transmission: bool) -> bool:
@@ -92,10 +93,14 @@ class Problem:
         widths = self.layers.widths
         if self.single:
             return False
-        others = cost.sweep(widths, is_real=self.blocks.real_below > 0, transmission=transmission)
+        others = self._sweep_cost(widths, transmission=transmission)
         if self.run and self.doubling_pays and (self.reaches_beyond(self.run) or not transmission):
             others = cost.joins(widths[self.run.first :][: self.run.length], self.run.repeats)
         return cost.complement(widths) < others
+
+    def _sweep_cost(self, widths: NDArray[np.int64], *, transmission: bool) -> float:
+        is_real = self.blocks.real_below > 0
+        return cost.sweep(widths, is_real=is_real, transmission=transmission, compiled=has_compiler())
 
     def wanted(self, first: int) -> list[Complex]:
         """For the layers from `first` on, which of their unknowns are open outgoing modes, shapes (k, w)."""

@@ -73,6 +73,8 @@ class Point:
         Which solver samples r.
     whole : bool
         True if the audit is wanted, which looks at everything.
+    leak : bool
+        True if a bound on the leak is wanted, which takes as long again as the number.
     bisection : Bisection or None
     """
 
@@ -81,11 +83,12 @@ class Point:
     phases: int = 48
     engine: Engine = "auto"
     whole: bool = False
+    leak: bool = True
     bisection: Bisection | None = field(default=None)
 
     def changed(self, key: str, value: Any) -> Point:
         """Return the same point with one more key changed, to be looked at without an audit."""
-        return replace(self, changes={**self.changes, key: value}, whole=False)
+        return replace(self, changes={**self.changes, key: value}, whole=False, leak=False)
 
     @cached_property
     def pump(self) -> Pump:
@@ -97,7 +100,7 @@ class Point:
         if self.whole:
             return self.verdict.winding
         try:
-            return certify(self.pump)
+            return certify(self.pump, leak=self.leak)
         except SingularReflectionError:
             return None
 

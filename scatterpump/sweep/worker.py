@@ -116,7 +116,16 @@ def maker_of(plan: SweepPlan) -> PumpMaker:
 
 
 def _point(plan: SweepPlan, make: PumpMaker, number: int) -> Point:
-    return Point(make, plan.changes(number), plan.phases, plan.engine, "trustworthy" in plan.keep, plan.bisection)
+    leak = not {"leak", "smallest_reflection"}.isdisjoint(plan.keep)
+    return Point(
+        make,
+        plan.changes(number),
+        phases=plan.phases,
+        engine=plan.engine,
+        whole="trustworthy" in plan.keep,
+        leak=leak,
+        bisection=plan.bisection,
+    )
 
 
 def _folder(plan: SweepPlan) -> str:
