@@ -9,6 +9,7 @@ import click
 
 from scatterpump.cli.audit import audit
 from scatterpump.cli.common import BAD_INPUT
+from scatterpump.cli.draw import draw
 from scatterpump.cli.example import example
 from scatterpump.cli.inspect import inspect
 from scatterpump.cli.verdict import verdict
@@ -38,5 +39,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, audit, inspect, example):
+for command in (verdict, audit, inspect, draw, example):
     main.add_command(command)
