@@ -53,4 +53,6 @@ def draw(device: Path, names: tuple[str, ...], target: str, changes: tuple[str, 
     if found.stopped:
         raise SystemExit(INTERRUPTED)
     if not found.finished:
-        raise InputError("nothing could be drawn", allowed="a device that 'scatterpump audit' passes", where=str(device))
+        raise InputError(
+            "nothing could be drawn", allowed="a device that 'scatterpump audit' passes", where=str(device)
+        )

@@ -19,9 +19,10 @@ def cycle_axis(axis: Any, set_limits: Any) -> None:
     set_limits(0.0, 2 * np.pi)
 
 
-def colour_bar(drawn: Any, ax: Any, label: str) -> Any:
+def colour_bar(drawn: Any, ax: Any, label: str, *, extend: str = "neither") -> Any:
     """Put a colour bar for `drawn` beside `ax`."""
-    bar = ax.figure.colorbar(drawn, ax=ax, pad=0.03, aspect=26)
-    bar.set_label(label)
+    bar = ax.figure.colorbar(drawn, ax=ax, pad=0.02, aspect=24, extend=extend)
+    bar.set_label(label, fontsize=8)
+    bar.ax.tick_params(labelsize=7)
     bar.outline.set_visible(False)
     return bar

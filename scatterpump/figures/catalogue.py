@@ -6,6 +6,8 @@ from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
 from typing import Any
 
+import numpy as np
+
 from scatterpump.errors import InputError, PumpError
 from scatterpump.figures.lengths import leakage_by_length
 from scatterpump.figures.levels import edge_levels
@@ -13,6 +15,7 @@ from scatterpump.figures.maps import local_density, potential
 from scatterpump.figures.parameters import parameter_plane
 from scatterpump.figures.winding import determinant_circle, determinant_phase, eigenphases
 from scatterpump.portrait.album import Album
+from scatterpump.portrait.potential import Potential
 
 __all__ = ["PICTURES", "Collection", "Picture", "collect", "named"]
 
@@ -44,7 +47,7 @@ PICTURES = {
         Picture("phase", "its turns against phi, and the proof", lambda album: album.turning, determinant_phase),
         Picture("levels", "bands and edge levels against phi", lambda album: album.spectrum, edge_levels),
         Picture("density", "local density at the probe's end", lambda album: album.density, local_density),
-        Picture("potential", "on-site energies along the device", lambda album: album.potential, potential),
+        Picture("potential", "on-site energies along the device", lambda album: _moving(album.potential), potential),
         Picture("eigenphases", "arguments of r's eigenvalues", lambda album: album.turning, eigenphases),
         Picture("parameters", "the cycle in the plane of two parameters", lambda album: album.plane, parameter_plane),
         Picture("leakage", "leakage against length", lambda album: album.lengths, leakage_by_length),
@@ -112,3 +115,9 @@ def collect(
 
 def _reason(error: PumpError) -> str:
     return error.problem if isinstance(error, InputError) else str(error)
+
+
+def _moving(potential: Potential) -> Potential:
+    if not np.ptp(potential.energies, axis=0).max(initial=0.0) > 0:
+        raise InputError("no on-site energy changes along the cycle", allowed="another picture")
+    return potential

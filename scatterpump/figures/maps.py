@@ -13,31 +13,28 @@ from scatterpump.portrait.potential import Potential
 
 __all__ = ["local_density", "potential"]
 
-DECADES = 4  # of density that are told apart below the largest
+SHOWN = 0.99  # of all values lie on the scale: one sharp level must not bleach the rest
 
 
 def local_density(density: LocalDensity, ax: Any) -> Any:
     """Draw the density of states at the probe's end over phi and energy; darker means more, blank: no open mode."""
-    from matplotlib.colors import LogNorm
-
-    ax.set_facecolor("white")
     known = np.ma.masked_invalid(density.density)
-    largest = float(known.max()) if known.count() and known.max() > 0 else 1.0
-    faintest = largest / 10**DECADES
+    strong = float(np.quantile(known.compressed(), SHOWN)) if known.count() else 1.0
     drawn = ax.pcolormesh(
         density.phases,
         density.energies,
-        np.ma.maximum(known, faintest),
+        known,
         cmap=strength_map(),
-        norm=LogNorm(faintest, largest),
+        vmin=0.0,
+        vmax=strong,
         shading="nearest",
         rasterized=True,
     )
     ax.axhline(density.fermi_level, color=ACCENT, linewidth=1.1, linestyle="--")
     cycle_axis(ax.xaxis, ax.set_xlim)
     ax.set_ylim(density.energies[0], density.energies[-1])
-    ax.set(ylabel="energy (pump's unit)", title="local density at the probe's end")
-    colour_bar(drawn, ax, "states per unit of energy")
+    ax.set(ylabel="energy (pump's unit)", title="density at the probe's end")
+    colour_bar(drawn, ax, "states per unit of energy", extend="max")
     return ax
 
 
@@ -47,6 +44,6 @@ def potential(potential: Potential, ax: Any) -> Any:
         potential.places, potential.phases, potential.energies, cmap=strength_map(), shading="nearest", rasterized=True
     )
     cycle_axis(ax.yaxis, ax.set_ylim)
-    ax.set(xlabel="x (lattice constants)", title="potential along the device")
-    colour_bar(drawn, ax, "on-site energy (pump's unit)")
+    ax.set(xlabel="x (lattice constants)", title="potential")
+    colour_bar(drawn, ax, "on-site (pump's unit)")
     return ax

@@ -78,7 +78,9 @@ def _charges(charges: list[Any], ax: Any, along: tuple[str, str], other: tuple[s
     for number in sorted(numbers):
         ax.axhline(number, color=ACCENT, linewidth=1.0, linestyle="--", label=f"proven number {number:+d}")
     _scale(ax, sorted({float(getattr(charge, along[0])) for charge in charges}))
-    ax.set(xlabel=f"{along[1]} (pump's unit of energy)", ylabel="charge a cycle (e)", title=f"charge against {along[1]}")
+    ax.set(
+        xlabel=f"{along[1]} (pump's unit of energy)", ylabel="charge a cycle (e)", title=f"charge against {along[1]}"
+    )
     ax.legend(fontsize=7, frameon=False)
     return ax
 

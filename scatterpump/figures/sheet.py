@@ -20,6 +20,6 @@ def draw_sheet(drawings: Sequence[tuple[Picture, Any]], figure: Any, *, height: 
     columns = min(count, 2)
     rows = -(-count // columns)
     figure.set_size_inches(*(SINGLE if count == 1 and height is None else (WIDTH, height or TALL * rows)))
-    figure.set_layout_engine("constrained", w_pad=0.06, h_pad=0.07)
+    figure.set_layout_engine("constrained", w_pad=0.06, h_pad=0.07, wspace=0.02)
     for place, (picture, result) in enumerate(drawings):
         picture.draw(result, figure.add_subplot(rows, columns, place + 1))

@@ -34,7 +34,7 @@ def determinant_circle(turning: Turning, ax: Any) -> Any:
     ax.set_aspect("equal")
     limit = 1.08 * (1 + LIFT)
     ax.set(xlim=(-limit, limit), ylim=(-limit, limit), xticks=(-1, 0, 1), yticks=(-1, 0, 1))
-    ax.set(xlabel="Re det r (1)", ylabel="Im det r (1)", title="det r, lifted off its circle as φ grows")
+    ax.set(xlabel="Re det r (1)", ylabel="Im det r (1)", title="det r, lifted as φ grows")
     bar = colour_bar(dots, ax, "φ (rad)")
     bar.set_ticks(CYCLE_TICKS, labels=["0", "π/2", "π", "3π/2", "2π"])
     return ax
@@ -61,9 +61,10 @@ def determinant_phase(turning: Turning, ax: Any) -> Any:
 def _number(turning: Turning) -> str:
     winding = turning.winding
     if winding.number is None:
-        return f"no proven number: {len(winding.unproven)} intervals of φ are open"
+        return f"not proven, {len(winding.unproven)} stretches open"
     count = len(winding.covering)
-    return f"det r winds {winding.number:+d} times, proven by {count} interval{'s' * (count != 1)}"
+    number = f"{winding.number:+d}" if winding.number else "0"
+    return f"W = {number}, proven by {count} interval{'s' * (count != 1)}"
 
 
 def _mark_crossings(turning: Turning, ax: Any) -> None:

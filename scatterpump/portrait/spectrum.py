@@ -1,14 +1,13 @@
 """Band edges and edge levels against phi.
 
-Edge levels are those of the device closed towards its leads: eigenvalues of H(phi) + Re Sigma, with the leads'
-self-energies taken at the Fermi level.  Where one of them passes the Fermi level is a crossing of the proof, up to what
-leaks; away from it they move as the self-energies of real leads would let them, to first order in the distance.
+Edge levels are those of the driven part closed towards its leads: eigenvalues of H(phi) + Re Sigma, where Sigma holds
+the leads and the still stretches before them, taken at the Fermi level.  A level of the probe's end passes the Fermi
+level just where the proof finds a crossing, up to what leaks; at other energies it is where it were if Sigma stayed.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,15 +16,13 @@ from scatterpump.bulk.cell import BlochCell, bloch_cell
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.errors import NoBulkError
 from scatterpump.pump import Pump
-from scatterpump.solver.hamiltonian import driven_path
+from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.layers import distances
-from scatterpump.solver.modes import with_modes
 
 __all__ = ["Spectrum", "spectrum"]
 
 Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
-Indices = NDArray[np.int64]
 TURN = 2 * np.pi
 PHASES = 121
 MOMENTA = 64
@@ -71,12 +68,15 @@ class Spectrum:
 
 def spectrum(pump: Pump, gap: BulkGap | None = None, *, phases: int = PHASES) -> Spectrum:
     """Sample bands and levels of `pump` at even phases; `gap` is what is known of its gap."""
+    from threadpoolctl import threadpool_limits
+
     points = np.linspace(0.0, TURN, phases)
     try:
         bottom, top = _bands(bloch_cell(pump), points)
     except NoBulkError:
         bottom = top = np.empty((phases, 0))
-    levels, nearness = _levels(pump, points)
+    with threadpool_limits(1):  # many small matrices: threads would only get in each other's way
+        levels, nearness = _levels(fold(pump), pump.fermi_level, points)
     return Spectrum(pump.name, pump.fermi_level, points, bottom, top, levels, nearness, gap)
 
 
@@ -89,50 +89,36 @@ def _bands(cell: BlochCell, phases: Floats) -> tuple[Floats, Floats]:
     return energies.min(axis=1), energies.max(axis=1)
 
 
-def _levels(pump: Pump, phases: Floats) -> tuple[Floats, Floats]:
-    driven, _ = driven_path(pump)
-    shift, seats = _shifts(pump, driven.offsets)
-    near = _near_probe(driven, seats, pump.probe)
-    found = [_closed(driven, elements, shift, pump.fermi_level) for elements in driven.many(phases)]
-    levels = np.array([energies for energies, _ in found])
-    return levels, np.array([near @ np.abs(states) ** 2 for _, states in found])
+def _levels(device: FoldedDevice, level: float, phases: Floats) -> tuple[Floats, Floats]:
+    """Levels (n, l) of the closed device in order, and their shares of weight near the probe."""
+    near = _near_probe(device)
+    found = [_closed(device.matrix(float(phase)), level) for phase in phases]
+    return np.array([energies for energies, _ in found]), np.array([near @ np.abs(x) ** 2 for _, x in found])
 
 
-def _shifts(pump: Pump, offsets: Indices) -> tuple[Any, list[Indices]]:
-    """Re Sigma of all leads at the Fermi level, and the orbitals each lead holds on to."""
-    from scipy.sparse import coo_matrix
-
-    system, size = with_modes(pump), int(offsets[-1])
-    total, seats = coo_matrix((size, size), dtype=complex).tocsr(), []
-    for lead, interface in zip(system.leads, system.lead_interfaces, strict=True):
-        sigma = lead.modes(pump.fermi_level)[1].selfenergy()
-        orbitals = np.concatenate([np.arange(offsets[site], offsets[site + 1]) for site in interface])
-        rows, columns = np.meshgrid(orbitals, orbitals, indexing="ij")
-        values = ((sigma + sigma.conj().T) / 2).ravel()
-        total = total + coo_matrix((values, (rows.ravel(), columns.ravel())), shape=(size, size)).tocsr()
-        seats.append(orbitals)
-    return total, seats
-
-
-def _near_probe(driven: Any, seats: list[Indices], probe: int) -> Floats:
+def _near_probe(device: FoldedDevice) -> Floats:
     """1 for orbitals nearer to the probe than to any other lead, else 0, shape (size,); counted in hops."""
-    hops = [distances(driven.rows, driven.columns, driven.size, seat) for seat in seats]
-    others = [hop for number, hop in enumerate(hops) if number != probe]
-    far = np.min(others, axis=0) if others else np.full(driven.size, hops[probe].max() / 2)
-    return np.where(hops[probe] < far, 1.0, 0.0)
+    seats = np.flatnonzero(np.abs(device.drain).max(axis=1, initial=0.0))
+    far = distances(device.rows, device.columns, device.size, seats)
+    if not seats.size:
+        far = np.full(device.size, device.distance.max(initial=0) / 2)
+    return np.where(device.distance < far, 1.0, 0.0)
 
 
-def _closed(driven: Any, elements: Complex, shift: Any, level: float) -> tuple[Floats, Complex]:
-    """Levels of H + Re Sigma nearest to `level`, in order, and their states."""
+def _closed(band: Complex, level: float) -> tuple[Floats, Complex]:
+    """Levels next to `level` of the Hermitian part of a band of E - H - Sigma, in order, and their states."""
     from scipy.linalg import eigh
-    from scipy.sparse import csr_matrix
+    from scipy.sparse import dia_matrix
     from scipy.sparse.linalg import eigsh
 
-    matrix = csr_matrix((elements, (driven.rows, driven.columns)), shape=shift.shape) + shift
-    if driven.size <= DENSE:
-        energies, states = eigh(matrix.toarray(), driver="evd")
-        return np.asarray(energies), np.asarray(states)
-    start = np.cos(np.arange(driven.size))  # the same start each time: the same figure each time
-    energies, states = eigsh(matrix.tocsc(), k=NEAREST, sigma=level, v0=start)
+    half, size = len(band) // 2, band.shape[1]
+    open_one = dia_matrix((band, np.arange(half, -half - 1, -1)), shape=(size, size)).tocsc()
+    offset = (open_one + open_one.conj().T) / 2
+    if size <= DENSE:
+        dense = -offset.toarray()
+        energies, states = eigh(dense if dense.imag.any() else dense.real, driver="evd")
+        return np.asarray(energies + level), np.asarray(states)
+    start = np.cos(np.arange(size))  # the same start each time: the same figure each time
+    energies, states = eigsh(-offset, k=NEAREST, sigma=0.0, v0=start)
     order = np.argsort(energies)
-    return np.asarray(energies[order]), np.asarray(states[:, order])
+    return np.asarray(energies[order] + level), np.asarray(states[:, order])
