@@ -12,6 +12,7 @@ from scatterpump.cli.common import BAD_INPUT
 from scatterpump.cli.draw import draw
 from scatterpump.cli.example import example
 from scatterpump.cli.inspect import inspect
+from scatterpump.cli.report import report
 from scatterpump.cli.verdict import verdict
 from scatterpump.errors import PumpError
 from scatterpump.version import version
@@ -39,5 +40,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, audit, inspect, draw, example):
+for command in (verdict, audit, inspect, draw, report, example):
     main.add_command(command)
