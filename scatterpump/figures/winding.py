@@ -45,9 +45,12 @@ def _lifted(turning: Turning, phases: Any) -> Any:
 
 
 def determinant_phase(turning: Turning, ax: Any) -> Any:
-    """Draw the turns of det r against phi, the levels that cause them, and the intervals that make up the proof."""
+    """Draw the turns of det r against phi, the levels that cause them, and the intervals that make up the proof.
+
+    Dotted: the samples miss a level that is too narrow for the eye, and go round another number of times than proven.
+    """
     turns = turning.turned / TURN
-    ax.plot(turning.phases, turns, color=INK, linewidth=1.3)
+    ax.plot(turning.phases, turns, color=INK, linewidth=1.3, linestyle="-" if turning.agrees else ":")
     low, high = float(turns.min()), float(turns.max())
     room = max(high - low, 0.1)
     ax.set_ylim(low - 0.28 * room, high + 0.08 * room)
@@ -64,6 +67,8 @@ def _number(turning: Turning) -> str:
         return f"not proven, {len(winding.unproven)} stretches open"
     count = len(winding.covering)
     number = f"{winding.number:+d}" if winding.number else "0"
+    if not turning.agrees:
+        return f"W = {number} is proven; a level too narrow to draw"
     return f"W = {number}, proven by {count} interval{'s' * (count != 1)}"
 
 

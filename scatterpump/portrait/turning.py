@@ -51,6 +51,12 @@ class Turning:
     eigenphases: Floats
     winding: Winding
 
+    @property
+    def agrees(self) -> bool:
+        """False if the samples go round another number of times than is proven: they miss a level too narrow to see."""
+        number = self.winding.number
+        return number is None or round(float(self.turned[-1]) / TURN) == number
+
     def at(self, phases: Floats) -> Floats:
         """Return how far det r has turned at `phases` (radians), between samples along a straight line."""
         return np.asarray(np.interp(phases, self.phases, self.turned))
