@@ -177,9 +177,12 @@ def source_of(device: Path, description: Any, changes: tuple[str, ...], target: 
     files = [device]
     if getattr(description, "file", None):  # code that the device file runs
         files.append(Path(description.file))
-    disorder = getattr(description, "disorder", None)
-    is_random = disorder is not None and any(
-        bool(getattr(disorder, name)) for name in ("onsite", "bonds") if hasattr(disorder, name)
-    )
     command = join(["scatterpump", "report", device.name, *sets, "-o", Path(target).name])
-    return Source(command, tuple(files), disorder.seed if is_random else None)
+    return Source(command, tuple(files), _seed(getattr(description, "disorder", None)))
+
+
+def _seed(disorder: Any) -> int | None:
+    """The seed of a disorder that is there, or None."""
+    if disorder is None or not (disorder.onsite or disorder.bonds):
+        return None
+    return int(disorder.seed)
