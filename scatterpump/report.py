@@ -102,9 +102,7 @@ class Report:
         write_pages(self, require_pdf(path))
 
 
-def make_report(
-    pump: Pump, *, source: Source | None = None, progress: Callable[[float], None] | None = None
-) -> Report:
+def make_report(pump: Pump, *, source: Source | None = None, progress: Callable[[float], None] | None = None) -> Report:
     """Judge `pump` and draw it; an interrupt from the keyboard while it is drawn leaves the pictures finished.
 
     Parameters
