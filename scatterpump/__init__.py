@@ -35,6 +35,7 @@ from scatterpump.errors import (
     SolverError,
 )
 from scatterpump.pump import Continuum, Pump
+from scatterpump.report import Report, make_report
 from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.verdict import Verdict, judge
@@ -64,6 +65,7 @@ __all__ = [
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "Report",
     "Resolved",
     "Sector",
     "SheetLead",
@@ -79,6 +81,7 @@ __all__ = [
     "inspect",
     "judge",
     "load_device",
+    "make_report",
     "reflect",
     "reflect_grid",
     "resolve",

@@ -11,7 +11,11 @@ from scatterpump.errors import InputError
 
 __all__ = ["draw"]
 
-NAMES = "circle, phase, levels, density, potential, eigenphases, parameters, leakage"
+NAMES = ("circle", "phase", "levels", "density", "potential", "eigenphases", "parameters", "leakage")
+
+
+def _completed(context: click.Context, parameter: click.Parameter, incomplete: str) -> list[str]:
+    return [name for name in NAMES if name.startswith(incomplete)]
 
 
 @click.command()
@@ -21,7 +25,8 @@ NAMES = "circle, phase, levels, density, potential, eigenphases, parameters, lea
     "names",
     multiple=True,
     metavar="NAME",
-    help=f"Which picture, may be given several times: {NAMES}. Without it, all that the device has.",
+    shell_complete=_completed,
+    help=f"Which picture, may be given several times: {', '.join(NAMES)}. Without it, all that the device has.",
 )
 @click.option("-o", "target", metavar="FILE", required=True, help="Where to: a file ending in .png, .pdf or .svg.")
 @set_option

@@ -21,7 +21,7 @@ def parameter_plane(plane: ParameterPlane, ax: Any) -> Any:
     if plane.distance.size:
         shades = strength_map().reversed()
         drawn = ax.pcolormesh(
-            plane.x, plane.y, plane.distance, cmap=shades, vmin=0.0, shading="gouraud", rasterized=True
+            plane.x, plane.y, plane.distance, cmap=shades, vmin=0.0, shading="nearest", rasterized=True
         )
         colour_bar(drawn, ax, "nearest band (pump's unit)")
         _hatch_closed(plane, ax)
