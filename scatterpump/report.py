@@ -42,13 +42,13 @@ class Source:
         What makes the report again.
     files : tuple of path
         All files it was read from, the device file first.
-    seed : int or None
-        Of the disorder; None if nothing is random.
+    randomness : str
+        The seed, or that nothing is random, in words.
     """
 
     command: str
     files: tuple[Path, ...] = ()
-    seed: int | None = None
+    randomness: str = "not known: a program built the pump"
 
 
 @dataclass(frozen=True, eq=False)
@@ -153,8 +153,7 @@ def _line(finding: Finding) -> str:
 
 
 def _origin(source: Source) -> list[str]:
-    seed = "nothing is random" if source.seed is None else f"seed {source.seed} of the disorder"
-    lines = [f"to get it again   {source.command}", f"randomness        {seed}"]
+    lines = [f"to get it again   {source.command}", f"randomness        {source.randomness}"]
     lines += [f"versions          {', '.join(_version(name) for name in PACKAGES)}"]
     lines += [f"                  Python {platform.python_version()} on {platform.system()} {platform.machine()}"]
     return lines + [f"{file.name:17.17} sha256 {sha256(file.read_bytes()).hexdigest()}" for file in source.files]
@@ -176,11 +175,12 @@ def source_of(device: Path, description: Any, changes: tuple[str, ...], target: 
     if getattr(description, "file", None):  # code that the device file runs
         files.append(Path(description.file))
     command = join(["scatterpump", "report", device.name, *sets, "-o", Path(target).name])
-    return Source(command, tuple(files), _seed(getattr(description, "disorder", None)))
+    return Source(command, tuple(files), _randomness(description))
 
 
-def _seed(disorder: Any) -> int | None:
-    """The seed of a disorder that is there, or None."""
-    if disorder is None or not (disorder.onsite or disorder.bonds):
-        return None
-    return int(disorder.seed)
+def _randomness(description: Any) -> str:
+    disorder = getattr(description, "disorder", None)
+    if disorder is None:  # the device is built by a program of its own
+        return Source.randomness
+    is_random = disorder.onsite or disorder.bonds
+    return f"seed {disorder.seed} of the disorder" if is_random else "nothing is random"

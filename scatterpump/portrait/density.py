@@ -29,7 +29,7 @@ Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 TURN = 2 * np.pi
-PHASES, ENERGIES = 121, 61
+PHASES, ENERGIES = 121, 49
 END_LAYERS, MOST_UNKNOWNS = 6, 60  # what counts as the probe's end: where an edge level mostly lives
 
 
