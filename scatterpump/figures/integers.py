@@ -46,7 +46,8 @@ def integer_map(data: Any, ax: Any) -> Any:
         bar.set_ticks(values, labels=[f"{value:+d}" if value else "0" for value in values])
     open_ones = np.ma.masked_where(_is_proven(data, integers), np.ones_like(integers))
     if open_ones.count():
-        ax.pcolor(*grid, open_ones, hatch="////", alpha=0.0, edgecolor=INK, linewidth=0.0)
+        clear = ListedColormap(["#00000000"])
+        ax.pcolor(*grid, open_ones, cmap=clear, hatch="////", edgecolor=INK, linewidth=0.0)
     ax.set(xlim=(grid[0][0], grid[0][-1]), ylim=(grid[1][0], grid[1][-1]))
     for axis, (places, label, names) in ((ax.xaxis, x), (ax.yaxis, y)):
         axis.set_label_text(label)

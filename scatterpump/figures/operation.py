@@ -16,6 +16,7 @@ from scatterpump.figures.style import ACCENT, GREY, INK
 __all__ = ["charge_by_frequency", "charge_by_temperature", "plateau_staircase"]
 
 MARKERS = "osD^vPX"
+DECADE, ROOM = 10.0, 0.3
 BEYOND = 0.15  # of the range that is known, where a plateau has no end
 
 
@@ -51,12 +52,12 @@ def plateau_staircase(plateaus: Iterable[Any], ax: Any) -> Any:
 
 def charge_by_frequency(charges: Iterable[Any], ax: Any) -> Any:
     """Draw the charge a cycle against hbar omega, one line for each temperature."""
-    return _charges(list(charges), ax, ("frequency", "ħω"), ("temperature", "k_B T"))
+    return _charges(list(charges), ax, ("frequency", "ħω"), ("temperature", "$k_BT$"))
 
 
 def charge_by_temperature(charges: Iterable[Any], ax: Any) -> Any:
     """Draw the charge a cycle against k_B T, one line for each frequency."""
-    return _charges(list(charges), ax, ("temperature", "k_B T"), ("frequency", "ħω"))
+    return _charges(list(charges), ax, ("temperature", "$k_BT$"), ("frequency", "ħω"))
 
 
 def _charges(charges: list[Any], ax: Any, along: tuple[str, str], other: tuple[str, str]) -> Any:
@@ -88,5 +89,10 @@ def _charges(charges: list[Any], ax: Any, along: tuple[str, str], other: tuple[s
 def _scale(ax: Any, values: list[float]) -> None:
     """Logarithmic over more than a decade, linear about a zero."""
     positive = [value for value in values if value > 0]
-    if len(positive) > 1 and positive[-1] > 10 * positive[0]:
-        ax.set_xscale("symlog" if values[0] <= 0 else "log", **({"linthresh": positive[0]} if values[0] <= 0 else {}))
+    if len(positive) < 2 or positive[-1] <= DECADE * positive[0]:
+        return
+    if values[0] > 0:
+        ax.set_xscale("log")
+        return
+    ax.set_xscale("symlog", linthresh=positive[0])
+    ax.set_xlim(-ROOM * positive[0], positive[-1] * (1 + ROOM))
