@@ -48,10 +48,11 @@ def draw(device: Path, names: tuple[str, ...], target: str, changes: tuple[str, 
     with named(device), progress_bar("drawing") as progress:
         album = Album(load_device(device, changes).pump())
         found = catalogue.collect(album, wanted, progress=progress)
-    for name, reason in found.missing:
-        if names and not found.stopped:
-            raise InputError(f"{name}: {reason}", allowed="another --what", where=str(device))
-        click.echo(f"left out {name}: {reason}", err=True)
+    if names and found.missing and not found.stopped:
+        raise InputError(": ".join(found.missing[0]), allowed="another --what", where=str(device))
+    for reason in dict.fromkeys(reason for _, reason in found.missing):
+        same = ", ".join(name for name, why in found.missing if why == reason)
+        click.echo(f"left out {same}: {reason}", err=True)
     if found.finished:
         save(lambda figure: draw_sheet(found.finished, figure), target)
         click.echo(f"{target}: {', '.join(picture.name for picture, _ in found.finished)}")

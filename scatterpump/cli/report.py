@@ -40,7 +40,9 @@ def report(device: Path, target: str, changes: tuple[str, ...]) -> None:
         source = source_of(device, description, changes, target)
         result = make_report(description.pump(), source=source, progress=progress)
         result.write(target)
-    click.echo(f"{target}: {result.verdict.summary().splitlines()[2]}")
+    (number,) = (line for line in result.verdict.summary().splitlines() if line.startswith("charges a cycle"))
+    click.echo(f"{target}: {number}")
     if result.pictures.stopped:
+        click.echo(f"interrupted; not drawn: {', '.join(name for name, _ in result.pictures.missing)}", err=True)
         raise SystemExit(INTERRUPTED)
     raise SystemExit(QUANTISED if result.verdict.trustworthy else NOT_QUANTISED)

@@ -13,6 +13,7 @@ from scatterpump.portrait.turning import Turning
 __all__ = ["determinant_circle", "determinant_phase", "eigenphases"]
 
 TURN = 2 * np.pi
+MOST_RINGS = 60  # beyond which they hide what they ring
 LIFT = 0.16  # of the radius over a cycle: a second turn does not hide the first
 STRIP = (0.035, 0.075)  # heights of the intervals of the proof, as shares of the axes
 
@@ -28,8 +29,8 @@ def determinant_circle(turning: Turning, ax: Any) -> Any:
     path = _lifted(turning, turning.phases) * turning.modulus
     dots = ax.scatter(path.real, path.imag, c=turning.phases, cmap=cycle_map(), vmin=0, vmax=TURN, s=9, zorder=2)
     middles = np.array([(a + b) / 2 % TURN for a, b in turning.winding.covering])
-    if middles.size:
-        rings = _lifted(turning, middles)
+    if 0 < middles.size <= MOST_RINGS:
+        rings = _lifted(turning, middles) * np.interp(middles, turning.phases, turning.modulus)
         ax.plot(rings.real, rings.imag, "o", markersize=5, markerfacecolor="none", markeredgecolor=INK, zorder=3)
     ax.set_aspect("equal")
     limit = 1.08 * (1 + LIFT)
@@ -95,7 +96,7 @@ def _strip(turning: Turning, ax: Any) -> None:
     lines = [[(a, STRIP[i % 2]), (b, STRIP[i % 2])] for i, (a, b) in enumerate(turning.winding.covering)]
     ax.add_collection(LineCollection(lines, colors=GREY, linewidths=2.2, transform=place), autolim=False)
     for start, end in turning.winding.unproven:
-        ax.axvspan(start, end, facecolor="none", edgecolor=ACCENT, hatch="////", linewidth=0.5)
+        ax.axvspan(start, end, facecolor="none", edgecolor=ACCENT, hatch="////", linewidth=0.0)
 
 
 def eigenphases(turning: Turning, ax: Any) -> Any:
