@@ -50,6 +50,7 @@ from scatterpump.operation.sheet import Sheet, operating_sheet
 from scatterpump.operation.speed import speed_limit
 from scatterpump.operation.tolerance import DisorderTolerance, DriveTolerance, disorder_tolerance, drive_tolerance
 from scatterpump.pump import Continuum, Pump, Units
+from scatterpump.report import Report, make_report
 from scatterpump.solver.reflect import reflect, reflect_grid
 from scatterpump.solver.trace import ReflectionTrace
 from scatterpump.sweep.axis import Axis
@@ -98,6 +99,7 @@ __all__ = [
     "Pump",
     "PumpError",
     "ReflectionTrace",
+    "Report",
     "Resolved",
     "Sector",
     "Sheet",
@@ -128,6 +130,7 @@ __all__ = [
     "judge",
     "load_device",
     "load_plan",
+    "make_report",
     "operating_sheet",
     "plateaus",
     "quantity",

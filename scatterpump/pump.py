@@ -172,6 +172,12 @@ class Pump:
         rest = f" and {len(others)} other lead{'s' if len(others) > 1 else ''}" if others else ""
         return f"from probe to drain{rest}"
 
+    def _repr_html_(self) -> str:
+        """Return a line, for notebooks."""
+        from scatterpump.html import pump_line
+
+        return pump_line(self)
+
     def parameters(self, phase: float) -> dict[str, Any]:
         """Return all parameters of the Hamiltonian at `phase` (radians)."""
         return {**self.constants, **self.cycle.at(phase)}

@@ -80,6 +80,12 @@ class Verdict:
 
         return summarise(self)
 
+    def _repr_html_(self) -> str:
+        """Return the verdict as a table, for notebooks."""
+        from scatterpump.html import verdict_table
+
+        return verdict_table(self)
+
 
 def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Verdict:
     """Reach a verdict on `pump`: winding, gap, Chern number and audit.

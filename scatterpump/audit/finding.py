@@ -120,3 +120,9 @@ class AuditReport:
     def to_dict(self) -> dict[str, Any]:
         """Return plain data: numbers, text, lists and dictionaries; a number that is not finite is None."""
         return dict(plain({"passed": self.passed, **asdict(self)}))
+
+    def _repr_html_(self) -> str:
+        """Return the findings as a table, for notebooks."""
+        from scatterpump.html import audit_table
+
+        return audit_table(self)

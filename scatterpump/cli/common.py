@@ -13,6 +13,7 @@ from scatterpump.errors import InputError, PumpError
 
 __all__ = [
     "BAD_INPUT",
+    "INTERRUPTED",
     "NOT_QUANTISED",
     "QUANTISED",
     "device_argument",
@@ -23,6 +24,7 @@ __all__ = [
 ]
 
 QUANTISED, NOT_QUANTISED, BAD_INPUT = 0, 1, 2
+INTERRUPTED = 130  # as shells say it of Ctrl-C
 
 device_argument = click.argument("device", type=click.Path(path_type=Path))
 set_option = click.option(

@@ -9,9 +9,11 @@ import click
 
 from scatterpump.cli.audit import audit
 from scatterpump.cli.common import BAD_INPUT
+from scatterpump.cli.draw import draw
 from scatterpump.cli.example import example
 from scatterpump.cli.gather import gather
 from scatterpump.cli.inspect import inspect
+from scatterpump.cli.report import report
 from scatterpump.cli.status import status
 from scatterpump.cli.sweep import sweep
 from scatterpump.cli.verdict import verdict
@@ -42,5 +44,5 @@ def main() -> None:
     """
 
 
-for command in (verdict, audit, inspect, window, sweep, status, gather, example):
+for command in (verdict, audit, inspect, window, draw, report, sweep, status, gather, example):
     main.add_command(command)

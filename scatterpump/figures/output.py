@@ -10,7 +10,7 @@ from typing import Any
 from scatterpump.errors import InputError
 from scatterpump.figures.style import STYLE
 
-__all__ = ["FORMATS", "has_display", "save", "show"]
+__all__ = ["FORMATS", "check_ending", "has_display", "save", "show"]
 
 FORMATS = (".png", ".pdf", ".svg")
 WITHOUT_WINDOWS = {"agg", "cairo", "pdf", "pgf", "ps", "svg", "template"}  # what pyplot falls back to
@@ -25,11 +25,7 @@ def save(draw: Draw, path: str | Path) -> None:
     InputError
         If the ending is none of .png, .pdf and .svg, or the file cannot be written.
     """
-    target = Path(path)
-    if target.suffix.lower() not in FORMATS:
-        raise InputError(
-            f"the ending {target.suffix!r} is no format of a drawing", allowed=", ".join(FORMATS), where=str(path)
-        )
+    target = check_ending(path)
     from matplotlib import rc_context
     from matplotlib.figure import Figure
 
@@ -42,6 +38,16 @@ def save(draw: Draw, path: str | Path) -> None:
             raise InputError(
                 f"the drawing cannot be written: {error.strerror}", allowed="a writable place", where=str(path)
             ) from error
+
+
+def check_ending(path: str | Path) -> Path:
+    """Return `path` if its ending names a format, and raise an `InputError` if not: before any long work."""
+    target = Path(path)
+    if target.suffix.lower() not in FORMATS:
+        raise InputError(
+            f"the ending {target.suffix!r} is no format of a drawing", allowed=", ".join(FORMATS), where=str(path)
+        )
+    return target
 
 
 def show(draw: Draw) -> None:

@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from typing import Any
 
-__all__ = ["GREY", "INK", "PALE", "STYLE", "WIDTH", "strength_map"]
+__all__ = ["ACCENT", "GREY", "INK", "PALE", "STYLE", "WIDTH", "cycle_map", "strength_map"]
 
 WIDTH = 7.2  # inches, a text column and a half
 INK, GREY, PALE = "#222222", "#8a8a8a", "#d4d4d4"
+ACCENT = "#c2410c"  # always with dashes or hatches as well, so that grey paper keeps the difference
 STYLE: Any = {
     "font.size": 9,
     "axes.spines.top": False,
@@ -31,3 +32,10 @@ def strength_map() -> Any:
     from matplotlib.colors import ListedColormap
 
     return ListedColormap(colormaps["cividis_r"]([0.12 + 0.88 * i / 255 for i in range(256)]))
+
+
+def cycle_map() -> Any:
+    """Return the colour map of phi from 0 (dark) to 2 pi (pale): where a cycle begins and ends stays visible."""
+    from matplotlib import colormaps
+
+    return colormaps["cividis"]

@@ -91,3 +91,9 @@ class Winding:
     leak: Leak
     exact: bool
     method: Literal["contact", "open reference", "no drain"]
+
+    def _repr_html_(self) -> str:
+        """Return the winding as a table, for notebooks."""
+        from scatterpump.html import winding_table
+
+        return winding_table(self)
