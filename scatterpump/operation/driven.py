@@ -48,6 +48,7 @@ def driven_charge(
     *,
     absolute: float = ABSOLUTE,
     relative: float = RELATIVE,
+    sidebands: int = FIRST_SIDEBANDS,
 ) -> DrivenCharge:
     """Return by how much the charges from each lead differ from `reference` at a finite frequency.
 
@@ -60,8 +61,10 @@ def driven_charge(
         hbar omega and k_B T, as energies.
     absolute, relative : float
         Error to be allowed, and the same as a share of the shift; the larger one counts.
+    sidebands : int
+        How many to begin with.
     """
-    rungs, cut, evaluations = _settled(pump, reference, frequency, temperature, absolute, relative)
+    rungs, cut, evaluations = _settled(pump, reference, frequency, temperature, absolute, relative, sidebands)
     unitarity = [0.0]
 
     def charge_at(energy: float) -> Floats:
@@ -82,12 +85,18 @@ def driven_charge(
 
 
 def _settled(
-    pump: Pump, reference: Floats, frequency: float, temperature: float, absolute: float, relative: float
+    pump: Pump,
+    reference: Floats,
+    frequency: float,
+    temperature: float,
+    absolute: float,
+    relative: float,
+    sidebands: int,
 ) -> tuple[Ladder, float, int]:
     """A ladder at which more rungs change nothing at a few energies, by how much they still do, and ladders solved."""
     energies = pump.fermi_level + np.array([-2 * temperature, 0.3 * frequency, frequency + 2 * temperature])
     drive = drive_of(pump)
-    rungs = drive.ladder(FIRST_SIDEBANDS)
+    rungs = drive.ladder(sidebands)
     found, solved = _charges(rungs, energies, frequency), len(energies)
     while True:
         more = drive.ladder(rungs.sidebands * 3 // 2)

@@ -6,14 +6,14 @@ pass, so panels are made to end there; a charge that is not conserved tells that
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.errors import ClosedProbeError, SingularReflectionError
 from scatterpump.operation.frozen import FrozenCharge, frozen_charge
-from scatterpump.operation.wires import wires
+from scatterpump.operation.wires import seen_from, wires
 from scatterpump.pump import Pump
 from scatterpump.winding.certificate import certify
 from scatterpump.winding.result import Winding
@@ -85,13 +85,13 @@ class SlowCharges:
     slow: SlowCharge
     evaluations: int = 0
 
-    def at(self, energy: float) -> Floats:
-        """Return the charge from each lead at `energy`; all 0 where the probe is closed."""
+    def at(self, energy: float, accuracy: float = AROUND) -> Floats:
+        """Return the charge from each lead at `energy`, within `accuracy`; all 0 where the probe is closed."""
         there = self.pump.at_fermi_level(self.pump.fermi_level + energy)
         similar = None if self.slow.narrow else self.slow.found.edges[::2]
         try:
             found = frozen_charge(
-                there, levels=_levels(there) if self.slow.narrow else (), edges=similar, accuracy=AROUND
+                there, levels=_levels(there) if self.slow.narrow else (), edges=similar, accuracy=accuracy
             )
         except ClosedProbeError:
             return np.zeros_like(self.slow.found.leads)
@@ -111,6 +111,6 @@ def _levels(pump: Pump) -> list[float]:
     found: list[float] = []
     for lead, wire in enumerate(wires(pump)):
         if wire.channels(pump.fermi_level):
-            seen = _certified(replace(pump, system=pump.finalized, bulk=None, probe=lead, drain=None))
+            seen = _certified(seen_from(pump, lead))
             found += [] if seen is None else [crossing.phase for crossing in seen.crossings]
     return found

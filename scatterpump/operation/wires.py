@@ -11,7 +11,7 @@ Springer 2006, citation from memory).  Leads of any other kind are left to kwant
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -19,8 +19,10 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
+from scatterpump.solver.hamiltonian import driven_path
+from scatterpump.solver.modes import with_modes
 
-__all__ = ["Wire", "wires"]
+__all__ = ["Wire", "seen_from", "wires"]
 
 Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
@@ -100,6 +102,16 @@ def wires(pump: Pump) -> list[Wire]:
         _wire(lead, sites, offsets, parameters)
         for lead, sites in zip(system.leads, system.lead_interfaces, strict=True)
     ]
+
+
+def seen_from(pump: Pump, lead: int) -> Pump:
+    """Return the same pump with `lead`, which is open, as its probe, and the old probe as its drain."""
+    if lead == pump.probe:
+        return pump
+    driven_path(pump), with_modes(pump)
+    other = replace(pump, system=pump.finalized, bulk=None, probe=lead, drain=pump.probe)
+    other.remembered.update({name: pump.remembered[name] for name in ("path", "modes")})  # from wherever it is seen
+    return other
 
 
 def _wire(lead: Any, sites: Any, offsets: NDArray[np.int64], parameters: dict[str, Any]) -> Wire:
