@@ -1,7 +1,7 @@
 """W^+ A^-1 W of a banded matrix A and a few columns W, without A^-1 W (arrays only).
 
-It is the corner that is left of [[A, W], [-W^+, 0]] when A is eliminated.  A band of half-width b falls into blocks of b
-unknowns, each coupled to its neighbours alone, which are eliminated one after the other by dense pivoted
+It is the corner that is left of [[A, W], [-W^+, 0]] when A is eliminated.  A band of half-width b falls into blocks
+of b unknowns, each coupled to its neighbours alone, which are eliminated one after the other by dense pivoted
 factorisations: matrices times matrices, that stay in the processor's cache, where a banded solver reads its whole
 factor anew for every column.  Columns join when their first row is met.
 """
@@ -38,23 +38,25 @@ def corner(matrix: Any, columns: Any) -> Complex:
     dense, first = _columns(columns, width, len(band))
     order = np.argsort(first, kind="stable")
     found = np.zeros((len(order),) * 2, dtype=complex)
-    pivot, active = band[0, :, 1], 0
-    right = np.zeros((width, 0), dtype=complex)  # rows of W at this block, less what earlier ones took off
-    below = np.zeros((0, width), dtype=complex)  # the same of W^+
-    for block, (before, after) in enumerate(zip(band[:, :, 0], band[:, :, 2], strict=True)):
-        if block:
-            solved = np.linalg.solve(pivot, np.hstack([ahead, right]))
-            pivot = band[block, :, 1] - before @ solved[:, :width]
-            found[:active, :active] -= below @ solved[:, width:]
-            right, below = -before @ solved[:, width:], -below @ solved[:, :width]
-        count = int((first <= block).sum())
-        own = dense[block][:, order[:count]]
-        right, below = _grown(right, own), _grown(below.T, own.conj()).T
-        ahead, active = after, count
-    found[:active, :active] -= below @ np.linalg.solve(pivot, right)
+    pivot, right, below = _begun(band, dense, order, first)
+    for block in range(1, len(band)):
+        solved = np.linalg.solve(pivot, np.hstack([band[block - 1, :, 2], right]))
+        before, active = band[block, :, 0], right.shape[1]
+        pivot = band[block, :, 1] - before @ solved[:, :width]
+        found[:active, :active] += below @ solved[:, width:]
+        own = dense[block][:, order[: int((first <= block).sum())]]
+        right = _grown(-before @ solved[:, width:], own)
+        below = _grown(-(below @ solved[:, :width]).T, own.conj()).T
+    found[: len(below), : len(below)] += below @ np.linalg.solve(pivot, right)
     result = np.empty_like(found)
-    result[np.ix_(order, order)] = -found
+    result[np.ix_(order, order)] = found
     return result
+
+
+def _begun(band: Complex, dense: Complex, order: Indices, first: Indices) -> tuple[Complex, Complex, Complex]:
+    """The first block: its part of A, of the columns that it meets, and of their adjoints."""
+    own = dense[0][:, order[: int((first == 0).sum())]]
+    return band[0, :, 1], own, own.conj().T
 
 
 def _grown(carried: Complex, own: Complex) -> Complex:

@@ -11,12 +11,13 @@ from scatterpump.operation.floquet import MOST_SIDEBANDS, Ladder, drive_of
 from scatterpump.operation.thermal import Levels, average, edges, weight
 from scatterpump.pump import Pump
 
-__all__ = ["DrivenCharge", "driven_charge"]
+__all__ = ["FIRST_SIDEBANDS", "DrivenCharge", "driven_charge"]
 
 Floats = NDArray[np.float64]
 ABSOLUTE = 1e-9
 RELATIVE = 1e-2  # of the shift
 FIRST_SIDEBANDS = 8
+PANELS = 600
 MOST_UNKNOWNS = 30_000  # orbitals times rungs: some seconds for each energy
 
 
@@ -49,6 +50,7 @@ def driven_charge(
     absolute: float = ABSOLUTE,
     relative: float = RELATIVE,
     sidebands: int = FIRST_SIDEBANDS,
+    panels: int = PANELS,
 ) -> DrivenCharge:
     """Return by how much the charges from each lead differ from `reference` at a finite frequency.
 
@@ -63,6 +65,8 @@ def driven_charge(
         Error to be allowed, and the same as a share of the shift; the larger one counts.
     sidebands : int
         How many to begin with.
+    panels : int
+        Most panels of four energies to measure.
     """
     rungs, cut, evaluations = _settled(pump, reference, frequency, temperature, absolute, relative, sidebands)
     unitarity = [0.0]
@@ -79,6 +83,7 @@ def driven_charge(
         edges(temperature, frequency),
         absolute=np.full(len(reference), absolute),
         relative=relative,
+        budget=panels,
     )
     error = float(found.errors.max()) + cut + max(unitarity)
     return DrivenCharge(found.shift[0], error, rungs.sidebands, evaluations + len(levels.known))

@@ -21,7 +21,7 @@ from scatterpump.winding.result import Winding
 
 __all__ = ["temperature_limit"]
 
-SHARE = 0.02  # of the average, or of the allowed deviation: accuracy of what is compared with it
+SHARE = 0.05  # of the average, or of the allowed deviation: accuracy of what is compared with it
 SEARCHED = 2.0 ** np.arange(-2.0, 1.25, 0.25)  # temperatures, in units of the estimate
 BEYOND = 10.0  # how far past the window's edge to average, in the same unit: 2 % of the hottest tail are left out
 FIRST = 1e-3  # of the estimated scale: where the search for the window's edge begins
@@ -106,7 +106,7 @@ def _shift(levels: Levels, temperature: float, error: float, around: Floats) -> 
         absolute=np.full(len(levels.reference), SHARE * error),
         relative=SHARE,
     )
-    return found.shift[0]
+    return np.asarray(found.shift[0])
 
 
 def _limit(

@@ -93,6 +93,9 @@ class SlowCharges:
             found = frozen_charge(
                 there, levels=_levels(there) if self.slow.narrow else (), edges=similar, accuracy=accuracy
             )
+            if abs(found.leads.sum()) > LOST and not self.slow.narrow:  # a level was passed by
+                self.evaluations += found.evaluations
+                found = frozen_charge(there, levels=_levels(there), accuracy=accuracy)
         except ClosedProbeError:
             return np.zeros_like(self.slow.found.leads)
         self.evaluations += found.evaluations
