@@ -17,7 +17,7 @@ Floats = NDArray[np.float64]
 ABSOLUTE = 1e-9
 RELATIVE = 1e-2  # of the shift
 FIRST_SIDEBANDS = 8
-PANELS = 600
+PANELS = 48  # of four energies; in a long device averages over many levels end here, and the error says so
 MOST_UNKNOWNS = 30_000  # orbitals times rungs: some seconds for each energy
 
 
