@@ -113,9 +113,14 @@ def test_energies_in_their_units() -> None:
 
 def test_command_from_device_file_to_sheet(tmp_path: Path) -> None:
     out = tmp_path / "sheet.json"
-    result = call("window", CONVEYOR, "--set", "length=480 nm", "--samples", 0, "--json", out)
+    result = call("window", CONVEYOR, "--set", "length=480 nm", "--samples", 0, "--hertz", 1e8, "--json", out)
     assert result.exit_code == 0, result.output
     found = json.loads(out.read_text())
+    lines = {line["label"]: line for line in (*found["limits"], *found["output"])}
+    assert lines["charge at rest"]["values"]["charge"] == pytest.approx(1, abs=1e-6)
+    # e times 100 MHz: BIPM, The International System of Units, 9th ed. (2019) (citation from memory)
+    assert lines["current"]["values"]["ampere"] == pytest.approx(16.02176634e-12, rel=1e-6)
+    assert lines["temperature"]["how"] == lines["speed"]["how"] == "estimated"
     assert "meV" in result.stdout and "nm" in result.stdout
     assert found["verdict"]["winding"]["number"] == found["verdict"]["chern"] == 1
     # a well holds one level more in each window: D. J. Thouless, Phys. Rev. B 27, 6083 (1983)

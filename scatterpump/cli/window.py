@@ -22,6 +22,8 @@ __all__ = ["window"]
     help="Range of Fermi levels to find plateaus in; without it, the level's own and its neighbours.",
 )
 @click.option("--samples", type=click.IntRange(0, 1000), default=3, show_default=True, help="Samples of disorder.")
+@click.option("--hertz", type=float, help="Cycles a second; then the sheet tells the current.")
+@click.option("--compute", is_flag=True, help="Compute temperature, speed and current, not estimate them: minutes.")
 @click.option(
     "--json", "json_file", metavar="FILE", help="Also write the sheet as JSON; '-' prints it instead of the table."
 )
@@ -31,6 +33,8 @@ def window(
     error: float,
     between: tuple[float, float] | None,
     samples: int,
+    hertz: float | None,
+    compute: bool,
     json_file: str | None,
     changes: tuple[str, ...],
 ) -> None:
@@ -45,7 +49,13 @@ def window(
 
     with named(device), progress_bar("looking at each limit") as progress:
         sheet = operating_sheet(
-            load_device(device, changes), error=error, between=between, samples=samples, progress=progress
+            load_device(device, changes),
+            error=error,
+            between=between,
+            samples=samples,
+            hertz=hertz,
+            compute=compute,
+            progress=progress,
         )
     if json_file == "-":
         click.echo(sheet.to_json())

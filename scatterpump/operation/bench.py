@@ -31,6 +31,10 @@ class Bench:
         Samples of disorder to try.
     between : (low, high) or None
         Range of Fermi levels in which to look for plateaus.
+    hertz : float or None
+        Cycles a second, for the current.
+    compute : bool
+        Whether to compute what else is estimated from the gap.
     """
 
     device: Any
@@ -39,6 +43,8 @@ class Bench:
     error: float
     samples: int
     between: tuple[float, float] | None
+    hertz: float | None = None
+    compute: bool = False
 
     @property
     def measure(self) -> Measure:

@@ -11,12 +11,13 @@ from scatterpump.operation.floquet import MOST_SIDEBANDS, Ladder, drive_of
 from scatterpump.operation.thermal import Levels, average, edges, weight
 from scatterpump.pump import Pump
 
-__all__ = ["DrivenCharge", "driven_charge"]
+__all__ = ["FIRST_SIDEBANDS", "DrivenCharge", "driven_charge"]
 
 Floats = NDArray[np.float64]
 ABSOLUTE = 1e-9
 RELATIVE = 1e-2  # of the shift
 FIRST_SIDEBANDS = 8
+PANELS = 48  # of four energies; in a long device averages over many levels end here, and the error says so
 MOST_UNKNOWNS = 30_000  # orbitals times rungs: some seconds for each energy
 
 
@@ -48,6 +49,8 @@ def driven_charge(
     *,
     absolute: float = ABSOLUTE,
     relative: float = RELATIVE,
+    sidebands: int = FIRST_SIDEBANDS,
+    panels: int = PANELS,
 ) -> DrivenCharge:
     """Return by how much the charges from each lead differ from `reference` at a finite frequency.
 
@@ -60,8 +63,12 @@ def driven_charge(
         hbar omega and k_B T, as energies.
     absolute, relative : float
         Error to be allowed, and the same as a share of the shift; the larger one counts.
+    sidebands : int
+        How many to begin with.
+    panels : int
+        Most panels of four energies to measure.
     """
-    rungs, cut, evaluations = _settled(pump, reference, frequency, temperature, absolute, relative)
+    rungs, cut, evaluations = _settled(pump, reference, frequency, temperature, absolute, relative, sidebands)
     unitarity = [0.0]
 
     def charge_at(energy: float) -> Floats:
@@ -76,18 +83,25 @@ def driven_charge(
         edges(temperature, frequency),
         absolute=np.full(len(reference), absolute),
         relative=relative,
+        budget=panels,
     )
     error = float(found.errors.max()) + cut + max(unitarity)
     return DrivenCharge(found.shift[0], error, rungs.sidebands, evaluations + len(levels.known))
 
 
 def _settled(
-    pump: Pump, reference: Floats, frequency: float, temperature: float, absolute: float, relative: float
+    pump: Pump,
+    reference: Floats,
+    frequency: float,
+    temperature: float,
+    absolute: float,
+    relative: float,
+    sidebands: int,
 ) -> tuple[Ladder, float, int]:
     """A ladder at which more rungs change nothing at a few energies, by how much they still do, and ladders solved."""
     energies = pump.fermi_level + np.array([-2 * temperature, 0.3 * frequency, frequency + 2 * temperature])
     drive = drive_of(pump)
-    rungs = drive.ladder(FIRST_SIDEBANDS)
+    rungs = drive.ladder(sidebands)
     found, solved = _charges(rungs, energies, frequency), len(energies)
     while True:
         more = drive.ladder(rungs.sidebands * 3 // 2)

@@ -26,6 +26,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.operation.corner import corner
 from scatterpump.operation.wires import Wire, wires
 from scatterpump.pump import Pump
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
@@ -80,11 +81,13 @@ class Ladder:
 
     def charge(self, energy: float, frequency: float) -> LadderCharge:
         """Solve the ladder whose rung 0 lies at `energy`, with rungs `frequency` (hbar omega) apart."""
+        from scipy.sparse import diags
+
         rungs: Indices = np.arange(-self.sidebands, self.sidebands)
         energies: Floats = np.asarray(energy + frequency * rungs, dtype=float)
         folded, widths, owner, rung = self._leads(energies)
-        solved = _solve(self.drive, np.tile(energies, self.size), folded, widths)
-        passed = np.abs(1j * (widths.conj().T @ solved) - np.eye(widths.shape[1])) ** 2
+        matrix = diags(np.tile(energies, self.size)) - self.drive - folded
+        passed = np.abs(1j * corner(matrix, widths) - np.eye(widths.shape[1])) ** 2
         unitarity = np.abs(passed.sum(axis=0) - 1).max(initial=0.0)
         return LadderCharge(crossing_charge(passed, owner, rungs[rung] >= 0, len(self.leads)), float(unitarity))
 
@@ -169,22 +172,6 @@ def crossing_charge(passed: Floats, owner: Indices, upper: NDArray[np.bool_], le
     fallen = passed[:, upper].sum(axis=1) * ~upper
     risen = passed[:, ~upper].sum(axis=1) * upper
     return np.asarray(np.bincount(owner, weights=fallen - risen, minlength=leads))
-
-
-def _solve(drive: Any, energies: Floats, folded: Any, widths: Any) -> Complex:
-    """(E - H - Sigma)^-1 W, by a pivoted factorisation of the band (LAPACK's gbsv)."""
-    from scipy.linalg import solve_banded
-    from scipy.sparse import diags
-
-    matrix = (diags(energies) - drive - folded).tocoo()
-    away = matrix.row - matrix.col
-    reach = int(np.abs(away).max(initial=0))
-    band = np.zeros((2 * reach + 1, len(energies)), dtype=complex)
-    band[reach + away, matrix.col] = matrix.data
-    found = solve_banded(
-        (reach, reach), band, widths.toarray(), overwrite_ab=True, overwrite_b=True, check_finite=False
-    )
-    return np.asarray(found, dtype=complex)
 
 
 def _narrow_band(driven: DrivenHamiltonian) -> Indices:

@@ -23,9 +23,10 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import ClosedProbeError
 from scatterpump.operation.panels import differentiation, integrate, lobatto
-from scatterpump.operation.wires import wires
+from scatterpump.operation.wires import seen_from, wires
 from scatterpump.pump import Pump
-from scatterpump.solver.reflect import reflect
+from scatterpump.solver.layered import solve_prepared
+from scatterpump.solver.problem import prepare
 from scatterpump.solver.trace import ReflectionTrace
 
 __all__ = ["FrozenCharge", "densities", "frozen_charge"]
@@ -183,7 +184,7 @@ class _Frozen:
             raise ClosedProbeError(pump.fermi_level, pump.probe)
         self.leads = [lead for lead, count in enumerate(channels) if count]
         self.probe = self.leads.index(pump.probe) if leak else None
-        self.views = [pump.seen_from(lead) for lead in self.leads]
+        self.views = [prepare(seen_from(pump, lead)) for lead in self.leads]
         self.evaluations = 0
 
     def measure(self, starts: Floats, ends: Floats) -> Floats:
@@ -201,7 +202,7 @@ class _Frozen:
         """S_ab at each of `phases`, from lead b into lead a."""
         columns = []
         for b, view in enumerate(self.views):
-            trace = reflect(view, phases)
+            trace = solve_prepared(view, phases, transmission=True)
             self.evaluations += len(phases)
             columns.append((b, trace))
         channels = [trace.channels for _, trace in columns]

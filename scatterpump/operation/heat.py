@@ -1,7 +1,6 @@
 """How warm a pump may be: the temperature at which the averaged charge goes wrong.
 
-The slow charge is found once at the energies that matter for a whole range of temperatures; an average at any of them
-is then a sum.
+The slow charge is found once at the energies that matter for a whole range of temperatures; averages share it.
 """
 
 from __future__ import annotations
@@ -15,15 +14,16 @@ from scatterpump.errors import InputError
 from scatterpump.operation.limit import Limit, why_not
 from scatterpump.operation.slow import SlowCharge, SlowCharges, slow_charge
 from scatterpump.operation.speed import level_scale
-from scatterpump.operation.thermal import Levels, average, edges, weight
+from scatterpump.operation.thermal import Floats, Levels, average, weight
 from scatterpump.operation.units import kelvin
 from scatterpump.pump import Pump
 from scatterpump.winding.result import Winding
 
 __all__ = ["temperature_limit"]
 
-SHARE = 0.02  # of the average, or of the allowed deviation: accuracy of what is compared with it
+SHARE = 0.05  # of the average, or of the allowed deviation: accuracy of what is compared with it
 SEARCHED = 2.0 ** np.arange(-2.0, 1.25, 0.25)  # temperatures, in units of the estimate
+BEYOND = 10.0  # how far past the window's edge to average, in the same unit: 2 % of the hottest tail are left out
 FIRST = 1e-3  # of the estimated scale: where the search for the window's edge begins
 STEPS = 22  # of half an octave: up to the scale itself
 HALF = 0.5  # of a charge: where the window is taken to end
@@ -57,7 +57,9 @@ def temperature_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | Non
         levels = Levels(charges.at, slow.found.leads)
         distance = _distance(pump) or _window(pump, levels)
         estimate = distance / log(1 / error)
-        value = _warmest(pump, slow, levels, error, estimate)
+        far = distance + BEYOND * estimate
+        around = np.array([-far, -distance, 0.0, distance, far])
+        value = _warmest(levels, pump.probe, slow.found.leak, error, estimate, around)
         reason = "no such temperature was met" if value is None else f"states {distance:.3g} from the Fermi level"
         return _limit(pump, value, slow, error, estimate, charges.evaluations, reason)
 
@@ -78,25 +80,33 @@ def _window(pump: Pump, levels: Levels) -> float:
     return scale
 
 
-def _warmest(pump: Pump, slow: SlowCharge, levels: Levels, error: float, estimate: float) -> float | None:
-    """Average at a range of temperatures at once, and find where between two of them the deviation passes `error`."""
-    temperatures = estimate * SEARCHED
+def _warmest(levels: Levels, probe: int, leak: float, error: float, estimate: float, around: Floats) -> float | None:
+    """Warm the leads step by step, and find where between two temperatures the deviation passes `error`.
+
+    Panels begin at the same energies for all temperatures, so that averages share what they are taken over.
+    """
+    cold, before = 0.0, 0.0
+    for temperature in estimate * SEARCHED:
+        off = abs(leak + _shift(levels, temperature, error, around)[probe])
+        if off > error:
+            if cold == 0:
+                return 0.0
+            share = log(error / before) / log(off / before)  # log |deviation| is straight in 1/T
+            return float(1 / (1 / cold + share * (1 / temperature - 1 / cold)))
+        cold, before = temperature, off
+    return None
+
+
+def _shift(levels: Levels, temperature: float, error: float, around: Floats) -> Floats:
+    """What a temperature adds to the charge from each lead."""
     found = average(
         levels,
-        lambda energies: np.array([weight(energies, temperature, 0.0) for temperature in temperatures]),
-        edges(temperatures[-1], 0.0),
+        lambda energies: weight(energies, temperature, 0.0)[None],
+        around,
         absolute=np.full(len(levels.reference), SHARE * error),
         relative=SHARE,
     )
-    off = np.abs(slow.found.leak + found.shift[:, pump.probe])
-    bad = np.flatnonzero(off > error)
-    if not bad.size:
-        return None
-    if bad[0] == 0:
-        return 0.0
-    cold, warm = temperatures[bad[0] - 1], temperatures[bad[0]]
-    share = log(error / off[bad[0] - 1]) / log(off[bad[0]] / off[bad[0] - 1])  # log |deviation| is straight in 1/T
-    return float(1 / (1 / cold + share * (1 / warm - 1 / cold)))
+    return np.asarray(found.shift[0])
 
 
 def _limit(

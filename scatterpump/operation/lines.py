@@ -6,39 +6,15 @@ A function takes the `Bench` and returns a `Line`, or None where its question ha
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
-from typing import Any, Literal
+from typing import Any
 
+from scatterpump.operation import warmth
 from scatterpump.operation.bench import Bench
 from scatterpump.operation.length import Resizable, shortest_device
+from scatterpump.operation.line import How, Line
 from scatterpump.operation.tolerance import Reach, disorder_tolerance, drive_tolerance
 
 __all__ = ["LIMITS", "OUTPUT", "How", "Line"]
-
-How = Literal["proven", "computed", "estimated"]
-
-
-@dataclass(frozen=True)
-class Line:
-    """One answer.
-
-    Attributes
-    ----------
-    label : str
-        What it is about.
-    how : "proven", "computed" or "estimated"
-        Proven: by a bound that holds for every phi.  Computed: found numerically.  Estimated: from samples,
-        or by a formula for its size.
-    text : str
-        The answer as a person reads it.
-    values : dict
-        The same as data; energies in the pump's unit.
-    """
-
-    label: str
-    how: How
-    text: str
-    values: dict[str, Any] = field(default_factory=dict)
 
 
 def fermi_level(bench: Bench) -> Line | None:
@@ -133,5 +109,13 @@ def _reach(reach: Reach) -> dict[str, Any]:
 
 
 Answer = Line | tuple[Line, ...] | None
-LIMITS: tuple[Callable[[Bench], Answer], ...] = (fermi_level, potential, disorder, drive, length)
-OUTPUT: tuple[Callable[[Bench], Answer], ...] = (integer, leak)
+LIMITS: tuple[Callable[[Bench], Answer], ...] = (
+    fermi_level,
+    potential,
+    disorder,
+    drive,
+    length,
+    warmth.temperature,
+    warmth.speed,
+)
+OUTPUT: tuple[Callable[[Bench], Answer], ...] = (integer, leak, warmth.at_rest, warmth.delivered_current)

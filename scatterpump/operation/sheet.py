@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 from collections.abc import Callable, Iterable
 from dataclasses import asdict, dataclass
+from math import isfinite
 from textwrap import wrap
 from typing import Any
 
@@ -108,6 +109,8 @@ def operating_sheet(
     error: float = ERROR,
     between: tuple[float, float] | None = None,
     samples: int = SAMPLES,
+    hertz: float | None = None,
+    compute: bool = False,
     progress: Callable[[float], None] | None = None,
 ) -> Sheet:
     """Answer what a laboratory asks about a device.
@@ -122,6 +125,11 @@ def operating_sheet(
         Range of Fermi levels for the plateaus; by default the one at the Fermi level and its neighbours.
     samples : int
         Samples of disorder to try.
+    hertz : float, optional
+        Cycles a second; then the sheet tells the current.
+    compute : bool
+        Compute the limits of temperature and speed, and the current at its frequency, rather than estimate them from
+        the gap and the charge at rest: some minutes for a long device.
     progress : callable, optional
         Called with the share of the work that is done, 0 to 1.
 
@@ -136,13 +144,15 @@ def operating_sheet(
     """
     if not 0 < error < 0.5:
         raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
+    if hertz is not None and not (isfinite(hertz) and hertz > 0):
+        raise InputError(f"hertz is {hertz}", allowed="a positive number of cycles a second")
     require_range(between)
     from threadpoolctl import threadpool_limits
 
     tell = progress or (lambda share: None)
     with threadpool_limits(1):  # many small problems: threads would only get in each other's way
         pump = device.pump()
-        bench = Bench(device, pump, judge(pump), error, samples, between)
+        bench = Bench(device, pump, judge(pump), error, samples, between, hertz, compute)
         parts: list[list[Line]] = []
         count = len(LIMITS) + len(OUTPUT) + 2
         for done, ask in enumerate((*LIMITS, *OUTPUT), 1):

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import ClosedProbeError, SingularReflectionError
 from scatterpump.operation.frozen import FrozenCharge, frozen_charge
-from scatterpump.operation.wires import wires
+from scatterpump.operation.wires import seen_from, wires
 from scatterpump.pump import Pump
 from scatterpump.winding.certificate import certify
 from scatterpump.winding.result import Winding
@@ -85,14 +85,17 @@ class SlowCharges:
     slow: SlowCharge
     evaluations: int = 0
 
-    def at(self, energy: float) -> Floats:
-        """Return the charge from each lead at `energy`; all 0 where the probe is closed."""
+    def at(self, energy: float, accuracy: float = AROUND) -> Floats:
+        """Return the charge from each lead at `energy`, within `accuracy`; all 0 where the probe is closed."""
         there = self.pump.at_fermi_level(self.pump.fermi_level + energy)
         similar = None if self.slow.narrow else self.slow.found.edges[::2]
         try:
             found = frozen_charge(
-                there, levels=_levels(there) if self.slow.narrow else (), edges=similar, accuracy=AROUND
+                there, levels=_levels(there) if self.slow.narrow else (), edges=similar, accuracy=accuracy
             )
+            if abs(found.leads.sum()) > LOST and not self.slow.narrow:  # a level was passed by
+                self.evaluations += found.evaluations
+                found = frozen_charge(there, levels=_levels(there), accuracy=accuracy)
         except ClosedProbeError:
             return np.zeros_like(self.slow.found.leads)
         self.evaluations += found.evaluations
@@ -111,6 +114,6 @@ def _levels(pump: Pump) -> list[float]:
     found: list[float] = []
     for lead, wire in enumerate(wires(pump)):
         if wire.channels(pump.fermi_level):
-            seen = _certified(pump.seen_from(lead))
+            seen = _certified(seen_from(pump, lead))
             found += [] if seen is None else [crossing.phase for crossing in seen.crossings]
     return found

@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 
 from scatterpump.bulk.gap import bulk_gap
 from scatterpump.errors import InputError
-from scatterpump.operation.driven import driven_charge
+from scatterpump.operation.driven import FIRST_SIDEBANDS, driven_charge
 from scatterpump.operation.limit import Limit, why_not
 from scatterpump.operation.slow import SlowCharge, slow_charge
 from scatterpump.operation.units import hertz
@@ -32,10 +32,14 @@ from scatterpump.winding.result import Winding
 __all__ = ["adiabatic_frequency", "landau_zener", "level_scale", "speed_limit", "sweep_rate"]
 
 Entries = NDArray[np.complex128]
-SHARE = 0.05  # of the allowed deviation: accuracy of what is compared with it
+SHARE = 0.2  # of the allowed deviation: accuracy of what is compared with it, a few per cent of the frequency
+PANELS = 8  # of energies at most for one frequency: levels of a long device are too many to be resolved one by one
 STEPS = 30  # halvings or doublings of the frequency before it is given up
-BELOW = 2  # halvings by which the limit is looked at from below
-FINE = 0.03  # relative accuracy of the limit
+SAFE = log(0.1)  # how far below the allowed deviation a frequency is taken to be safe
+FINE = 0.05  # relative accuracy of the limit
+INSIDE = 0.1  # share of a bracket by which it shrinks at least
+APART = 0.5  # logarithms of frequencies between which a slope is not all scatter
+FEWER = 2 / 3  # of the sidebands that were needed last, to begin with at the next frequency
 TINY = 1e-300
 
 
@@ -89,8 +93,9 @@ def speed_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | None = No
 
     Notes
     -----
-    The frequency is halved until the deviation is small enough there and for two more halvings, and then found by
-    bisection.  A deviation that exceeds `error` only in a narrow range further below is not seen.
+    The frequency is halved until the deviation is a tenth of what is allowed, and then found by secants; a deviation
+    that exceeds `error` only in a narrow range further below is not seen.  Of a long device's many levels only an
+    average is taken, at a few energies; the reason says how well the limit is known then.
     """
     if not 0 < error < 0.5:
         raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
@@ -105,47 +110,78 @@ def speed_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | None = No
         deviations = _Deviations(pump, slow, error)
         bracket = _bracketed(deviations, estimate or sweep_rate(pump) / 2)
         value = _between(deviations, *bracket) if bracket else None
-        reason = "non-adiabatic transitions" if bracket else "no such frequency was met"
+        reason = f"non-adiabatic transitions; known to {deviations.unsure:.0%}" if bracket else "no such frequency met"
         return _limit(pump, value, slow, error, estimate, deviations.evaluations, reason)
 
 
 class _Deviations:
-    """Deviations from the integer at one frequency after another."""
+    """Deviations from the integer at one frequency after another, and how well a limit found from them is known."""
 
     def __init__(self, pump: Pump, slow: SlowCharge, error: float) -> None:
         self.pump, self.slow, self.error, self.evaluations = pump, slow, error, 0
+        self.sidebands, self.unsure = FIRST_SIDEBANDS, FINE
+        self.known: dict[float, float] = {}
 
     def excess(self, logarithm: float) -> float:
         """Return log(|deviation| / error), negative where the pump is good enough, at the log of a frequency."""
-        reference, share = self.slow.found.leads, SHARE * self.error
-        driven = driven_charge(self.pump, reference, exp(logarithm), absolute=share, relative=SHARE)
+        if logarithm not in self.known:
+            self.known[logarithm] = self._measured(exp(logarithm))
+        return self.known[logarithm]
+
+    def _measured(self, frequency: float) -> float:
+        driven = driven_charge(
+            self.pump,
+            self.slow.found.leads,
+            frequency,
+            absolute=SHARE * self.error,
+            relative=SHARE,
+            sidebands=max(FIRST_SIDEBANDS, int(FEWER * self.sidebands)),
+            panels=PANELS,
+        )
+        self.sidebands = driven.sidebands
         self.evaluations += driven.evaluations
-        off = self.slow.found.leak + float(driven.shift[self.pump.probe])
-        return log(max(abs(off), TINY) / self.error)
+        off = max(abs(self.slow.found.leak + float(driven.shift[self.pump.probe])), TINY)
+        found = log(off / self.error)
+        if abs(found) < 1:  # near the limit
+            self.unsure = FINE + min(driven.error / off, 1.0) / self._steepness(log(frequency), found)
+        return found
+
+    def _steepness(self, logarithm: float, found: float) -> float:
+        """d log |deviation| / d log frequency, from others that are not too near; the square at least."""
+        slopes = [(found - other) / (logarithm - at) for at, other in self.known.items() if abs(logarithm - at) > APART]
+        return max([2.0, *slopes])
 
 
 def _bracketed(deviations: _Deviations, start: float) -> tuple[float, float] | None:
-    """Logs of a frequency that is good enough, as are the next ones below it, and of twice it, which is not."""
+    """Logs of a frequency that is safe, and of one above it that is too high."""
     bad = log(start)
-    steps = 0
+    good, steps = None, 0
     while deviations.excess(bad) <= 0:
-        bad, steps = bad + log(2), steps + 1
+        good, bad, steps = bad, bad + log(2), steps + 1
         if steps > STEPS:
             return None
-    good, streak = bad, 0
+    if good is not None:
+        return good, bad
+    good = bad
     for _ in range(STEPS):
         good -= log(2)
         if deviations.excess(good) > 0:
-            bad, streak = good, 0
-        elif (streak := streak + 1) > BELOW:
-            return bad - log(2), bad
+            bad = good
+        elif deviations.excess(good) <= SAFE:
+            return good, bad
     return None
 
 
 def _between(deviations: _Deviations, good: float, bad: float) -> float:
-    from scipy.optimize import brentq
-
-    return exp(float(brentq(deviations.excess, good, bad, xtol=FINE)))
+    """The frequency at which the deviation is what is allowed: log |deviation| is nearly straight between the two."""
+    while bad - good > FINE:
+        low, high = deviations.excess(good), deviations.excess(bad)
+        share = min(max(low / (low - high), INSIDE), 1 - INSIDE)
+        place = good + share * (bad - good)
+        if abs(found := deviations.excess(place)) <= SHARE:
+            return exp(place)
+        good, bad = (place, bad) if found < 0 else (good, place)
+    return exp(good)
 
 
 def _limit(

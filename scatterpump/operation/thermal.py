@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 
 from scatterpump.operation.panels import gauss, integrate
 
-__all__ = ["Average", "ChargeAt", "Levels", "average", "edges", "weight"]
+__all__ = ["Average", "ChargeAt", "Floats", "Levels", "average", "edges", "weight"]
 
 Floats = NDArray[np.float64]
 ChargeAt = Callable[[float], Floats]

@@ -19,8 +19,10 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
+from scatterpump.solver.hamiltonian import driven_path
+from scatterpump.solver.modes import with_modes
 
-__all__ = ["Wire", "wires"]
+__all__ = ["Wire", "seen_from", "wires"]
 
 Complex = NDArray[np.complex128]
 Floats = NDArray[np.float64]
@@ -100,6 +102,16 @@ def wires(pump: Pump) -> list[Wire]:
         _wire(lead, sites, offsets, parameters)
         for lead, sites in zip(system.leads, system.lead_interfaces, strict=True)
     ]
+
+
+def seen_from(pump: Pump, lead: int) -> Pump:
+    """Return the same pump with `lead`, which is open, as its probe; its path and modes are found once for all leads."""
+    if lead == pump.probe:
+        return pump
+    driven_path(pump), with_modes(pump)
+    other = pump.seen_from(lead)
+    other.remembered["modes"] = pump.remembered["modes"]
+    return other
 
 
 def _wire(lead: Any, sites: Any, offsets: NDArray[np.int64], parameters: dict[str, Any]) -> Wire:
