@@ -101,6 +101,8 @@ def _estimated(
         return None
     found = si(bench.pump, value)
     text = f"about {_both(label, value, found, bench)} ({energy}) for {bench.error:.0e} e, from the gap alone"
+    if label == "speed":
+        text = f"not beyond {text}, after Landau and Zener; what is computed may lie far below it"
     return Line(label, "estimated", text, {"value": value, "si": found})
 
 
