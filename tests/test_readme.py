@@ -1,7 +1,8 @@
 """What the README says is what happens: its commands run, its Python runs, its output is the output.
 
 Every fenced block says what it is by its language: `python` is run in a folder with the examples, lines of `sh` that
-start with `scatterpump` are run one after the other in an empty one, `toml` is a device or a plan; `text` is shown only.
+start with `scatterpump` are run one after the other in an empty one, `toml` is a device or a plan; `text` is shown
+only.
 """
 
 from __future__ import annotations

@@ -105,7 +105,7 @@ def wires(pump: Pump) -> list[Wire]:
 
 
 def seen_from(pump: Pump, lead: int) -> Pump:
-    """Return the same pump with `lead`, which is open, as its probe; its path and modes are found once for all leads."""
+    """Return the same pump with `lead`, which is open, as its probe; path and modes are found once for all."""
     if lead == pump.probe:
         return pump
     driven_path(pump), with_modes(pump)
