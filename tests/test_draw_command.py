@@ -8,7 +8,9 @@ from pathlib import Path
 from typing import Any
 
 import matplotlib.image
+import numpy as np
 import pytest
+import xarray
 from click.testing import CliRunner, Result
 
 from scatterpump.cli import main
@@ -139,3 +141,35 @@ def test_report_of_a_pump_built_in_python(device: Path, tmp_path: Path) -> None:
     assert shares[-1] == 1.0
     assert report.listing() == []
     assert "a program built the pump" in "\n".join(report.text())
+
+
+def test_gathered_sweep_is_drawn_as_a_map(tmp_path: Path) -> None:
+    integers = np.array([[0, 1, 1], [0, 1, 2]])
+    data = xarray.Dataset(
+        {"integer": (("fermi_level", "depth"), integers)}, {"fermi_level": [0.0, 1.0], "depth": [1, 2, 3]}
+    )
+    data.to_netcdf(tmp_path / "map.nc", engine="h5netcdf")
+    result = call("draw", tmp_path / "map.nc", "-o", tmp_path / "map.png")
+    # derived
+    assert (result.exit_code, result.output) == (0, f"{tmp_path / 'map.png'}: map\n")
+    assert matplotlib.image.imread(tmp_path / "map.png").std() > 0.05
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["none.nc"], "there is no such file"),
+        (["text.nc"], "no netCDF that can be read"),
+        (["text.nc", "--what", "circle"], "one picture"),
+    ],
+)
+def test_results_that_cannot_be_drawn(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, arguments: list[str], words: str
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    Path("text.nc").write_text("no netCDF")
+    result = call("draw", *arguments, "-o", "x.png")
+    # derived
+    assert result.exit_code == 2
+    assert words in result.stderr
+    assert not Path("x.png").exists()

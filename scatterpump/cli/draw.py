@@ -1,4 +1,4 @@
-"""``scatterpump draw DEVICE``: pictures of one device, each alone or several on a sheet."""
+"""``scatterpump draw DEVICE|RESULT``: pictures of one device on a sheet, or the map of a gathered sweep."""
 
 from __future__ import annotations
 
@@ -33,6 +33,8 @@ def _completed(context: click.Context, parameter: click.Parameter, incomplete: s
 def draw(device: Path, names: tuple[str, ...], target: str, changes: tuple[str, ...]) -> None:
     """Draw the pump described in DEVICE, a TOML file, into FILE. No display is needed.
 
+    A netCDF file (.nc) that 'scatterpump gather' wrote of a sweep over two axes is drawn as the map of its integers.
+
     Ctrl-C leaves the pictures that are finished.
 
     Exit code 0: drawn; 2: bad input; 130: interrupted.
@@ -44,6 +46,9 @@ def draw(device: Path, names: tuple[str, ...], target: str, changes: tuple[str, 
     from scatterpump.portrait.album import Album
 
     check_ending(target)
+    if device.suffix == ".nc":
+        _draw_map(device, target, names or changes)
+        return
     wanted = catalogue.named(names or catalogue.PICTURES)
     with named(device), progress_bar("drawing") as progress:
         album = Album(load_device(device, changes).pump())
@@ -62,3 +67,30 @@ def draw(device: Path, names: tuple[str, ...], target: str, changes: tuple[str, 
         raise InputError(
             "nothing could be drawn", allowed="a device that 'scatterpump audit' passes", where=str(device)
         )
+
+
+def _draw_map(file: Path, target: str, asked: tuple[str, ...]) -> None:
+    """Draw what `gather` wrote."""
+    from scatterpump.figures.integers import integer_map
+    from scatterpump.figures.output import save
+
+    if asked:
+        raise InputError(
+            "a sweep's result has one picture, and no keys", allowed="no --what and no --set", where=str(file)
+        )
+    if not file.is_file():
+        raise InputError("there is no such file", allowed="a file that gather wrote", where=str(file))
+    try:
+        import xarray
+
+        with xarray.open_dataset(file, engine="h5netcdf") as data:
+            save(lambda figure: integer_map(data, figure.subplots()), target)
+    except ImportError as error:
+        raise InputError(
+            f"{error.name or 'xarray'} is not installed", allowed='pip install "scatterpump[store]"', where=str(file)
+        ) from error
+    except (OSError, ValueError) as error:
+        raise InputError(
+            "the file is no netCDF that can be read", allowed="a file that gather wrote", where=str(file)
+        ) from error
+    click.echo(f"{target}: map")
