@@ -13,8 +13,8 @@ from numpy.testing import assert_allclose
 from numpy.typing import NDArray
 
 from scatterpump.cycle import Cycle
+from scatterpump.solver.follow import follow as follow_many
 from scatterpump.solver.path import Path, SampledPath, StraightPath, TrigonometricPath
-from scatterpump.solver.path import follow as follow_many
 
 Entries = NDArray[np.complex128]
 Floats = NDArray[np.float64]

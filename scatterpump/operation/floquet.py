@@ -29,8 +29,7 @@ from numpy.typing import NDArray
 from scatterpump.operation.corner import corner
 from scatterpump.operation.wires import Wire, wires
 from scatterpump.pump import Pump
-from scatterpump.solver.hamiltonian import DrivenHamiltonian
-from scatterpump.solver.path import follow
+from scatterpump.solver.hamiltonian import DrivenHamiltonian, driven_path
 
 __all__ = ["MOST_SIDEBANDS", "Drive", "Ladder", "LadderCharge", "crossing_charge", "drive_of"]
 
@@ -149,8 +148,8 @@ class Drive:
 
 def drive_of(pump: Pump) -> Drive:
     """Find the harmonics of H along the cycle of `pump`."""
-    driven = DrivenHamiltonian(pump)
-    place, path = _narrow_band(driven), follow(driven.many, pump.cycle)
+    driven, path = driven_path(pump)
+    place = _narrow_band(driven)
     values = np.fft.fft(path.many(TURN * np.arange(SAMPLES) / SAMPLES), axis=0) / SAMPLES
     values[np.abs(values) < NEGLIGIBLE * np.abs(values).max(axis=0)] = 0.0
     leads = [replace(wire, orbitals=place[wire.orbitals]) for wire in wires(pump)]

@@ -25,8 +25,7 @@ from scatterpump.operation.limit import Limit, why_not
 from scatterpump.operation.slow import SlowCharge, slow_charge
 from scatterpump.operation.units import hertz
 from scatterpump.pump import Pump
-from scatterpump.solver.hamiltonian import DrivenHamiltonian
-from scatterpump.solver.path import follow
+from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.winding.result import Winding
 
 __all__ = ["adiabatic_frequency", "landau_zener", "level_scale", "speed_limit", "sweep_rate"]
@@ -45,7 +44,7 @@ TINY = 1e-300
 
 def level_scale(pump: Pump) -> float:
     """Return a bound on |H| at phi = 0 by sums over rows: an energy beyond which a device has no levels."""
-    driven = DrivenHamiltonian(pump)
+    driven, _ = driven_path(pump)
     return float(np.bincount(driven.rows, weights=np.abs(driven.at(0.0)), minlength=1).max())
 
 
@@ -64,12 +63,12 @@ def landau_zener(gap: float, rate: float) -> float:
 
 def sweep_rate(pump: Pump) -> float:
     """Return s = 2 max |dH/dphi|, a bound on how fast two levels of the device move apart (|.| by sums over rows)."""
-    driven = DrivenHamiltonian(pump)
+    driven, path = driven_path(pump)
 
     def norm(entries: Entries) -> float:
         return float(np.bincount(driven.rows, weights=np.abs(entries), minlength=1).max())
 
-    return 2 * follow(driven.many, pump.cycle).slopes(norm).largest
+    return 2 * path.slopes(norm).largest
 
 
 def adiabatic_frequency(pump: Pump, error: float = 1e-6) -> float | None:

@@ -18,7 +18,8 @@ from numpy.typing import NDArray
 
 from scatterpump.errors import SolverError
 from scatterpump.pump import Pump
-from scatterpump.solver.path import Path, follow
+from scatterpump.solver.follow import follow
+from scatterpump.solver.path import Path
 
 __all__ = ["DrivenHamiltonian", "driven_path"]
 
