@@ -16,18 +16,15 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from fractions import Fraction
-from typing import TYPE_CHECKING, Any, ClassVar, Literal
+from typing import Any, ClassVar, Literal
 
 import numpy as np
 
 from scatterpump.builder.description import LARGEST, Disorder, SheetLead, require
-from scatterpump.builder.sheet import attach_sheet, noise, ring_bonds
+from scatterpump.builder.sheet import noise, ring_bonds, sheet_pump
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
-
-if TYPE_CHECKING:
-    import kwant
 
 __all__ = ["FluxCylinder"]
 
@@ -102,31 +99,7 @@ class FluxCylinder:
 
     def pump(self) -> Pump:
         """Build the kwant system and return it as a `Pump`: probe lead 0, drain lead 1."""
-        return Pump(
-            self._system(),
-            self.cycle,
-            self.fermi_level,
-            drain=None if isinstance(self.drain, str) else 1,
-            bulk=None if self.period is None else self._bulk(self.period),
-            name=self.name,
-        )
-
-    def _system(self) -> kwant.Builder:
-        import kwant
-
-        lattice, system = kwant.lattice.square(norbs=1), kwant.Builder()
-        self._fill(system, lattice, range(self.sites), range(self.sites - 1), self.disorder)
-        for lead, outside, inside in ((self.probe, -1, 0), (self.drain, self.sites, self.sites - 1)):
-            if not isinstance(lead, str):
-                attach_sheet(system, lattice, lead, outside, inside, self.around, closed=True)
-        return system
-
-    def _bulk(self, period: int) -> kwant.Builder:
-        import kwant
-
-        cell = kwant.Builder(kwant.TranslationalSymmetry((period, 0)))
-        self._fill(cell, kwant.lattice.square(norbs=1), range(period), range(period), Disorder())
-        return cell
+        return sheet_pump(self, self._fill, self.around, closed=True)
 
     def _fill(self, builder: Any, lattice: Any, columns: range, bonds: range, disorder: Disorder) -> None:
         rows = range(self.around)

@@ -1,18 +1,53 @@
-"""What ribbons and cylinders share: leads as wide as they are, and disorder on a square lattice."""
+"""What ribbons and cylinders share: how they become pumps, leads as wide as they are, disorder on a square lattice."""
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.builder.description import SheetLead
+from scatterpump.builder.description import Disorder, SheetLead
+from scatterpump.pump import Pump
 
 if TYPE_CHECKING:
     import kwant
 
-__all__ = ["attach_sheet", "noise", "ring_bonds"]
+    from scatterpump.builder.cylinder import FluxCylinder
+    from scatterpump.builder.ribbon import ModulatedRibbon
+
+__all__ = ["noise", "ring_bonds", "sheet_pump"]
+
+Fill = Callable[[Any, Any, range, range, Disorder], None]
+
+
+def sheet_pump(sheet: FluxCylinder | ModulatedRibbon, fill: Fill, width: int, *, closed: bool) -> Pump:
+    """Build the kwant system of a sheet and return it as a `Pump`: probe lead 0, drain lead 1.
+
+    Parameters
+    ----------
+    sheet : FluxCylinder or ModulatedRibbon
+    fill : callable
+        Puts sites and bonds into a builder: (builder, lattice, columns, bonds along, disorder).
+    width : int
+        Rows.
+    closed : bool
+        Whether the last row is tied to the first.
+    """
+    import kwant
+
+    lattice, system = kwant.lattice.square(norbs=1), kwant.Builder()
+    fill(system, lattice, range(sheet.sites), range(sheet.sites - 1), sheet.disorder)
+    for lead, outside, inside in ((sheet.probe, -1, 0), (sheet.drain, sheet.sites, sheet.sites - 1)):
+        if not isinstance(lead, str):
+            _attach(system, lattice, lead, outside, inside, width, closed=closed)
+    cell = None
+    if sheet.period is not None:
+        cell = kwant.Builder(kwant.TranslationalSymmetry((sheet.period, 0)))
+        fill(cell, kwant.lattice.square(norbs=1), range(sheet.period), range(sheet.period), Disorder())
+    drain = None if isinstance(sheet.drain, str) else 1
+    return Pump(system, sheet.cycle, sheet.fermi_level, drain=drain, bulk=cell, name=sheet.name)
 
 
 def ring_bonds(width: int, *, closed: bool) -> list[tuple[int, int]]:
@@ -21,7 +56,7 @@ def ring_bonds(width: int, *, closed: bool) -> list[tuple[int, int]]:
     return [*bonds, (0, width - 1)] if closed and width > 2 else bonds
 
 
-def attach_sheet(
+def _attach(
     system: kwant.Builder, lattice: Any, lead: SheetLead, outside: int, inside: int, width: int, *, closed: bool
 ) -> None:
     """Attach a lead to a system on a square lattice.

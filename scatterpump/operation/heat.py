@@ -10,8 +10,7 @@ from math import isfinite, log
 import numpy as np
 
 from scatterpump.bulk.gap import bulk_gap
-from scatterpump.errors import InputError
-from scatterpump.operation.limit import Limit, why_not
+from scatterpump.operation.limit import Limit, found_limit, require_error, why_not
 from scatterpump.operation.slow import SlowCharge, SlowCharges, slow_charge
 from scatterpump.operation.speed import level_scale
 from scatterpump.operation.thermal import Floats, Levels, average, weight
@@ -44,8 +43,7 @@ def temperature_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | Non
     -----
     Electrons alone are warm: phonons and charging energies are not part of the theory.
     """
-    if not 0 < error < HALF:
-        raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
+    require_error(error)
     from threadpoolctl import threadpool_limits
 
     with threadpool_limits(1):  # many small problems: threads would only get in each other's way
@@ -112,6 +110,5 @@ def _shift(levels: Levels, temperature: float, error: float, around: Floats) -> 
 def _limit(
     pump: Pump, value: float | None, slow: SlowCharge, error: float, estimate: float | None, work: int, reason: str
 ) -> Limit:
-    leakage = None if slow.number is None else slow.found.leak
     si = None if value is None else kelvin(pump, value)
-    return Limit(value, si, "K", error, leakage, estimate, slow.found.evaluations + work, reason)
+    return found_limit(value, si, "K", slow, error, estimate, work, reason)

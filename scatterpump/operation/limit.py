@@ -4,9 +4,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from scatterpump.errors import InputError
 from scatterpump.operation.slow import SlowCharge
 
-__all__ = ["Limit", "why_not"]
+__all__ = ["Limit", "found_limit", "require_error", "why_not"]
+
+HALF = 0.5  # of a charge: nearer to another integer
 
 
 @dataclass(frozen=True)
@@ -51,3 +54,24 @@ def why_not(slow: SlowCharge, allowed: float) -> str:
     if abs(slow.found.leak) > allowed:
         return "the leak of the cold, slow pump: a longer device or a wider gap leaks less"
     return ""
+
+
+def require_error(error: float) -> None:
+    """Raise an `InputError` unless `error` can be allowed."""
+    if not 0 < error < HALF:
+        raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
+
+
+def found_limit(
+    value: float | None,
+    si: float | None,
+    unit: str,
+    slow: SlowCharge,
+    error: float,
+    estimate: float | None,
+    work: int,
+    reason: str,
+) -> Limit:
+    """Put a limit together: `work` is what was solved beyond the slow charge; other arguments as in `Limit`."""
+    leakage = None if slow.number is None else slow.found.leak
+    return Limit(value, si, unit, error, leakage, estimate, slow.found.evaluations + work, reason)

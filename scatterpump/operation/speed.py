@@ -19,9 +19,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.bulk.gap import bulk_gap
-from scatterpump.errors import InputError
 from scatterpump.operation.driven import FIRST_SIDEBANDS, driven_charge
-from scatterpump.operation.limit import Limit, why_not
+from scatterpump.operation.limit import Limit, found_limit, require_error, why_not
 from scatterpump.operation.slow import SlowCharge, slow_charge
 from scatterpump.operation.units import hertz
 from scatterpump.pump import Pump
@@ -96,8 +95,7 @@ def speed_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | None = No
     that exceeds `error` only in a narrow range further below is not seen.  Of a long device's many levels only an
     average is taken, at a few energies; the reason says how well the limit is known then.
     """
-    if not 0 < error < 0.5:
-        raise InputError(f"error is {error}", allowed="a number between 0 and 1/2")
+    require_error(error)
     from threadpoolctl import threadpool_limits
 
     with threadpool_limits(1):  # many small problems: threads would only get in each other's way
@@ -186,6 +184,5 @@ def _between(deviations: _Deviations, good: float, bad: float) -> float:
 def _limit(
     pump: Pump, value: float | None, slow: SlowCharge, error: float, estimate: float | None, work: int, reason: str
 ) -> Limit:
-    leakage = None if slow.number is None else slow.found.leak
     si = None if value is None else hertz(pump, value)
-    return Limit(value, si, "Hz", error, leakage, estimate, slow.found.evaluations + work, reason)
+    return found_limit(value, si, "Hz", slow, error, estimate, work, reason)
