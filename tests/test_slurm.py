@@ -168,10 +168,11 @@ def munge_options(folder: Path) -> list[str]:
     ]
 
 
-def free_port() -> int:
-    with socket.socket() as listener:
-        listener.bind(("127.0.0.1", 0))
-        return int(listener.getsockname()[1])
+def two_free_ports() -> tuple[int, int]:
+    with socket.socket() as one, socket.socket() as other:  # both held, so that they differ
+        one.bind(("127.0.0.1", 0))
+        other.bind(("127.0.0.1", 0))
+        return int(one.getsockname()[1]), int(other.getsockname()[1])
 
 
 @pytest.fixture(scope="module")
@@ -195,9 +196,8 @@ def configured(folder: Path) -> Cluster:
     (folder / "munge" / "munge.key").write_bytes(os.urandom(128))
     (folder / "munge" / "munge.key").chmod(0o400)
     host = socket.gethostname().partition(".")[0]
-    (folder / "slurm.conf").write_text(
-        CONFIGURATION.format(host=host, folder=folder, first=free_port(), second=free_port())
-    )
+    first, second = two_free_ports()
+    (folder / "slurm.conf").write_text(CONFIGURATION.format(host=host, folder=folder, first=first, second=second))
     return Cluster(folder)
 
 

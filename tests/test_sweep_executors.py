@@ -128,7 +128,8 @@ def test_one_rank_is_refused(plan: Path, tmp_path: Path) -> None:
 def cluster() -> Iterator[Any]:
     from distributed import LocalCluster
 
-    with LocalCluster(n_workers=2, threads_per_worker=1, host="127.0.0.1", dashboard_address=None) as started:
+    # Port 0 is any free one; with None dask takes 8787, which another test or another user may hold.
+    with LocalCluster(n_workers=2, threads_per_worker=1, host="127.0.0.1", dashboard_address="127.0.0.1:0") as started:
         yield started
 
 

@@ -13,17 +13,25 @@ import scatterpump as sp
 
 ONE_THREAD = [f"export {name}=1" for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "SCOTCH_PTHREAD_NUMBER")]
 
+ANY_PORT = ":0"  # for dask's dashboard: its usual port is often taken by somebody else on a login node
+
 
 def start(local: bool, jobs: int, interface: str | None):
     """Return a cluster with one single-threaded process for each job: kwant's solver is not made for threads."""
     if local:
         from distributed import LocalCluster
 
-        return LocalCluster(n_workers=jobs, threads_per_worker=1, host="127.0.0.1", dashboard_address=None)
+        return LocalCluster(n_workers=jobs, threads_per_worker=1, host="127.0.0.1", dashboard_address=ANY_PORT)
     from dask_jobqueue import SLURMCluster
 
     cluster = SLURMCluster(
-        cores=1, processes=1, memory="500MB", walltime="01:00:00", interface=interface, job_script_prologue=ONE_THREAD
+        cores=1,
+        processes=1,
+        memory="500MB",
+        walltime="01:00:00",
+        interface=interface,
+        job_script_prologue=ONE_THREAD,
+        scheduler_options={"dashboard_address": ANY_PORT},
     )
     cluster.scale(jobs=jobs)
     return cluster
