@@ -1,9 +1,11 @@
 """What a sweep costs beside its points: overhead, speed-up, resuming, merging.
 
-    python benchmarks/sweep.py [--json FILE] [--points 200] [--stored 100000]
+    python benchmarks/sweep.py [--json FILE] [--points 400] [--stored 100000]
 
 Each speed-up is the median ratio of paired repeats of the same points in one and in two processes, both of the local
-pool, started and warm before the clock runs.  The overhead is what a run needs for points that cost nothing.
+pool, started and warm before the clock runs, in batches of about 0.3 s as a run hands them out.  Beside it stands what pure
+arithmetic gained from the second process in between: no sweep can exceed it.  The overhead is what a run needs for
+points that cost nothing.
 """
 
 from __future__ import annotations
@@ -13,6 +15,7 @@ import json
 import os
 import tempfile
 import time
+from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor
 from pathlib import Path
 from statistics import median
@@ -28,9 +31,11 @@ from scatterpump.sweep.quantities import QUANTITIES, Column, Quantity
 from scatterpump.sweep.store import Store
 from scatterpump.sweep.worker import Batch, run_batch, run_points
 
-REPEATS = 3
+REPEATS = 5
 PHASES = {"layered": 32, "direct": 8}
-BATCH = 20  # points in each stored batch
+SECONDS = 0.3  # of each batch that is timed
+LEAST_BATCHES = 16  # an odd one out costs two processes little then
+STORED = 20  # points in each stored batch
 GOALS = {"speed-up": 1.8, "resume": 5.0, "gather": 30.0}
 
 QUANTITIES["nothing"] = Quantity("nothing", (Column("nothing", "a number"),), lambda point: (1.0,))
@@ -65,32 +70,33 @@ def overhead(points: int) -> float:
         return (time.perf_counter() - begun) / points
 
 
-def overhead_in_processes(points: int, engine: str) -> float:
+def overhead_in_processes(plan: sp.SweepPlan, points: int, size: int) -> float:
     """Seconds that a point of the map needs more in one process of a pool, handed out and written, than alone."""
-    plan = map_plan(points, engine)
-    alone, pooled = [], []
+    more = []
     here = Here()
     pool = LocalProcesses(1, cloudpickle.dumps(plan))
     run_points(plan, 0, 1)
     pool.submit(run_batch, plan.fingerprint, 0, 1).result()
     for _ in range(REPEATS):
-        begun = time.perf_counter()
-        run_points(plan, 0, points)
-        alone.append(time.perf_counter() - begun)
-        begun = time.perf_counter()
+        alone = seconds(lambda: run_points(plan, 0, points))
         with tempfile.TemporaryDirectory() as folder:
             store = Store.open(folder, plan)
-            work(pool, plan, points, store)
-        pooled.append(time.perf_counter() - begun)
+            more.append(seconds(lambda store=store: work(pool, plan, points, size, store)) - alone)
     pool.close()
     here.close()
-    return (median(pooled) - median(alone)) / points
+    return median(more) / points
 
 
-def work(pool: LocalProcesses, plan: sp.SweepPlan, points: int, store: Store | None = None) -> None:
-    """Work off the plan in batches, as a run does."""
+def seconds(job: Callable[[], Any]) -> float:
+    begun = time.perf_counter()
+    job()
+    return time.perf_counter() - begun
+
+
+def work(pool: LocalProcesses, plan: sp.SweepPlan, points: int, size: int, store: Store | None = None) -> None:
+    """Work off the plan in batches of `size` points, as a run does."""
     futures = [
-        pool.submit(run_batch, plan.fingerprint, start, min(start + BATCH, points)) for start in range(0, points, BATCH)
+        pool.submit(run_batch, plan.fingerprint, start, min(start + size, points)) for start in range(0, points, size)
     ]
     for future in futures:
         batch = future.result()
@@ -98,29 +104,36 @@ def work(pool: LocalProcesses, plan: sp.SweepPlan, points: int, store: Store | N
             store.write(batch)
 
 
-def speed_up(points: int, engine: str) -> dict[str, float]:
+def batch_size(plan: sp.SweepPlan, points: int) -> int:
+    """How many of the points make a batch: `SECONDS` of them, but fewer where that leaves too few batches."""
+    run_points(plan, 0, 2)
+    each = seconds(lambda: run_points(plan, 0, 10)) / 10
+    return max(1, min(round(SECONDS / each), points // LEAST_BATCHES))
+
+
+def speed_up(plan: sp.SweepPlan, points: int, size: int) -> dict[str, Any]:
     """Time the same batches in one and in two processes, one after the other, and that several times."""
-    plan = map_plan(points, engine)
     blob = cloudpickle.dumps(plan)
     pools = {workers: LocalProcesses(workers, blob) for workers in (1, 2)}
     for workers, pool in pools.items():  # every process has worked once before the clock runs
         for future in [pool.submit(run_batch, plan.fingerprint, 0, 1) for _ in range(8 * workers)]:
             future.result()
     times: dict[int, list[float]] = {1: [], 2: []}
+    machine = []
     for _ in range(REPEATS):
         for workers, pool in pools.items():
-            begun = time.perf_counter()
-            work(pool, plan, points)
-            times[workers].append(time.perf_counter() - begun)
+            times[workers].append(seconds(lambda pool=pool: work(pool, plan, points, size)))
+        machine.append(busy_ratio())
     for pool in pools.values():
         pool.close()
     ratios = [one / two for one, two in zip(times[1], times[2], strict=True)]
     return {
+        "batches": -(-points // size),
         "one_process_s": median(times[1]),
         "two_processes_s": median(times[2]),
         "ratio": median(ratios),
-        "best_ratio": max(ratios),
-        "of_machine": busy_ratio(),
+        "ratios": ratios,
+        "of_machine": median(machine),
     }
 
 
@@ -166,7 +179,7 @@ def resume_and_gather(points: int, size: int) -> tuple[float, float, float]:
 def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("--json", type=Path)
-    parser.add_argument("--points", type=int, default=200)
+    parser.add_argument("--points", type=int, default=400)
     parser.add_argument("--stored", type=int, default=100_000)
     options = parser.parse_args()
     driver.SMALL = np.inf  # no processes but those that are timed
@@ -176,16 +189,18 @@ def main() -> None:
     found["empty_point_s"] = overhead(2000)
     print(f"a point that costs nothing, serial, written: {1000 * found['empty_point_s']:.3f} ms")
     for engine in ("layered", "direct"):
-        found[engine] = row = speed_up(options.points, engine)
-        row["overhead_s"] = overhead_in_processes(options.points, engine)
+        plan = map_plan(options.points, engine)
+        size = batch_size(plan, options.points)
+        found[engine] = row = speed_up(plan, options.points, size)
+        row["overhead_s"] = overhead_in_processes(plan, options.points // 4, size)
         alone, more = 1000 * row["one_process_s"] / options.points, 1000 * row["overhead_s"]
         print(
-            f"{engine:<8} {alone:.1f} ms a point, {more:+.2f} ms in a process and written; two processes "
-            f"{row['ratio']:.2f} times faster, best {row['best_ratio']:.2f} (goal {GOALS['speed-up']}; pure arithmetic "
-            f"reaches {row['of_machine']:.2f} now)",
+            f"{engine:<8} {alone:.1f} ms a point, {more:+.2f} ms in a process and written; {row['batches']} batches in "
+            f"two processes {row['ratio']:.2f} times faster, {min(row['ratios']):.2f} to {max(row['ratios']):.2f} "
+            f"(goal {GOALS['speed-up']}; pure arithmetic {row['of_machine']:.2f})",
             flush=True,
         )
-    for size, points in ((BATCH, options.stored), (1, options.stored // 10)):
+    for size, points in ((STORED, options.stored), (1, options.stored // 10)):
         written, resumed, gathered = resume_and_gather(points, size)
         found[f"batches_of_{size}"] = {"write_s": written, "resume_s": resumed, "gather_s": gathered}
         print(
