@@ -3,9 +3,8 @@
     python benchmarks/sweep.py [--json FILE] [--points 400] [--stored 100000]
 
 Each speed-up is the median ratio of paired repeats of the same points in one and in two processes, both of the local
-pool, started and warm before the clock runs, in batches of about 0.3 s as a run hands them out.  Beside it stands what pure
-arithmetic gained from the second process in between: no sweep can exceed it.  The overhead is what a run needs for
-points that cost nothing.
+pool, started and warm before the clock runs, in batches of about 0.3 s as a run hands them out.  Beside it stands what
+pure arithmetic gained from the second process in between.  The overhead is what a run needs for points that cost nothing.
 """
 
 from __future__ import annotations
