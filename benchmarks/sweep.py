@@ -4,7 +4,7 @@
 
 Each speed-up is the median ratio of paired repeats of the same points in one and in two processes, both of the local
 pool, started and warm before the clock runs, in batches of about 0.3 s as a run hands them out.  Beside it stands what
-pure arithmetic gained from the second process in between.  The overhead is what a run needs for points that cost nothing.
+pure arithmetic gained from the second process in between.  The overhead is what points that cost nothing need.
 """
 
 from __future__ import annotations

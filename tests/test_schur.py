@@ -34,9 +34,10 @@ BACKENDS = {
     "mumps": complement.Mumps,
     "public mumps": lambda matrix, symmetric: complement.PublicMumps(matrix),
     "superlu": lambda matrix, symmetric: complement.SuperLU(matrix),
+    "banded": lambda matrix, symmetric: complement.Banded(matrix),
 }
 each_backend = pytest.mark.parametrize(
-    "backend", ["superlu", *(pytest.param(name, marks=needs_mumps) for name in ("mumps", "public mumps"))]
+    "backend", ["superlu", "banded", *(pytest.param(name, marks=needs_mumps) for name in ("mumps", "public mumps"))]
 )
 
 
@@ -132,6 +133,7 @@ def test_superlu_solves_where_pivoting_moves_the_ports(monkeypatch: pytest.Monke
 def test_without_kwants_private_interface(monkeypatch: pytest.MonkeyPatch) -> None:
     problem = prepare(strip(3, 9))
     matrix = sparse(problem, "superlu")._matrix
+    monkeypatch.setattr(complement, "NARROW", 0)
     assert isinstance(complement.complement(matrix, symmetric=True), complement.Mumps)
     monkeypatch.delattr("kwant.linalg._mumps.zmumps")
     assert isinstance(complement.complement(matrix, symmetric=True), complement.PublicMumps)
@@ -142,6 +144,8 @@ def test_without_mumps(monkeypatch: pytest.MonkeyPatch) -> None:
         monkeypatch.setitem(sys.modules, f"kwant.linalg.{name}", None)
         monkeypatch.delattr(kwant.linalg, name, raising=False)
     matrix = sparse(prepare(strip(3, 9)), "superlu")._matrix
+    assert isinstance(complement.complement(matrix, symmetric=True), complement.Banded)
+    monkeypatch.setattr(complement, "NARROW", 0)
     assert isinstance(complement.complement(matrix, symmetric=True), complement.SuperLU)
 
 

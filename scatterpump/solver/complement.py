@@ -1,8 +1,9 @@
 """The Schur complement of a sparse matrix on its last unknowns, for many matrices of one pattern.
 
-Ordering and symbolic analysis are done once.  MUMPS does it all where kwant was built with it, through kwant's private
-interface if that is as expected, else through its public one, which repeats the analysis; without MUMPS it is read
-from the trailing blocks of SuperLU's factors.  MUMPS is by P. R. Amestoy, I. S. Duff, J. Koster, J.-Y. L'Excellent,
+Ordering and symbolic analysis are done once.  Of a long and narrow device the inner unknowns form a narrow band, which
+LAPACK factorises faster than anything that has to be analysed first.  Else MUMPS does it all where kwant was built with
+it, through kwant's private interface if that is as expected, else through its public one, which repeats the analysis;
+without MUMPS it is read from the trailing blocks of SuperLU's factors.  MUMPS is by P. R. Amestoy, I. S. Duff, J. Koster, J.-Y. L'Excellent,
 SIAM J. Matrix Anal. Appl. 23, 15 (2001); SuperLU by J. W. Demmel et al., ibid. 20, 720 (1999) (citations from memory).
 """
 
@@ -14,13 +15,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.solver.augmented import Augmented
+from scatterpump.solver.band import factor, pack
 from scatterpump.solver.dissection import dissected
 
-__all__ = ["Complement", "Mumps", "PublicMumps", "SuperLU", "complement"]
+__all__ = ["Banded", "Complement", "Mumps", "PublicMumps", "SuperLU", "complement"]
 
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 PIVOT = 0.01  # a diagonal element is kept as pivot if it is so large against its column: kwant's choice as well
+NARROW = 48  # half-bandwidth up to which a band is faster than the analysis of the others
 SHORT_OF_MEMORY = (-8, -9)  # what MUMPS says when its estimate was too small
 
 
@@ -39,6 +42,9 @@ class Complement(Protocol):
 
 def complement(matrix: Augmented, *, symmetric: bool) -> Complement:
     """Analyse a pattern with the best of what is installed; `symmetric` if all its matrices equal their transposes."""
+    banded = Banded(matrix)
+    if banded.half <= NARROW:
+        return banded
     try:
         return Mumps(matrix, symmetric=symmetric)
     except Exception:  # private: it may be absent or anything else than what it is today
@@ -47,6 +53,44 @@ def complement(matrix: Augmented, *, symmetric: bool) -> Complement:
         return PublicMumps(matrix)
     except ImportError:
         return SuperLU(matrix)
+
+
+class Banded:
+    """LAPACK's banded factorisation, the inner unknowns ordered once from end to end.
+
+    Attributes
+    ----------
+    half : int
+        Half-bandwidth of the inner unknowns in their order.
+    """
+
+    def __init__(self, matrix: Augmented) -> None:
+        from scipy.sparse import csr_matrix
+        from scipy.sparse.csgraph import reverse_cuthill_mckee
+
+        inner, rows, columns = matrix.size - matrix.ports, matrix.indices, matrix.columns
+        inside = (rows < inner) & (columns < inner)
+        pattern = csr_matrix((np.ones(inside.sum()), (rows[inside], columns[inside])), shape=(inner, inner))
+        rank = np.arange(matrix.size)
+        rank[reverse_cuthill_mckee(pattern, symmetric_mode=True)] = np.arange(inner)
+        self._size, self._inner, self._rows, self._columns = matrix.size, inner, rank[rows], rank[columns]
+        self.half = int(np.abs(self._rows - self._columns)[inside].max(initial=0))
+        self._ends = np.flatnonzero(~inside)
+        self._inside = np.flatnonzero(inside)
+
+    def of(self, values: Complex) -> Complex:
+        """Return the complement."""
+        inner, size = self._inner, self._size
+        rows, columns = self._rows[self._inside], self._columns[self._inside]
+        factors = factor(pack(rows, columns, values[self._inside], inner, self.half))
+        if factors is None:
+            raise np.linalg.LinAlgError("singular to the last digit")
+        rows, columns, values = self._rows[self._ends], self._columns[self._ends], values[self._ends]
+        into, out = (np.zeros((size, size - inner), dtype=complex) for _ in range(2))
+        ahead, down = columns >= inner, rows >= inner
+        into[rows[ahead], columns[ahead] - inner] = values[ahead]
+        out[columns[down], rows[down] - inner] = values[down]
+        return np.asarray(into[inner:] - out[:inner].T @ factors.solve(into[:inner]))
 
 
 class Mumps:

@@ -5,6 +5,7 @@ The phases of modes are arbitrary; only on one and the same set of modes is det 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 from scatterpump.errors import ClosedProbeError, InputError, told
@@ -36,7 +37,7 @@ def _with_modes(pump: Pump) -> Any:
             allowed="leads that stay the same all along the cycle; move the modulated part into the scattering region",
         )
     try:
-        system = pump.finalized.precalculate(pump.fermi_level, params=pump.parameters(0.0), what="modes")
+        system = _precalculated(pump)
     except Exception as cause:  # kwant meets modes without velocity at a band edge, or a user's value function fails
         raise InputError(
             f"the modes of the leads cannot be computed at the Fermi level {pump.fermi_level:g} ({told(cause)})",
@@ -46,6 +47,29 @@ def _with_modes(pump: Pump) -> Any:
     if len(propagating.momenta) == 0:
         raise ClosedProbeError(pump.fermi_level, pump.probe)
     return system
+
+
+def _precalculated(pump: Pump) -> Any:
+    """The system with its leads' modes; leads with the same matrices share one calculation."""
+    parameters = pump.parameters(0.0)
+    first = _first_alike(pump.finalized.leads, parameters)
+    system = pump.finalized.precalculate(pump.fermi_level, params=parameters, leads=sorted(set(first)), what="modes")
+    system.leads = [system.leads[i] for i in first]
+    return system
+
+
+def _first_alike(leads: Sequence[Any], parameters: dict[str, Any]) -> list[int]:
+    """For every lead the first one with the same cell and hopping; a lead with declared symmetries is its own."""
+    known: dict[Any, int] = {}
+    found = []
+    for i, lead in enumerate(leads):
+        matrices = lead.cell_hamiltonian(params=parameters), lead.inter_cell_hopping(params=parameters)
+        symmetry = lead.discrete_symmetry(params=parameters)
+        declared = symmetry.projectors, symmetry.time_reversal, symmetry.particle_hole, symmetry.chiral
+        plain = all(each is None for each in declared)
+        key = tuple((each.shape, each.tobytes()) for each in matrices) if plain else i
+        found.append(known.setdefault(key, i))
+    return found
 
 
 def _require_parameters(pump: Pump) -> None:

@@ -75,7 +75,10 @@ def longest_run(
         None if no two neighbouring cells are equal, or none that hold a counted block.
     """
     scale = max((float(np.abs(block).max(initial=0.0)) for block in (*layers, *hops)), default=0.0)
-    own, ahead = _labels(layers, scale, same), _labels(hops, scale, same)
+    own = _labels(layers, scale, same)
+    if len(np.unique(own)) == len(own):
+        return None
+    ahead = _labels(hops, scale, same)
     best, most = None, 0
     for length in range(1, min(longest_cell, len(own) // 2) + 1):
         for run in _runs(own, ahead, length):
@@ -111,7 +114,7 @@ def _labels(blocks: Sequence[Complex], scale: float, same: float) -> Labels:
         rows = np.array([blocks[n].ravel() for n in members])
         for left in _neighbours(rows, scale, same):
             while left.size:
-                equal = _same(rows[left], rows[left[0]], scale, same)
+                equal = np.array([True]) if left.size == 1 else _same(rows[left], rows[left[0]], scale, same)
                 labels[np.array(members)[left[equal]]] = count
                 left, count = left[~equal], count + 1
     return labels
