@@ -12,7 +12,7 @@ from scatterpump.solver.elimination import Eliminated, eliminate, has_compiler
 Kernel = Literal["numpy", "compiled"]
 System = tuple[list[Any], list[Any], list[Any], list[Any]]
 
-WIDTHS = [[2] * 6, [3, 1, 4, 7, 2, 6], [12, 5, 9, 1, 10], [8] * 4, [11] * 3, [17, 33, 24]]
+WIDTHS = [[2] * 6, [5, 10, 14, 16, 6], [3, 1, 4, 7, 2, 6], [12, 5, 9, 1, 10], [8] * 4, [11] * 3, [17, 33, 24]]
 COUNT = 6  # not a multiple of the lanes
 
 

@@ -20,6 +20,7 @@ from scatterpump.cycle import Cycle
 from scatterpump.errors import ClosedProbeError, InputError
 from scatterpump.pump import Pump
 from scatterpump.solver import direct, layered
+from scatterpump.solver.modes import with_modes
 from scatterpump.solver.reflect import reflect
 
 PHASES = np.linspace(0.1, 6.2, 7)
@@ -188,3 +189,16 @@ def test_recorded_trace_needs_no_harmonics() -> None:
 def test_closed_probe_is_told() -> None:
     with pytest.raises(ClosedProbeError):
         reflect(rice_mele(loop(), cells=5, energy=4.5), PHASES)
+
+
+def test_equal_leads_share_what_kwant_gives_each() -> None:
+    """Modes of a lead follow from its matrices alone, so a second lead with the same ones is not asked again."""
+    pump = strip(3, 9)
+    system = pump.finalized
+    every = system.precalculate(pump.fermi_level, params=pump.parameters(0.0), what="modes")
+    ours = with_modes(pump)
+    assert ours.leads[0] is ours.leads[1]
+    for mine, theirs in zip(ours.leads, every.leads, strict=True):
+        found, expected = mine.modes(pump.fermi_level)[1], theirs.modes(pump.fermi_level)[1]
+        for name in ("vecs", "vecslmbdainv", "sqrt_hop"):
+            np.testing.assert_array_equal(getattr(found, name), getattr(expected, name))

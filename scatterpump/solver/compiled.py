@@ -21,9 +21,10 @@ from scatterpump.solver.simd import (
     larger,
     load,
     minus_product,
-    packed,
+    plus,
     product,
     put,
+    scaled,
     size,
     store,
     tainted,
@@ -37,25 +38,11 @@ SMALL_PIVOT = 1e4  # inverse of a pivot that costs four digits
 
 
 @inner
-def _element(like: Any, entries: Any, e: int, group: Any) -> Any:
-    """Element e of a list for a group of systems, as lanes."""
-    moving, parts, rows = group
-    value, place = entries[3][e], entries[4][e]
-    if place < 0:
-        return constant(like, value.real, value.imag)
-    a, b, c, d = rows[0], rows[1], rows[2], rows[3]
-    re, im = place * parts, place * parts + parts - 1  # where all is real the imaginary parts are not looked at
-    return packed(
-        like,
-        value.real - moving[a, re],
-        value.real - moving[b, re],
-        value.real - moving[c, re],
-        value.real - moving[d, re],
-        value.imag - moving[a, im] * (parts - 1),
-        value.imag - moving[b, im] * (parts - 1),
-        value.imag - moving[c, im] * (parts - 1),
-        value.imag - moving[d, im] * (parts - 1),
-    )
+def _element(entries: Any, e: int, moved: Any) -> Any:
+    """Element e of the list for a group of systems, as lanes; `moved` holds what is taken off those that move."""
+    entry = entries[e]
+    value = constant(moved, entry.real, entry.imag)
+    return value if entry.place < 0 else minus_product(value, constant(moved, 1.0, 0.0), load(moved, entry.place))
 
 
 @inner
@@ -66,73 +53,94 @@ def _clear(a: Any, count: int) -> None:
 
 
 @inner
-def _add_block(a: Any, n: int, w: int, diagonal: Any, group: Any) -> None:
+def _add_block(a: Any, layer: Any, entries: Any, moved: Any) -> None:
     """a += A_nn."""
     minus = constant(a, -1.0, 0.0)
-    for e in range(diagonal[0][n], diagonal[0][n + 1]):
-        at = diagonal[1][e] * w + diagonal[2][e]
-        store(a, at, minus_product(load(a, at), minus, _element(a, diagonal, e, group)))
+    for e in range(layer.diagonal, layer.diagonal_end):
+        at = entries[e].row * layer.width + entries[e].column
+        store(a, at, minus_product(load(a, at), minus, _element(entries, e, moved)))
 
 
 @inner
-def _times_lower(a: Any, height: int, b: Any, n: int, deep: int, w: int, lower: Any, group: Any) -> None:
+def _times_lower(a: Any, height: int, deep: int, b: Any, layer: Any, entries: Any, moved: Any) -> None:
     """b = -a A_n+1,n for a of shape (height, deep)."""
+    w = layer.width
     _clear(b, height * w)
-    for e in range(lower[0][n], lower[0][n + 1]):
-        factor = _element(a, lower, e, group)
-        k, j = lower[1][e], lower[2][e]
+    for e in range(layer.lower, layer.lower_end):
+        factor = _element(entries, e, moved)
+        k, j = entries[e].row, entries[e].column
         for i in range(height):
             store(b, i * w + j, minus_product(load(b, i * w + j), load(a, i * deep + k), factor))
 
 
 @inner
-def _sandwich(
-    inverse: Any, here: Any, n: int, deep: int, w: int, upper: Any, lower: Any, spare: Any, group: Any
-) -> None:
-    """here = -A_n,n+1 D^-1 A_n+1,n, element by element where the couplings pick elements."""
-    start, end = lower[0][n], lower[0][n + 1]
-    if not (upper[5][n] and lower[5][n]):
-        _times_lower(inverse, deep, spare, n, deep, w, lower, group)
-        _clear(here, w * w)
-        for e in range(upper[0][n], upper[0][n + 1]):
-            factor = product(constant(here, -1.0, 0.0), _element(here, upper, e, group))
-            i, k = upper[1][e], upper[2][e]
-            for j in range(w):
-                store(here, i * w + j, minus_product(load(here, i * w + j), factor, load(spare, k * w + j)))
-        return
-    for e in range(start, end):
-        store(spare, e - start, _element(here, lower, e, group))
-    if end - start < w or upper[0][n + 1] - upper[0][n] < w:
-        _clear(here, w * w)
-    for e in range(upper[0][n], upper[0][n + 1]):
-        factor = product(constant(here, -1.0, 0.0), _element(here, upper, e, group))
-        i, k = upper[1][e] * w, upper[2][e] * deep
-        for f in range(start, end):
-            value = product(load(inverse, k + lower[1][f]), load(spare, f - start))
-            store(here, i + lower[2][f], product(factor, value))
+def _sandwich(inverse: Any, deep: int, here: Any, layer: Any, spare: Any, entries: Any, moved: Any) -> None:
+    """here = -A_n,n+1 D^-1 A_n+1,n."""
+    w = layer.width
+    _times_lower(inverse, deep, deep, spare, layer, entries, moved)
+    _clear(here, w * w)
+    for e in range(layer.upper, layer.upper_end):
+        factor = product(constant(here, -1.0, 0.0), _element(entries, e, moved))
+        i, k = entries[e].row, entries[e].column
+        for j in range(w):
+            store(here, i * w + j, minus_product(load(here, i * w + j), factor, load(spare, k * w + j)))
 
 
 @inner
-def _form(here: Any, before: Any, n: int, spare: Any, problem: Any, group: Any) -> None:
-    """here = D_n from before = D_n+1^-1."""
-    widths, diagonal, lower, upper, _ = problem
-    w = widths[n]
-    if n == len(widths) - 1:
+def _picked(inverse: Any, deep: int, here: Any, layer: Any, spare: Any, entries: Any, moved: Any) -> None:
+    """The same, element by element, where every row and every column is coupled to at most one other."""
+    w, start, count = layer.width, layer.lower, layer.lower_end - layer.lower
+    for f in range(count):
+        store(spare, f, _element(entries, start + f, moved))
+    if count < w or layer.upper_end - layer.upper < w:
         _clear(here, w * w)
+    for e in range(layer.upper, layer.upper_end):
+        factor = product(constant(here, -1.0, 0.0), _element(entries, e, moved))
+        i, k = entries[e].row * w, entries[e].column * deep
+        for f in range(count):
+            value = product(load(inverse, k + entries[start + f].row), load(spare, f))
+            store(here, i + entries[start + f].column, product(factor, value))
+
+
+@inner
+def _plain(inverse: Any, deep: int, here: Any, layer: Any, entries: Any) -> None:
+    """The same where the couplings are real and stand still."""
+    w, start, end = layer.width, layer.lower, layer.lower_end
+    if end - start < w or layer.upper_end - layer.upper < w:
+        _clear(here, w * w)
+    for e in range(layer.upper, layer.upper_end):
+        factor, i, k = -entries[e].real, entries[e].row * w, entries[e].column * deep
+        for f in range(start, end):
+            store(here, i + entries[f].column, scaled(load(inverse, k + entries[f].row), factor * entries[f].real))
+
+
+@inner
+def _form(here: Any, before: Any, n: int, spare: Any, layers: Any, entries: Any, moved: Any) -> None:
+    """here = D_n from before = D_n+1^-1."""
+    layer = layers[n]
+    if n == len(layers) - 1:
+        _clear(here, layer.width * layer.width)
+    elif layer.plain:
+        _plain(before, layers[n + 1].width, here, layer, entries)
+    elif layer.picks:
+        _picked(before, layers[n + 1].width, here, layer, spare, entries, moved)
     else:
-        _sandwich(before, here, n, widths[n + 1], w, upper, lower, spare, group)
-    _add_block(here, n, w, diagonal, group)
+        _sandwich(before, layers[n + 1].width, here, layer, spare, entries, moved)
+    _add_block(here, layer, entries, moved)
 
 
 @inner
 def _worst(growth: Any, a: Any, count: int) -> None:
     """Growth, or the largest part of the elements of `a` if that is larger; not a number where they are not finite."""
     most, doubt = load(growth, 0), load(growth, 1)
-    for k in range(count):
-        value = load(a, k)
-        most, doubt = larger(most, size(value)), tainted(doubt, value)
-    store(growth, 0, most)
-    store(growth, 1, doubt)
+    also, twice = most, doubt
+    for k in range(0, count - 1, 2):  # two at a time: each waits for its own predecessor only
+        one, two = load(a, k), load(a, k + 1)
+        most, also = larger(most, size(one)), larger(also, size(two))
+        doubt, twice = tainted(doubt, one), tainted(twice, two)
+    last = load(a, count - 1)
+    store(growth, 0, larger(larger(most, also), size(last)))
+    store(growth, 1, plus(tainted(doubt, last), twice))
 
 
 @inner
@@ -156,55 +164,54 @@ def _is_real_to_rounding(a: Any, count: int) -> bool:
 
 
 @inner
-def _add_wanted(kept: Any, n: int, w: int, wanted: Any, height: int) -> None:
+def _add_wanted(kept: Any, layer: Any, entries: Any, height: int) -> None:
     """T += S_n; among real numbers the imaginary parts have rows of their own, after the real ones."""
     minus = constant(kept, -1.0, 0.0)
-    for e in range(wanted[0][n], wanted[0][n + 1]):
-        at, value = wanted[1][e] * w + wanted[2][e], wanted[3][e]
-        store(kept, at, minus_product(load(kept, at), minus, constant(kept, value.real, value.imag)))
+    for e in range(layer.wanted, layer.wanted_end):
+        entry = entries[e]
+        at = entry.row * layer.width + entry.column
+        store(kept, at, minus_product(load(kept, at), minus, constant(kept, entry.real, entry.imag)))
         if is_real(kept):
-            at += height * w
-            store(kept, at, minus_product(load(kept, at), minus, constant(kept, value.imag, 0.0)))
+            at += height * layer.width
+            store(kept, at, minus_product(load(kept, at), minus, constant(kept, entry.imag, 0.0)))
 
 
 @inner
 def _carry(
-    kept: Any, inverse: Any, spare: Any, n: int, tall: int, height: int, shape: Any, problem: Any, group: Any
+    kept: Any, inverse: Any, spare: Any, deep: int, tall: int, height: int, layer: Any, entries: Any, moved: Any
 ) -> None:
     """T_n = S_n - T_n+1 D_n+1^-1 A_n+1,n in place of T_n+1."""
-    deep, w = shape
     _clear(spare, tall * deep)
-    origin = w - w  # a literal 0 would be compiled apart
+    origin = deep - deep  # a literal 0 would be compiled apart
     subtract_product(spare, origin, deep, kept, origin, deep, inverse, origin, deep, tall, deep, deep)
     for k in range(tall * deep):
         store(spare, k, product(load(spare, k), constant(spare, -1.0, 0.0)))
-    _times_lower(spare, tall, kept, n, deep, w, problem[2], group)
-    _add_wanted(kept, n, w, problem[4], height)
+    _times_lower(spare, tall, deep, kept, layer, entries, moved)
+    _add_wanted(kept, layer, entries, height)
 
 
 @inner
 def _descend(
-    stores: Any, growth: Any, n: int, tall: int, height: int, real_below: int, problem: Any, group: Any
+    stores: Any, growth: Any, n: int, tall: int, height: int, real_below: int, layers: Any, entries: Any, moved: Any
 ) -> Any:
     """Go down from D_n to D_0, or to the first D that is real; return its layer, D, and the inverse it came from.
 
     `stores` are D_n, a place for its successor, T_n and spare lanes.  T has `height` complex rows, kept as `tall` rows.
     """
     here, before, kept, spare = stores
-    widths = problem[0]
     pivots = np.zeros(LANES)
     while n > 0:
-        deep, w = widths[n], widths[n - 1]
+        deep = layers[n].width
         if not is_real(here) and n < real_below and n % LOOK_EVERY == 0 and _is_real_to_rounding(here, deep * deep):
             break
         store(pivots, 0, inverted(here, deep, spare, constant(growth, 0.0, 0.0)))
         if _has_small_pivot(pivots):
-            _form(here, before, n, spare, problem, group)
+            _form(here, before, n, spare, layers, entries, moved)
             inverted_with_pivots(here, deep)
         _worst(growth, here, deep * deep)
         if tall > 0:
-            _carry(kept, here, spare, n - 1, tall, height, (deep, w), problem, group)
-        _form(before, here, n - 1, spare, problem, group)
+            _carry(kept, here, spare, deep, tall, height, layers[n - 1], entries, moved)
+        _form(before, here, n - 1, spare, layers, entries, moved)
         here, before = before, here
         n -= 1
     return n, here, before
@@ -232,18 +239,42 @@ def _take_real(source: Any, count: int, target: Any, shift: int) -> None:
                 put(target, k + shift, lane, value.imag)
 
 
+@inner
+def _take_moving(moving: Any, rows: Any, parts: int, moved: Any) -> None:
+    """What is taken off the moving elements of a group of systems, as lanes."""
+    for k in range(len(moving)):
+        for lane in range(LANES):
+            re, im = moving[k, rows[lane] * parts], moving[k, rows[lane] * parts + parts - 1]
+            put(moved, k, lane, complex(re, im * (parts - 1)))  # where all is real there are no imaginary parts
+
+
+@inner
+def _give(kept: Any, real: Any, count: int, imaginary: int) -> None:
+    """Real lanes back into a store of complex ones; their imaginary parts lie `imaginary` lanes later, or nowhere."""
+    for k in range(count):
+        for lane in range(LANES):
+            put(kept, k, lane, complex(get(real, k, lane), get(real, k + imaginary, lane) if imaginary else 0.0))
+
+
 @njit(cache=True, nogil=True)
 def swept(
-    problem: Any, moving: Any, parts: int, height: int, real_below: int, block: Any, amplitudes: Any, most: Any
+    layers: Any,
+    entries: Any,
+    moving: Any,
+    parts: int,
+    height: int,
+    real_below: int,
+    block: Any,
+    amplitudes: Any,
+    most: Any,
 ) -> None:
     """Eliminate all blocks but the first, and write D_0, T_0 and the growth.
 
     Parameters
     ----------
-    problem : tuple
-        Widths (L ints), then the elements of the diagonal, lower and upper blocks and of S, each a tuple of starts,
-        rows, columns, values, places and picks (see `elements`).
-    moving : (n, parts * elements) float array
+    layers, entries : record arrays
+        The elements of the diagonal, lower and upper blocks and of S, and where they are (`elements.tabled`).
+    moving : (elements, parts * n) float array
         What is taken off the elements that move; complex numbers as two parts.
     height : int
         Rows of T.
@@ -252,36 +283,36 @@ def swept(
     block, amplitudes, most : (n, w, w), (n, height, w) complex and (n,) float arrays
         Results.
     """
-    widths, count = problem[0], len(moving)
-    last, first, widest = len(widths) - 1, widths[0], widths.max()
+    count, last, first = len(most), len(layers) - 1, layers[0].width
+    widest = 0
+    for n in range(last + 1):
+        widest = max(widest, layers[n].width)
     open_stores = _stores(np.complex128, LANES, height, widest)
     real_stores = _stores(np.float64, LANES, 2 * height, widest)
+    moved = np.empty(LANES * len(moving), np.complex128)
+    real_moved = np.empty(len(moved), np.float64)
     growth = np.empty(2 * LANES)
     rows = np.empty(LANES, np.int64)
     for start in range(0, count, LANES):
         for lane in range(LANES):  # the last group is filled up with its last system
             rows[lane] = min(start + lane, count - 1)
             growth[lane], growth[LANES + lane] = 1.0, 0.0
-        group = (moving, parts, rows)
+        _take_moving(moving, rows, parts, moved)
         here, before, kept, spare = open_stores
-        _clear(kept, height * widths[last])
-        _add_wanted(kept, last, widths[last], problem[4], height)
-        _form(here, before, last, spare, problem, group)
-        n, here, before = _descend(open_stores, growth, last, height, height, real_below, problem, group)
+        _clear(kept, height * layers[last].width)
+        _add_wanted(kept, layers[last], entries, height)
+        _form(here, before, last, spare, layers, entries, moved)
+        n, here, before = _descend(open_stores, growth, last, height, height, real_below, layers, entries, moved)
         if n > 0:
-            w = widths[n]
+            w = layers[n].width
+            _take_real(moved, len(moving), real_moved, 0)
             _take_real(here, w * w, real_stores[0], 0)
             if n < last:
-                _take_real(before, widths[n + 1] ** 2, real_stores[1], 0)
+                _take_real(before, layers[n + 1].width ** 2, real_stores[1], 0)
             _take_real(kept, height * w, real_stores[2], height * w)
-            _, real, _ = _descend(real_stores, growth, n, 2 * height, height, real_below, problem, group)
-            for k in range(first * first):
-                for lane in range(LANES):
-                    put(here, k, lane, complex(get(real, k, lane), 0.0))
-            for k in range(height * first):
-                for lane in range(LANES):
-                    value = complex(get(real_stores[2], k, lane), get(real_stores[2], k + height * first, lane))
-                    put(kept, k, lane, value)
+            _, real, _ = _descend(real_stores, growth, n, 2 * height, height, real_below, layers, entries, real_moved)
+            _give(here, real, first * first, 0)
+            _give(kept, real_stores[2], height * first, height * first)
         for lane in range(LANES):
             most[rows[lane]] = growth[lane] + growth[LANES + lane]
             for i in range(first):

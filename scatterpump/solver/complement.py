@@ -3,8 +3,10 @@
 Ordering and symbolic analysis are done once.  Of a long and narrow device the inner unknowns form a narrow band, which
 LAPACK factorises faster than anything that has to be analysed first.  Else MUMPS does it all where kwant was built with
 it, through kwant's private interface if that is as expected, else through its public one, which repeats the analysis;
-without MUMPS it is read from the trailing blocks of SuperLU's factors.  MUMPS is by P. R. Amestoy, I. S. Duff, J. Koster, J.-Y. L'Excellent,
-SIAM J. Matrix Anal. Appl. 23, 15 (2001); SuperLU by J. W. Demmel et al., ibid. 20, 720 (1999) (citations from memory).
+without MUMPS it is read from the trailing blocks of SuperLU's factors.
+
+MUMPS is by P. R. Amestoy, I. S. Duff, J. Koster, J.-Y. L'Excellent, SIAM J. Matrix Anal. Appl. 23, 15 (2001); SuperLU
+by J. W. Demmel et al., ibid. 20, 720 (1999) (citations from memory).
 """
 
 from __future__ import annotations

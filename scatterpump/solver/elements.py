@@ -8,12 +8,19 @@ from typing import Any, NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Elements", "listed", "listed_all"]
+__all__ = ["Elements", "listed", "listed_all", "tabled"]
 
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 NONE = np.zeros(0, dtype=np.int64)
+
+
+ENTRY = np.dtype([("row", "i8"), ("column", "i8"), ("place", "i8"), ("real", "f8"), ("imag", "f8")])
+PARTS = ("diagonal", "lower", "upper", "wanted")
+LAYER = np.dtype(
+    [("width", "i8"), *((name + end, "i8") for name in PARTS for end in ("", "_end")), ("picks", "?"), ("plain", "?")]
+)
 
 
 class Elements(NamedTuple):
@@ -23,21 +30,22 @@ class Elements(NamedTuple):
     ----------
     starts : (blocks + 1,) int array
         Where the elements of each block begin.
-    rows, columns : int arrays
-        Places within the block.
-    values : complex array
-    places : int array
-        Number of the moving element that is taken off, -1 for none.
+    entries : record array
+        For every element its row and column in the block, the number of the moving element that is taken off or -1
+        for none, and its value's real and imaginary part.
     picks : (blocks,) bool array
         Whether the block has at most one element in each line that counts: rows of upper, columns of lower blocks.
     """
 
     starts: Indices
-    rows: Indices
-    columns: Indices
-    values: Complex
-    places: Indices
+    entries: NDArray[Any]
     picks: NDArray[np.bool_]
+
+    @property
+    def varied(self) -> NDArray[np.bool_]:
+        """Whether each block has any element that moves or is not real, shape (blocks,)."""
+        odd = np.flatnonzero((self.entries["place"] >= 0) | (self.entries["imag"] != 0))
+        return np.asarray(np.diff(np.searchsorted(odd, self.starts)) > 0)
 
     def beyond(self, first: int) -> Elements:
         """The blocks from number `first` on."""
@@ -55,7 +63,32 @@ def listed(
         kinds, times = np.unique(key, return_counts=True)
         picks[kinds[times > 1] // (int(lines.max()) + 1)] = False
     starts = np.searchsorted(number[order], np.arange(count + 1))
-    return Elements(starts, rows[order], columns[order], values[order].astype(complex), places[order], picks)
+    entries = np.empty(len(order), dtype=ENTRY)
+    for name, column in zip(ENTRY.names or (), (rows, columns, places, values.real, values.imag), strict=True):
+        entries[name] = column[order]
+    return Elements(starts, entries, picks)
+
+
+def tabled(widths: Indices, parts: Sequence[Elements]) -> tuple[NDArray[Any], NDArray[Any]]:
+    """Put the diagonal, lower, upper and wanted elements of all layers into one list, and where they are into another.
+
+    Returns
+    -------
+    layers : record array
+        For every layer its width, where each part's elements begin and end, whether both couplings pick elements, and
+        whether they are real and stand still as well.
+    entries : record array
+        As in `Elements`.
+    """
+    layers, used = np.zeros(len(widths), dtype=LAYER), 0
+    layers["width"] = widths
+    for name, part in zip(PARTS, parts, strict=True):
+        count = len(part.starts) - 1
+        layers[name][:count], layers[name + "_end"][:count] = used + part.starts[:-1], used + part.starts[1:]
+        used += len(part.entries)
+    layers["picks"][:-1] = parts[1].picks & parts[2].picks
+    layers["plain"][:-1] = layers["picks"][:-1] & ~parts[1].varied & ~parts[2].varied
+    return layers, np.concatenate([part.entries for part in parts])
 
 
 def listed_all(diagonals: Sequence[Sequence[Numbers]], count: int) -> tuple[list[Elements], Numbers]:

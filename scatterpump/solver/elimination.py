@@ -25,7 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.solver.blocks import Stack
-from scatterpump.solver.elements import listed_all
+from scatterpump.solver.elements import listed_all, tabled
 
 __all__ = ["Eliminated", "EliminatedSingle", "backward", "eliminate", "eliminate_single"]
 
@@ -182,14 +182,14 @@ def _eliminated_compiled(
     else:
         elements, moving = listed_all(stacks, len(diagonal[-1]))
     widths = _widths(diagonal)
-    chosen, _ = listed_all([[each[None] for each in wanted or [np.zeros((0, w), dtype=complex) for w in widths]]], 1)
+    chosen, _ = listed_all([[each[None] for each in wanted or ()]], 1)
     count, height = len(moving), len(wanted[0]) if wanted else 0
     parts = 2 if np.iscomplexobj(moving) else 1
+    layers, entries = tabled(widths, [*elements, *chosen])
     block = np.empty((count, widths[0], widths[0]), dtype=complex)
     amplitudes, growth = np.empty((count, height, widths[0]), dtype=complex), np.empty(count)
-    problem = (widths, *map(tuple, elements), tuple(chosen[0]))
-    moving = np.ascontiguousarray(moving).view(np.float64)
-    swept(problem, moving, parts, height, real_below, block, amplitudes, growth)
+    moving = np.ascontiguousarray(moving.T).view(np.float64)
+    swept(layers, entries, moving, parts, height, real_below, block, amplitudes, growth)
     return Eliminated(block, amplitudes, growth)
 
 

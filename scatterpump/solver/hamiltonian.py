@@ -11,6 +11,7 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Iterator
 from functools import cached_property
+from itertools import chain
 from typing import Any
 
 import numpy as np
@@ -67,16 +68,17 @@ class DrivenHamiltonian:
         self.offsets: Indices = _offsets(system) if system.site_ranges else self._built(0.0)[1]
         self._pairs, self._values = _pairs(system), _values(system)
         self.rows, self.columns = _places(self._pairs, self.offsets)
-        self._starts = _starts(self._pairs, self.offsets)
+        self._sizes = _sizes(self._pairs, self.offsets)
+        self._starts = np.cumsum(self._sizes) - self._sizes
         keys = self.rows * self.size + self.columns
         self._order = np.argsort(keys)
         self._keys = keys[self._order]
         driven = set(pump.cycle.names)
         moves = [names is not None and not driven.isdisjoint(names) for _, names in self._values]
-        self._driven = [place for place, moved in enumerate(moves) if moved]
-        self.live = np.flatnonzero(np.repeat(moves, np.diff([*self._starts, len(self.rows)])))
+        self._driven = np.flatnonzero(moves)
+        self.live = np.flatnonzero(np.repeat(moves, self._sizes))
         self._arrays = True
-        self.still = self._undriven(np.flatnonzero(~np.array(moves, dtype=bool)))
+        self.still = self._undriven(np.flatnonzero(np.logical_not(moves)))
 
     @property
     def size(self) -> int:
@@ -141,7 +143,7 @@ class DrivenHamiltonian:
         """Elements of all pairs that the cycle does not touch, in their places among all elements."""
         parameters = self.pump.parameters(0.0)
         try:
-            found = self._walked(places.tolist(), parameters, 1)[0]
+            found = self._walked(places, parameters, 1)[0]
         except Exception:  # whatever is wrong with the value functions, kwant tells it with its place
             return self.at(0.0)
         if not np.isfinite(found).all():
@@ -179,7 +181,7 @@ class DrivenHamiltonian:
     def _spots(self) -> list[int]:
         """For every value function some of the pairs that it is called for: the first, the last, and others between."""
         calls: dict[Any, list[int]] = defaultdict(list)
-        for place in self._driven:
+        for place in self._driven.tolist():
             calls[self._values[place][0]].append(place)
         even = [np.unique(np.linspace(0, len(places) - 1, SPOTS).astype(int)) for places in calls.values()]
         return [places[i] for places, some in zip(calls.values(), even, strict=True) for i in some]
@@ -189,25 +191,27 @@ class DrivenHamiltonian:
         value, names = self._values[place]
         if names is None:
             return value
-        (i, j), sites = self._pairs[place], self.pump.finalized.sites
+        (i, j), sites = self._pairs[place].tolist(), self.pump.finalized.sites
         caught = [parameters[name] for name in names]
         return value(sites[i], *caught) if i == j else value(sites[i], sites[j], *caught)
 
-    def _walked(self, places: list[int], parameters: dict[str, Any], count: int) -> Complex:
+    def _walked(self, places: Indices, parameters: dict[str, Any], count: int) -> Complex:
         """All elements of some pairs at all phases, shape (count, elements), stored element by element."""
-        sizes = np.diff([*self._starts, len(self.rows)])[places]
+        sizes = self._sizes[places]
         starts = np.cumsum(sizes) - sizes
         found = np.empty((int(sizes.sum()), count), dtype=complex)
         blocks = self._evaluated(places, parameters)
-        if bool((np.diff(self.offsets) == 1).all()):
-            for start, value in zip(starts.tolist(), blocks, strict=True):
-                found[start] = value.reshape(-1) if isinstance(value, np.ndarray) else value
+        if self.size == len(self.offsets) - 1:  # one orbital everywhere
+            if count == 1:
+                found[starts] = np.array(list(blocks), dtype=complex).reshape(-1, 1)
+            else:
+                for start, value in zip(starts.tolist(), blocks, strict=True):
+                    found[start] = value.reshape(-1) if isinstance(value, np.ndarray) else value
             hops = starts[sizes == 2]
             found[hops + 1] = found[hops].conj()
             return found.T
         orbitals = np.diff(self.offsets)
-        for place, start, value in zip(places, starts.tolist(), blocks, strict=True):
-            i, j = self._pairs[place]
+        for (i, j), start, value in zip(self._pairs[places].tolist(), starts.tolist(), blocks, strict=True):
             block = np.broadcast_to(value, (count, orbitals[i], orbitals[j]))
             end = start + block[0].size
             found[start:end] = block.reshape(count, -1).T
@@ -215,16 +219,15 @@ class DrivenHamiltonian:
                 found[end : 2 * end - start] = block.conj().swapaxes(1, 2).reshape(count, -1).T
         return found.T
 
-    def _evaluated(self, places: list[int], parameters: dict[str, Any]) -> Iterator[Any]:
+    def _evaluated(self, places: Indices, parameters: dict[str, Any]) -> Iterator[Any]:
         """Values of some pairs, one after the other; what `_called` says, without looking names up again and again."""
         sites, caught = self.pump.finalized.sites, dict[Any, list[Any]]()
-        for place in places:
+        for place, (i, j) in zip(places, self._pairs[places].tolist(), strict=True):
             value, names = self._values[place]
             if names is not None:
                 known = caught.get(names)
                 if known is None:
                     known = caught[names] = [parameters[name] for name in names]
-                i, j = self._pairs[place]
                 value = value(sites[i], *known) if i == j else value(sites[i], sites[j], *known)
             yield value
 
@@ -236,34 +239,31 @@ def _offsets(system: Any) -> Indices:
     return np.asarray(np.concatenate([[0], np.cumsum(count)]), dtype=int)
 
 
-def _starts(pairs: list[tuple[int, int]], offsets: Indices) -> Indices:
-    """Where the block of every pair begins among the elements; a hopping's reverse follows its block."""
-    both, count = np.array(pairs, dtype=np.int64).reshape(-1, 2), np.diff(offsets)
-    sizes = count[both[:, 0]] * count[both[:, 1]] * np.where(both[:, 0] == both[:, 1], 1, 2)
-    return np.asarray(np.cumsum(sizes) - sizes)
+def _sizes(pairs: Indices, offsets: Indices) -> Indices:
+    """Elements of the block of every pair; with a hopping's block counts that of its reverse, which follows it."""
+    count = np.diff(offsets)
+    return np.asarray(count[pairs[:, 0]] * count[pairs[:, 1]] * np.where(pairs[:, 0] == pairs[:, 1], 1, 2))
 
 
-def _pairs(system: Any) -> list[tuple[int, int]]:
-    """Sites as (i, i), then one direction of every hopping."""
+def _pairs(system: Any) -> Indices:
+    """Sites as (i, i), then one direction of every hopping, shape (pairs, 2)."""
     from kwant.builder import Other
 
-    sites = [(i, i) for i in range(system.graph.num_nodes)]
-    return sites + [
-        (int(i), int(j)) for (i, j), (value, _) in zip(system.graph, system.hoppings, strict=True) if value is not Other
-    ]
+    edges = np.fromiter(chain.from_iterable(system.graph), dtype=np.int64).reshape(-1, 2)
+    sites = np.repeat(np.arange(system.graph.num_nodes), 2).reshape(-1, 2)
+    return np.concatenate([sites, edges[[value is not Other for value, _ in system.hoppings]]])
 
 
-def _places(pairs: list[tuple[int, int]], offsets: Indices) -> tuple[Indices, Indices]:
+def _places(pairs: Indices, offsets: Indices) -> tuple[Indices, Indices]:
     """Rows and columns: the block of every pair, row by row, and for hoppings that of its reverse right after."""
-    both = np.array(pairs, dtype=np.int64).reshape(-1, 2)
     count = np.diff(offsets)
     if (count == 1).all():
-        hops = both[both[:, 0] != both[:, 1]]
-        sites = both[: len(both) - len(hops), 0]
+        hops = pairs[pairs[:, 0] != pairs[:, 1]]
+        sites = pairs[: len(pairs) - len(hops), 0]
         turned = np.stack([hops, hops[:, ::-1]], axis=1).reshape(-1, 2)
         return np.concatenate([sites, turned[:, 0]]), np.concatenate([sites, turned[:, 1]])
     rows, columns = [], []
-    for i, j in pairs:
+    for i, j in pairs.tolist():
         a, b = np.arange(offsets[i], offsets[i + 1]), np.arange(offsets[j], offsets[j + 1])
         for one, other in ((a, b),) if i == j else ((a, b), (b, a)):
             rows.append(np.repeat(one, len(other)))

@@ -94,14 +94,16 @@ def fit(sample: Callable[[NDArray[np.float64]], NDArray[Any]]) -> Harmonics | No
     """
     known = np.asarray(sample(np.concatenate([_even(1), CHECKS])), dtype=complex)
     shape, known = known.shape[1:], known.reshape(len(known), -1)
+    real = not known.imag.any()
+    known = known.real if real else known
     varies = (known != known[0]).any(axis=0)
     size = np.abs(known[:, varies]).max(axis=0, initial=0.0)
     largest = np.abs(known[0]).max(initial=size.max(initial=0.0))
     checks, tolerance = known[3:, varies], TOLERANCE * size + ROUNDING * largest + 1e-300
-    values, degree, real = known[:3, varies], 1, not known.imag.any()
+    values, degree = known[:3, varies], 1
     while True:
         found = Harmonics(_coefficients(values, real))
-        if (np.abs(found.at(CHECKS) - checks) <= tolerance).all():
+        if (np.abs(found.values(CHECKS) - checks) <= tolerance).all():
             return _with_constants(found.trimmed(tolerance), known[0], varies, shape)
         degree *= 2
         if degree > HIGHEST:

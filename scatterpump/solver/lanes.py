@@ -31,8 +31,8 @@ from scatterpump.solver.simd import (
 __all__ = ["inner", "inverted", "inverted_with_pivots", "subtract_product"]
 
 inner = njit(no_cpython_wrapper=True, no_cfunc_wrapper=True)  # called by compiled code only: less to compile
-PANEL = 4
-UNDIVIDED = 6  # matrices up to this size are not worth panels
+PANEL = 8
+UNDIVIDED = 16  # matrices up to this size are not worth panels
 
 
 @inner
@@ -116,21 +116,113 @@ def subtract_product(
 
 
 @inner
-def _inverted_undivided(a: Any, ai: int, row: int, w: int, worst: Any) -> Any:
-    """Invert a small matrix in place; return the largest inverse of a pivot, or `worst` if that is larger."""
-    for k in range(w):
-        pivot = reciprocal(load(a, ai + k * row + k))
+def _pivoted(a: Any, first: int, row: int, w: int, k: int, end: int, worst: Any) -> Any:
+    """Make the rows from k to `end` what Gauss-Jordan makes of them, with their own pivots, in place.
+
+    Returns the largest inverse of a pivot, or `worst` if that is larger.
+    """
+    for p in range(k, end):
+        top = first + p * row
+        pivot = reciprocal(load(a, top + p))
         worst = larger(worst, size(pivot))
-        store(a, ai + k * row + k, constant(a, 1.0, 0.0))
+        store(a, top + p, constant(a, 1.0, 0.0))
         for j in range(w):
-            store(a, ai + k * row + j, product(load(a, ai + k * row + j), pivot))
-        for i in range(w):
+            store(a, top + j, product(load(a, top + j), pivot))
+        for i in range(k, end):
+            if i != p:
+                _less_one(a, first + i * row, top, p, w)
+    return worst
+
+
+@inner
+def _less_one(a: Any, here: int, top: int, k: int, w: int) -> None:
+    """Take the pivot row k, which begins at `top`, off the row that begins at `here`."""
+    factor = load(a, here + k)
+    store(a, here + k, constant(a, 0.0, 0.0))
+    for j in range(w):
+        store(a, here + j, minus_product(load(a, here + j), factor, load(a, top + j)))
+
+
+@inner
+def _less_few(a: Any, here: int, top: int, row: int, k: int, count: int, w: int) -> None:
+    """Take one, two or three pivot rows off one row."""
+    zero = constant(a, 0.0, 0.0)
+    one, two, three = load(a, here + k), zero, zero
+    if count > 1:
+        two = load(a, here + k + 1)
+    if count > 2:
+        three = load(a, here + k + 2)
+    for p in range(k, k + count):
+        store(a, here + p, zero)
+    for j in range(w):
+        value = minus_product(load(a, here + j), one, load(a, top + j))
+        if count > 1:
+            value = minus_product(value, two, load(a, top + row + j))
+        if count > 2:
+            value = minus_product(value, three, load(a, top + 2 * row + j))
+        store(a, here + j, value)
+
+
+@inner
+def _less_two(a: Any, here: int, top: int, row: int, k: int, w: int) -> None:
+    """Take two pivot rows off two rows."""
+    zero = constant(a, 0.0, 0.0)
+    there, low = here + row, top + row
+    f00, f01, f10, f11 = load(a, here + k), load(a, here + k + 1), load(a, there + k), load(a, there + k + 1)
+    for p in range(k, k + 2):
+        store(a, here + p, zero)
+        store(a, there + p, zero)
+    for j in range(w):
+        one, two = load(a, top + j), load(a, low + j)
+        store(a, here + j, minus_product(minus_product(load(a, here + j), f00, one), f01, two))
+        store(a, there + j, minus_product(minus_product(load(a, there + j), f10, one), f11, two))
+
+
+@inner
+def _less_three(a: Any, here: int, top: int, row: int, k: int, w: int) -> None:
+    """Take three pivot rows off three rows."""
+    zero = constant(a, 0.0, 0.0)
+    then, last, mid, low = here + row, here + 2 * row, top + row, top + 2 * row
+    f00, f01, f02 = load(a, here + k), load(a, here + k + 1), load(a, here + k + 2)
+    f10, f11, f12 = load(a, then + k), load(a, then + k + 1), load(a, then + k + 2)
+    f20, f21, f22 = load(a, last + k), load(a, last + k + 1), load(a, last + k + 2)
+    for p in range(k, k + 3):
+        store(a, here + p, zero)
+        store(a, then + p, zero)
+        store(a, last + p, zero)
+    for j in range(w):
+        one, two, three = load(a, top + j), load(a, mid + j), load(a, low + j)
+        c0 = minus_product(minus_product(load(a, here + j), f00, one), f01, two)
+        c1 = minus_product(minus_product(load(a, then + j), f10, one), f11, two)
+        c2 = minus_product(minus_product(load(a, last + j), f20, one), f21, two)
+        store(a, here + j, minus_product(c0, f02, three))
+        store(a, then + j, minus_product(c1, f12, three))
+        store(a, last + j, minus_product(c2, f22, three))
+
+
+@inner
+def _inverted_small(a: Any, first: int, row: int, w: int, worst: Any) -> Any:
+    """Invert a small matrix in place, a few pivots at a time: so many multiples of rows stay in registers.
+
+    Returns the largest inverse of a pivot, or `worst` if that is larger.
+    """
+    side = 3 if is_real(a) else 2
+    whole = w - w % side
+    for k in range(0, whole, side):
+        top = first + k * row
+        worst = _pivoted(a, first, row, w, k, k + side, worst)
+        for i in range(0, whole, side):
             if i != k:
-                factor = load(a, ai + i * row + k)
-                store(a, ai + i * row + k, constant(a, 0.0, 0.0))
-                for j in range(w):
-                    at = ai + i * row + j
-                    store(a, at, minus_product(load(a, at), factor, load(a, ai + k * row + j)))
+                if is_real(a):
+                    _less_three(a, first + i * row, top, row, k, w)
+                else:
+                    _less_two(a, first + i * row, top, row, k, w)
+        for i in range(whole, w):
+            _less_few(a, first + i * row, top, row, k, side, w)
+    if whole < w:
+        worst = _pivoted(a, first, row, w, whole, w, worst)
+        for i in range(whole):
+            _less_few(a, first + i * row, first + whole * row, row, whole, w - whole, w)
     return worst
 
 
@@ -142,7 +234,7 @@ def inverted(a: Any, w: int, spare: Any, worst: Any) -> Any:
     """
     origin = w - w  # a literal 0 would be a type of its own, compiled apart
     if w <= UNDIVIDED:
-        return _inverted_undivided(a, origin, w, w, worst)
+        return _inverted_small(a, origin, w, w, worst)
     zero = constant(a, 0.0, 0.0)
     for first in range(0, w, PANEL):
         b = min(PANEL, w - first)
@@ -150,7 +242,7 @@ def inverted(a: Any, w: int, spare: Any, worst: Any) -> Any:
         for i in range(b):
             for j in range(b):
                 store(spare, pivots + i * b + j, load(a, (first + i) * w + first + j))
-        worst = _inverted_undivided(spare, pivots, b, b, worst)
+        worst = _inverted_small(spare, pivots, b, b, worst)
         for k in range(b * b):  # the sign that `subtract_product` takes off again
             store(spare, pivots + k, minus_product(zero, constant(a, 1.0, 0.0), load(spare, pivots + k)))
         for i in range(b):

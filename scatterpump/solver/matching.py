@@ -25,8 +25,19 @@ Complex = NDArray[np.complex128]
 
 def match(probe: Border, device: Load) -> tuple[Complex, Complex]:
     """Return r, shape (n, m, m), and t, shape (n, k, m), of a device behind the probe's modes."""
-    outward = device.returned @ (1j * probe.out - probe.out_bare) + (1j * probe.out + probe.out_bare)
-    inward = device.returned @ (1j * probe.into - probe.into_bare) + (1j * probe.into + probe.into_bare)
+    waves = device.returned
+    outward = _times(waves, 1j * probe.out - probe.out_bare) + (1j * probe.out + probe.out_bare)
+    inward = _times(waves, 1j * probe.into - probe.into_bare) + (1j * probe.into + probe.into_bare)
     amplitudes: Any = -np.linalg.solve(outward, inward)
-    entering = (probe.into_bare + probe.out_bare @ amplitudes) - 1j * (probe.into + probe.out @ amplitudes)
-    return np.asarray(amplitudes[:, : probe.channels]), np.asarray(device.passed @ entering)
+    passed = np.zeros((len(amplitudes), device.passed.shape[1], probe.channels), dtype=complex)
+    if device.passed.shape[1]:
+        entering = probe.into_bare - 1j * probe.into + (probe.out_bare - 1j * probe.out) @ amplitudes
+        passed = device.passed @ entering
+    return np.asarray(amplitudes[:, : probe.channels]), passed
+
+
+def _times(stack: Complex, matrix: Complex) -> Complex:
+    """Product of each of many small matrices with one matrix, or with one each."""
+    if matrix.ndim > 2:
+        return np.asarray(stack @ matrix)
+    return np.asarray((stack.reshape(-1, stack.shape[-1]) @ matrix).reshape(*stack.shape[:-1], matrix.shape[-1]))

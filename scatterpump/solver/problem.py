@@ -82,7 +82,9 @@ class Problem:
     @property
     def doubling_pays(self) -> bool:
         """Whether joining cells is expected to be cheaper than a sweep."""
-        if self.single or self.run is None:
+        widths = self.layers.widths
+        least = cost.joins(widths.min(keepdims=True), len(widths))  # were all layers alike
+        if self.single or self._sweep_cost(widths, transmission=False) < least or self.run is None:
             return False
         inside = self.layers.widths[self.run.first :][: self.run.repeats * self.run.length]
         swept = self._sweep_cost(inside, transmission=False)
@@ -94,7 +96,7 @@ class Problem:
         if self.single:
             return False
         others = self._sweep_cost(widths, transmission=transmission)
-        if self.run and self.doubling_pays and (self.reaches_beyond(self.run) or not transmission):
+        if self.doubling_pays and self.run and (self.reaches_beyond(self.run) or not transmission):
             others = cost.joins(widths[self.run.first :][: self.run.length], self.run.repeats)
         return cost.complement(widths) < others
 

@@ -13,6 +13,7 @@ from typing import Any
 
 from llvmlite import ir
 from numba.core import types
+from numba.core.cgutils import get_or_insert_function
 from numba.extending import intrinsic, models, register_model
 
 __all__ = [
@@ -23,10 +24,11 @@ __all__ = [
     "larger",
     "load",
     "minus_product",
-    "packed",
+    "plus",
     "product",
     "put",
     "reciprocal",
+    "scaled",
     "size",
     "store",
     "tainted",
@@ -177,19 +179,6 @@ def constant(typing: Any, array: Any, real: Any, imaginary: Any) -> Any:
 
 
 @intrinsic
-def packed(
-    typing: Any, array: Any, a: Any, b: Any, c: Any, d: Any, a_imag: Any, b_imag: Any, c_imag: Any, d_imag: Any
-) -> Any:
-    """Four numbers as lanes of the store's kind, from their real and their imaginary parts."""
-    kind = _kind(array)
-
-    def build(context: Any, builder: Any, signature: Any, args: Any) -> Any:
-        return _number(builder, kind, args[1:])
-
-    return kind(array, *[types.float64] * (2 * LANES)), build
-
-
-@intrinsic
 def minus_product(typing: Any, c: Any, a: Any, b: Any) -> Any:
     """Return c - a b."""
 
@@ -224,6 +213,22 @@ def product(typing: Any, a: Any, b: Any) -> Any:
 
 
 @intrinsic
+def plus(typing: Any, a: Any, b: Any) -> Any:
+    """Return a + b."""
+    return a(a, b), lambda context, builder, signature, args: builder.fadd(*args)
+
+
+@intrinsic
+def scaled(typing: Any, a: Any, factor: Any) -> Any:
+    """Return a times one real number."""
+
+    def build(context: Any, builder: Any, signature: Any, args: Any) -> Any:
+        return builder.fmul(args[0], _number(builder, a, [args[1]] * (2 * LANES)))
+
+    return a(a, types.float64), build
+
+
+@intrinsic
 def reciprocal(typing: Any, a: Any) -> Any:
     """Return 1 / a; infinite or not a number where a is zero."""
 
@@ -240,11 +245,12 @@ def reciprocal(typing: Any, a: Any) -> Any:
 
 
 def _greater(builder: Any, a: Any, b: Any) -> Any:
-    return builder.select(builder.fcmp_ordered(">=", a, b), a, b)
+    return builder.select(builder.fcmp_ordered(">", a, b), a, b)  # one instruction
 
 
 def _modulus(builder: Any, a: Any) -> Any:
-    return _greater(builder, a, builder.fneg(a))
+    kind = ir.FunctionType(a.type, [a.type])
+    return builder.call(get_or_insert_function(builder.module, kind, f"llvm.fabs.v{a.type.count}f64"), [a])
 
 
 @intrinsic
@@ -275,11 +281,9 @@ def tainted(typing: Any, doubt: Any, a: Any) -> Any:
     """`doubt` (real lanes), or not a number where `a` is not finite."""
 
     def build(context: Any, builder: Any, signature: Any, args: Any) -> Any:
-        parts = _parts(builder, args[1]) if a.is_complex else (args[1],)
         zero = ir.Constant(ir.VectorType(DOUBLE, LANES), [0.0] * LANES)
-        total = args[0]
-        for part in parts:
-            total = builder.fadd(total, builder.fmul(part, zero, flags=FUSED), flags=FUSED)
-        return total
+        parts = _parts(builder, args[1]) if a.is_complex else (args[1],)
+        nothing = [builder.fmul(part, zero, flags=FUSED) for part in parts]
+        return builder.fadd(args[0], builder.fadd(*nothing, flags=FUSED) if a.is_complex else nothing[0], flags=FUSED)
 
     return REAL(REAL, a), build
