@@ -68,7 +68,8 @@ def test_a_dense_solver_finds_the_same(
     kernel: Kernel, widths: list[int], is_complex: bool, dense: bool, moves: bool
 ) -> None:
     diagonal, lower, upper, wanted = system(widths, is_complex=is_complex, dense=dense, moves=moves)
-    found = eliminate(diagonal, lower, upper, wanted, real_below=0 if is_complex else len(widths) - 1, kernel=kernel)
+    real_below = 0 if is_complex else len(widths) - 1
+    found = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=real_below, kernel=kernel)
     # general-purpose reference: LAPACK through numpy.linalg.solve; digits are lost in proportion to the growth
     close(found, *dense_solution(diagonal, lower, upper, wanted), 1e-14 * found.growth.max() * max(widths))
 
@@ -77,7 +78,7 @@ def test_a_long_device_goes_on_in_real_arithmetic(kernel: Kernel) -> None:
     # derived: behind 40 blocks that damp, the open end is below rounding and nothing imaginary is left
     diagonal, lower, upper, wanted = system([3, 5] * 20, is_complex=False, dense=True, moves=False)
     lower, upper = [0.2 * block for block in lower], [0.2 * block for block in upper]
-    found = eliminate(diagonal, lower, upper, wanted, real_below=39, kernel=kernel)
+    found = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=39, kernel=kernel)
     assert not found.block.imag.any()
     close(found, *dense_solution(diagonal, lower, upper, wanted), 1e-13 * found.growth.max())
 
@@ -85,13 +86,13 @@ def test_a_long_device_goes_on_in_real_arithmetic(kernel: Kernel) -> None:
 def test_still_blocks_given_once_are_the_same_for_all(kernel: Kernel) -> None:
     diagonal, lower, upper, wanted = system([4, 6, 3], is_complex=True, dense=False, moves=False)
     diagonal[1] = np.broadcast_to(diagonal[1][:1], diagonal[1].shape)
-    found = eliminate(diagonal, lower, upper, wanted, real_below=0, kernel=kernel)
+    found = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=0, kernel=kernel)
     close(found, *dense_solution(diagonal, lower, upper, wanted), 1e-13 * found.growth.max())
 
 
 def test_nothing_wanted_gives_no_rows(kernel: Kernel) -> None:
     diagonal, lower, upper, _ = system([4, 2, 4], is_complex=True, dense=True, moves=False)
-    found = eliminate(diagonal, lower, upper, None, real_below=0, kernel=kernel)
+    found = eliminate(diagonal, lower, upper, None, unit=1.0, real_below=0, kernel=kernel)
     assert found.amplitudes.shape == (COUNT, 0, 4)
 
 
@@ -101,7 +102,7 @@ def test_vanishing_pivots_of_a_healthy_block_cost_no_digits(kernel: Kernel, w: i
     diagonal, lower, upper, wanted = system([3, w, 4], is_complex=True, dense=True, moves=False)
     lower[1], upper[1] = 0 * lower[1], 0 * upper[1]
     diagonal[1] = np.broadcast_to(np.roll(np.eye(w), 1, axis=0) + 0j, diagonal[1].shape)
-    found = eliminate(diagonal, lower, upper, wanted, real_below=0, kernel=kernel)
+    found = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=0, kernel=kernel)
     assert found.growth.max() < 10
     close(found, *dense_solution(diagonal, lower, upper, wanted), 1e-13)
 
@@ -113,7 +114,7 @@ def test_growth_tells_how_near_to_singular_a_block_was(kernel: Kernel, distance:
     turn = np.linalg.qr(diagonal[1][0])[0]
     diagonal[1] = diagonal[1].copy()
     diagonal[1][2] = turn @ np.diag([1, 1, distance]) @ turn.conj().T
-    found = eliminate(diagonal, lower, upper, wanted, real_below=0, kernel=kernel)
+    found = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=0, kernel=kernel)
     assert found.growth[2] == pytest.approx((np.abs(turn[:, 2]) ** 2).max() / distance, rel=1e-3)
     assert np.delete(found.growth, 2).max() < 1e3
 
@@ -123,7 +124,7 @@ def test_growth_tells_how_near_to_singular_a_block_was(kernel: Kernel, distance:
 def test_what_is_not_finite_or_singular_is_flagged_in_its_own_system(kernel: Kernel, w: int, bad: float | None) -> None:
     # derived: no growth below a limit may hide a wrong answer, and the other systems are as they were
     diagonal, lower, upper, wanted = system([w] * 4, is_complex=True, dense=False, moves=False)
-    healthy = eliminate(diagonal, lower, upper, wanted, real_below=0, kernel=kernel)
+    healthy = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=0, kernel=kernel)
     diagonal[2] = diagonal[2].copy()
     diagonal[3] = np.broadcast_to(1e3j * np.eye(w), diagonal[3].shape) if bad is None else diagonal[3]
     if bad is None:
@@ -133,7 +134,7 @@ def test_what_is_not_finite_or_singular_is_flagged_in_its_own_system(kernel: Ker
         diagonal[2][1, 1, 0] = bad
     with np.errstate(all="ignore"):
         try:
-            found = eliminate(diagonal, lower, upper, wanted, real_below=0, kernel=kernel)
+            found = eliminate(diagonal, lower, upper, wanted, unit=1.0, real_below=0, kernel=kernel)
         except np.linalg.LinAlgError:
             assert kernel == "numpy"
             return

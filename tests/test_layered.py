@@ -68,32 +68,42 @@ def test_next_to_an_edge_level_of_the_closed_segment(distance: float) -> None:
 
 
 def strip(
-    width: int, length: int, *, flux: float = 0.0, side: bool = False, energy: float = 0.4, third: bool = False
+    width: int,
+    length: int,
+    *,
+    flux: float = 0.0,
+    side: bool = False,
+    energy: float = 0.4,
+    third: bool = False,
+    unit: float = 1.0,
 ) -> Pump:
-    """A sliding wave on a square lattice, with flux, side-attached sites and a third lead on request."""
+    """A sliding wave on a square lattice, with flux, side-attached sites and a third lead on request.
+
+    All energies are multiplied by `unit`.
+    """
     lattice, system = kwant.lattice.square(norbs=1), kwant.Builder()
     system[(lattice(x, y) for x in range(length) for y in range(width))] = lambda site, phi: (
-        0.9 * np.cos(2 * np.pi * (site.tag[0] % 3) / 3 - phi) + 0.05 * site.tag[1]
+        unit * (0.9 * np.cos(2 * np.pi * (site.tag[0] % 3) / 3 - phi) + 0.05 * site.tag[1])
     )
-    system[kwant.builder.HoppingKind((1, 0), lattice)] = lambda a, b: -np.exp(2j * np.pi * flux * a.tag[1])
-    system[kwant.builder.HoppingKind((0, 1), lattice)] = -0.8
+    system[kwant.builder.HoppingKind((1, 0), lattice)] = lambda a, b: -unit * np.exp(2j * np.pi * flux * a.tag[1])
+    system[kwant.builder.HoppingKind((0, 1), lattice)] = -0.8 * unit
     if side:
-        system[lattice(2, width)], system[lattice(2, width), lattice(2, width - 1)] = 0.3, -0.6
+        system[lattice(2, width)], system[lattice(2, width), lattice(2, width - 1)] = 0.3 * unit, -0.6 * unit
         del system[lattice(4, 0)]
     for direction in (-1, 1):
         lead = kwant.Builder(kwant.TranslationalSymmetry((direction, 0)))
         lead[(lattice(0, y) for y in range(width))] = 0.0
-        lead[kwant.builder.HoppingKind((1, 0), lattice)] = -1.3
+        lead[kwant.builder.HoppingKind((1, 0), lattice)] = -1.3 * unit
         if width > 1:
-            lead[kwant.builder.HoppingKind((0, 1), lattice)] = -0.4
+            lead[kwant.builder.HoppingKind((0, 1), lattice)] = -0.4 * unit
         system.attach_lead(lead)
     if third:
         lead = kwant.Builder(kwant.TranslationalSymmetry((0, 1)))
         lead[(lattice(x, 0) for x in (3, 4))] = 0.0
-        lead[lattice(3, 0), lattice(4, 0)] = -0.5
-        lead[kwant.builder.HoppingKind((0, 1), lattice)] = -1.0
+        lead[lattice(3, 0), lattice(4, 0)] = -0.5 * unit
+        lead[kwant.builder.HoppingKind((0, 1), lattice)] = -1.0 * unit
         system.attach_lead(lead)
-    return Pump(system, Cycle.angle(), energy)
+    return Pump(system, Cycle.angle(), energy * unit)
 
 
 @pytest.mark.parametrize(
@@ -109,6 +119,17 @@ def strip(
 )
 def test_strips(options: dict[str, Any]) -> None:
     agree(strip(**options))
+
+
+@pytest.mark.parametrize("unit", [1e-6, 1e-3, 1e7])
+@pytest.mark.parametrize("width", [1, 3])
+def test_unit_of_energy_does_not_matter(monkeypatch: pytest.MonkeyPatch, unit: float, width: int) -> None:
+    """Megaelectronvolts and nanoelectronvolts are as good as a hopping of one; nothing is taken for a lost digit."""
+    expected = layered.solve(strip(width, 90), PHASES)
+    monkeypatch.setattr(layered, "factorised", None)
+    found = layered.solve(strip(width, 90, unit=unit), PHASES)
+    turn = found.reflection @ np.linalg.inv(expected.reflection)  # kwant's modes may differ by phases
+    np.testing.assert_allclose(turn, np.broadcast_to(turn[0], turn.shape), rtol=0, atol=CLOSE)
 
 
 def test_probe_on_the_right_and_in_the_middle_of_an_edge() -> None:

@@ -126,7 +126,6 @@ def _beyond(problem: Problem, elements: Numbers, first: int) -> Numbers:
     """D of layer `first`, shape (n, w, w)."""
     if not problem.single:
         return eliminated(problem, elements, first, False)[0]
-    bands = [problem.blocks.band(step, elements) for step in (0, 1, -1)]
-    diagonal, lower, upper = ([band[n] for n in range(first, len(band))] for band in bands)
-    found = eliminate_single(diagonal, lower, upper, len(elements), real_below=0, amplitude=False)
+    diagonal, lower, upper = (problem.blocks.band(step, elements).beyond(first) for step in (0, 1, -1))
+    found = eliminate_single(diagonal, lower, upper, len(elements), unit=problem.hopping, real_below=0, amplitude=False)
     return np.broadcast_to(np.asarray(found.p / found.q), (len(elements),))[:, None, None]

@@ -79,6 +79,25 @@ class Band(Sequence[Any]):
         place = self.place[n]
         return self.fixed[n] if place < 0 else self.fixed[n] - self.moving[place]
 
+    @property
+    def is_still(self) -> bool:
+        """Whether no block moves."""
+        return max(self.place, default=-1) < 0
+
+    def beyond(self, first: int) -> Band:
+        """The blocks from number `first` on."""
+        return Band(self.fixed[first:], self.place[first:], self.moving)
+
+    def rows(self, first: int, end: int) -> Numbers:
+        """Blocks `first` to `end` - 1 together, shape (end - first, n)."""
+        place, fixed = np.array(self.place[first:end]), np.array(self.fixed[first:end])
+        kind = np.result_type(fixed, self.moving)
+        if (place < 0).all():
+            return np.repeat(fixed.astype(kind)[:, None], self.moving.shape[1], axis=1)
+        rows = self.moving[place].astype(kind, copy=False)
+        rows[place < 0] = 0.0
+        return np.asarray(np.subtract(fixed[:, None], rows, out=rows))
+
 
 @dataclass(frozen=True, eq=False)
 class Stack(Sequence[Numbers]):

@@ -34,7 +34,7 @@ __all__ = ["swept"]
 
 LOOK_EVERY = 4
 DROPPED = 1e-17  # of |D|: a twentieth of what one rounding changes
-SMALL_PIVOT = 1e4  # inverse of a pivot that costs four digits
+SMALL_PIVOT = 1e4  # inverse of a pivot, in the unit of energy, that costs four digits
 
 
 @inner
@@ -144,9 +144,9 @@ def _worst(growth: Any, a: Any, count: int) -> None:
 
 
 @inner
-def _has_small_pivot(pivots: Any) -> bool:
+def _has_small_pivot(pivots: Any, unit: float) -> bool:
     for lane in range(LANES):
-        if not pivots[lane] <= SMALL_PIVOT:
+        if not pivots[lane] * unit <= SMALL_PIVOT:
             return True
     return False
 
@@ -192,7 +192,16 @@ def _carry(
 
 @inner
 def _descend(
-    stores: Any, growth: Any, n: int, tall: int, height: int, real_below: int, layers: Any, entries: Any, moved: Any
+    stores: Any,
+    growth: Any,
+    n: int,
+    tall: int,
+    height: int,
+    unit: float,
+    real_below: int,
+    layers: Any,
+    entries: Any,
+    moved: Any,
 ) -> Any:
     """Go down from D_n to D_0, or to the first D that is real; return its layer, D, and the inverse it came from.
 
@@ -205,7 +214,7 @@ def _descend(
         if not is_real(here) and n < real_below and n % LOOK_EVERY == 0 and _is_real_to_rounding(here, deep * deep):
             break
         store(pivots, 0, inverted(here, deep, spare, constant(growth, 0.0, 0.0)))
-        if _has_small_pivot(pivots):
+        if _has_small_pivot(pivots, unit):
             _form(here, before, n, spare, layers, entries, moved)
             inverted_with_pivots(here, deep)
         _worst(growth, here, deep * deep)
@@ -263,6 +272,7 @@ def swept(
     moving: Any,
     parts: int,
     height: int,
+    unit: float,
     real_below: int,
     block: Any,
     amplitudes: Any,
@@ -278,6 +288,8 @@ def swept(
         What is taken off the elements that move; complex numbers as two parts.
     height : int
         Rows of T.
+    unit : float
+        A typical energy.
     real_below : int
         The first so many blocks are real, with what couples them.
     block, amplitudes, most : (n, w, w), (n, height, w) complex and (n,) float arrays
@@ -296,13 +308,13 @@ def swept(
     for start in range(0, count, LANES):
         for lane in range(LANES):  # the last group is filled up with its last system
             rows[lane] = min(start + lane, count - 1)
-            growth[lane], growth[LANES + lane] = 1.0, 0.0
+            growth[lane], growth[LANES + lane] = 0.0, 0.0
         _take_moving(moving, rows, parts, moved)
         here, before, kept, spare = open_stores
         _clear(kept, height * layers[last].width)
         _add_wanted(kept, layers[last], entries, height)
         _form(here, before, last, spare, layers, entries, moved)
-        n, here, before = _descend(open_stores, growth, last, height, height, real_below, layers, entries, moved)
+        n, here, before = _descend(open_stores, growth, last, height, height, unit, real_below, layers, entries, moved)
         if n > 0:
             w = layers[n].width
             _take_real(moved, len(moving), real_moved, 0)
@@ -310,11 +322,13 @@ def swept(
             if n < last:
                 _take_real(before, layers[n + 1].width ** 2, real_stores[1], 0)
             _take_real(kept, height * w, real_stores[2], height * w)
-            _, real, _ = _descend(real_stores, growth, n, 2 * height, height, real_below, layers, entries, real_moved)
+            _, real, _ = _descend(
+                real_stores, growth, n, 2 * height, height, unit, real_below, layers, entries, real_moved
+            )
             _give(here, real, first * first, 0)
             _give(kept, real_stores[2], height * first, height * first)
         for lane in range(LANES):
-            most[rows[lane]] = growth[lane] + growth[LANES + lane]
+            most[rows[lane]] = max(1.0, growth[lane] * unit) + growth[LANES + lane]
             for i in range(first):
                 for j in range(first):
                     block[rows[lane], i, j] = get(here, i * first + j, lane)

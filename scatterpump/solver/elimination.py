@@ -10,7 +10,8 @@ Only the far end is open, so in a gap the imaginary part of a real device's D_n 
 smaller than rounding of D_n itself it is dropped, and the rest of the sweep is real: half the work or less.
 
 For blocks of one row the pair (p, q) with D = p/q needs no division and neither over- nor underflows; larger blocks
-are inverted, and the largest |D^-1| met is returned as `growth`: digits are lost in proportion to it.
+are inverted, and the largest |D^-1| met, times a typical energy, is returned as `growth`: digits are lost in proportion
+to it.
 """
 
 from __future__ import annotations
@@ -24,17 +25,20 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.solver.blocks import Stack
+from scatterpump.solver.blocks import Band, Stack
 from scatterpump.solver.elements import listed_all, tabled
 
 __all__ = ["Eliminated", "EliminatedSingle", "backward", "eliminate", "eliminate_single"]
 
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Complex = NDArray[np.complex128]
+Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
-RESCALE_EVERY = 16
+RESCALE_EVERY = 32
+WEIGHABLE = 1e-100, 1e100
 LOOK_EVERY = 4
 DROPPED = 1e-17  # of |D|: a twentieth of what one rounding changes
+ROUNDED = 4e-16  # of the larger of p and q: what roundings leave of an imaginary part that has died out
 
 
 @dataclass(frozen=True, eq=False)
@@ -48,7 +52,7 @@ class Eliminated:
     amplitudes : (n, k, w) array
         T_0.
     growth : (n,) float array
-        Largest |D^-1| met.
+        Largest |D^-1| met, times the unit of energy.
     """
 
     block: Numbers
@@ -74,38 +78,76 @@ class EliminatedSingle:
 
 
 def eliminate_single(
-    diagonal: Sequence[Numbers | complex],
-    lower: Sequence[Numbers | complex],
-    upper: Sequence[Numbers | complex],
-    count: int,
-    *,
-    real_below: int,
-    amplitude: bool,
+    diagonal: Band, lower: Band, upper: Band, count: int, *, unit: float, real_below: int, amplitude: bool
 ) -> EliminatedSingle:
     """Eliminate blocks of one row.
 
     Parameters
     ----------
-    diagonal : L numbers or arrays of shape (n,)
+    diagonal : Band of L blocks
         A_nn for n = `count` systems.
-    lower, upper : L-1 numbers or arrays of shape (n,)
+    lower, upper : Band of L-1 blocks
         A_n+1,n and A_n,n+1.
+    unit : float
+        A typical energy, so that p and q are products of numbers that are neither large nor small.
     real_below : int
         The first so many blocks are real, with what couples them.
     amplitude : bool
         Whether the last block's amplitude is wanted.
     """
-    p, q = diagonal[-1] * np.ones(count, dtype=complex), np.ones(count, dtype=complex)
+    last = len(diagonal) - 1
+    products = _products(lower, upper, unit)
+    p, q = diagonal[last] / unit * np.ones(count, dtype=complex), np.ones(count, dtype=complex)
     passed = np.ones(count, dtype=complex)  # q_L-1 times the product of -A_n+1,n, on the common scale of p and q
-    for n in range(len(diagonal) - 2, -1, -1):
-        q *= upper[n] * lower[n]
-        p, q = diagonal[n] * p - q, p
+    for end in range(last, 0, -RESCALE_EVERY):
+        steps = range(max(0, end - RESCALE_EVERY), end)
+        rows = diagonal.rows(steps.start, end)
+        p, q, scale = _stepped(rows if unit == 1.0 else rows / unit, products[steps.start : end], p, q)
+        p, q, factor = _rescaled(p, q, is_real=steps.start < real_below)
         if amplitude:
-            passed *= -lower[n]
-        if n % RESCALE_EVERY == 0:
-            p, q, factor = _rescaled(p, q, is_real=n < real_below)
-            passed = passed * factor
-    return EliminatedSingle(p, q, passed)
+            for n in steps:
+                passed = passed * (lower[n] / -unit)
+        passed = passed * (factor * scale)
+    return EliminatedSingle(p * unit, q, passed)
+
+
+def _products(lower: Band, upper: Band, unit: float) -> Any:
+    """A_n,n+1 A_n+1,n of all blocks, one array if they stand still."""
+    if lower.is_still and upper.is_still:
+        return (np.array(upper.fixed) / unit) * (np.array(lower.fixed) / unit)
+    return [(up / unit) * (down / unit) for up, down in zip(upper, lower, strict=True)]
+
+
+def _stepped(rows: Numbers, products: Any, p: Numbers, q: Numbers) -> tuple[Numbers, Numbers, Any]:
+    """Take p, q = d p - o q, p for all d in `rows`, the last first, and their o; q is overwritten.
+
+    With p_n = c_n P_n and c_n = o_n c_n+2 that is P_n = (d_n c_n+1 / c_n) P_n+1 - P_n+2: no products with o are left.
+    Returns P, q on its scale, and the factor between p and P.
+    """
+    weights = _weights(products.real) if isinstance(products, np.ndarray) and not products.imag.any() else None
+    if weights is None:
+        for d, o in zip(rows[::-1], products[::-1], strict=True):
+            p, q = d * p - o * q, p
+        return p, q, 1.0
+    if (weights != 1.0).any():
+        rows *= (weights[1:] / weights[:-1])[:-1, None]
+    spare = np.empty_like(p)
+    for d in rows[::-1]:
+        np.multiply(d, p, out=spare)
+        np.subtract(spare, q, out=q)
+        p, q = q, p
+    return p, q * (weights[1] / weights[0]), 1.0 / weights[0]
+
+
+def _weights(products: Floats) -> Floats | None:
+    """c_n for every step and the two before the first; None where they leave the range."""
+    if (products == 1.0).all():
+        return np.ones(len(products) + 2)
+    weights = [1.0, 1.0]
+    for o in products[::-1].tolist():
+        weights.append(o * weights[-2])
+    found = np.array(weights[::-1])
+    return found if WEIGHABLE[0] < np.abs(found).min() and np.abs(found).max() < WEIGHABLE[1] else None
 
 
 def _rescaled(p: Numbers, q: Numbers, *, is_real: bool) -> tuple[Numbers, Numbers, Numbers]:
@@ -118,7 +160,7 @@ def _rescaled(p: Numbers, q: Numbers, *, is_real: bool) -> tuple[Numbers, Number
     if is_real and np.iscomplexobj(p):
         phase = np.where(np.abs(p) == size, p, q) / size
         turned = p * (phase.conj() / size), q * (phase.conj() / size)
-        if all((np.abs(part.imag) <= DROPPED).all() for part in turned):
+        if all((np.abs(part.imag) <= ROUNDED).all() for part in turned):
             return turned[0].real.copy(), turned[1].real.copy(), phase.conj() / size
     return p / size, q / size, 1 / size
 
@@ -129,6 +171,7 @@ def eliminate(
     upper: Sequence[Numbers],
     wanted: Sequence[Complex] | None,
     *,
+    unit: float,
     real_below: int,
     kernel: Literal["numpy", "compiled"] | None = None,
 ) -> Eliminated:
@@ -140,6 +183,8 @@ def eliminate(
     lower, upper : L-1 arrays of shape (n or 1, w_i+1, w_i) and (n or 1, w_i, w_i+1)
     wanted : L arrays of shape (k, w_i) or None
         S_n: which amplitudes lie in which block.
+    unit : float
+        A typical energy: against its inverse |D^-1| is large or small.
     real_below : int
         The first so many blocks are real, with what couples them.
     kernel : {"numpy", "compiled"}, optional
@@ -151,8 +196,8 @@ def eliminate(
         If a block is singular to the last digit; the compiled sweep lets the growth tell instead.
     """
     if kernel == "compiled" or (kernel is None and has_compiler()):
-        return _eliminated_compiled(diagonal, lower, upper, wanted, real_below)
-    return _eliminated_numpy(diagonal, lower, upper, wanted, real_below)
+        return _eliminated_compiled(diagonal, lower, upper, wanted, unit, real_below)
+    return _eliminated_numpy(diagonal, lower, upper, wanted, unit, real_below)
 
 
 @cache
@@ -172,6 +217,7 @@ def _eliminated_compiled(
     lower: Sequence[Numbers],
     upper: Sequence[Numbers],
     wanted: Sequence[Complex] | None,
+    unit: float,
     real_below: int,
 ) -> Eliminated:
     from scatterpump.solver.compiled import swept
@@ -189,7 +235,7 @@ def _eliminated_compiled(
     block = np.empty((count, widths[0], widths[0]), dtype=complex)
     amplitudes, growth = np.empty((count, height, widths[0]), dtype=complex), np.empty(count)
     moving = np.ascontiguousarray(moving.T).view(np.float64)
-    swept(layers, entries, moving, parts, height, real_below, block, amplitudes, growth)
+    swept(layers, entries, moving, parts, height, unit, real_below, block, amplitudes, growth)
     return Eliminated(block, amplitudes, growth)
 
 
@@ -198,6 +244,7 @@ def _eliminated_numpy(
     lower: Sequence[Numbers],
     upper: Sequence[Numbers],
     wanted: Sequence[Complex] | None,
+    unit: float,
     real_below: int,
 ) -> Eliminated:
     here = diagonal[-1]
@@ -207,7 +254,7 @@ def _eliminated_numpy(
         if n < real_below and n % LOOK_EVERY == 0:
             here = _real_if_negligible(here)
         inverse: Numbers = np.linalg.inv(here)
-        growth = np.maximum(growth, _largest(inverse) + _taint(here))
+        growth = np.maximum(growth, unit * _largest(inverse) + _taint(here))
         here, amplitudes = backward(diagonal[n], lower[n], upper[n], inverse, amplitudes)
         if amplitudes is not None and wanted is not None:
             amplitudes = wanted[n] + amplitudes

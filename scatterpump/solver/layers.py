@@ -5,8 +5,9 @@ exactly as kwant does:
 
     (E - H) psi - V u_out s = V u_in,      -V^+ psi + l_out s = -l_in,
 
-so no drain self-energy is ever formed.  Two orbitals whose distances differ by more than one are not coupled; the
-first layer is the probe's interface, in the order of the probe's own unknowns.
+so no drain self-energy is ever formed.  The amplitudes are counted in units of the square root of the lead's hopping,
+and the second equation is multiplied by it, so that all elements are energies.  Two orbitals whose distances differ by
+more than one are not coupled; the first layer is the probe's interface, in the order of the probe's own unknowns.
 """
 
 from __future__ import annotations
@@ -22,6 +23,7 @@ from scatterpump.solver.hamiltonian import DrivenHamiltonian
 __all__ = ["Border", "Layers", "bordered", "distances", "layer", "lead_border"]
 
 Complex = NDArray[np.complex128]
+Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 
@@ -95,6 +97,8 @@ class Layers:
         Those elements, with the sign of E - H.
     outgoing : int array
         Unknowns that are amplitudes of open outgoing modes, lead by lead.
+    weights : float array
+        The amplitude that one of each is.
     """
 
     level: Indices
@@ -104,11 +108,12 @@ class Layers:
     columns: Indices
     values: Complex
     outgoing: Indices
+    weights: Floats
 
 
 def layer(driven: DrivenHamiltonian, probe: Border, others: list[Border]) -> Layers:
     """Sort orbitals and mode amplitudes into layers, beginning at the probe's interface."""
-    rows, columns, values, outgoing, size = bordered(driven.size, others)
+    rows, columns, values, outgoing, weights, size = bordered(driven.size, others)
     level = distances(
         np.concatenate([driven.rows, rows]), np.concatenate([driven.columns, columns]), size, probe.orbitals
     )
@@ -118,31 +123,33 @@ def layer(driven: DrivenHamiltonian, probe: Border, others: list[Border]) -> Lay
     place = np.full(size, -1)
     place[order] = np.arange(len(order)) - np.repeat(np.cumsum(widths) - widths, widths)
     place[probe.orbitals] = np.arange(len(probe.orbitals))
-    return Layers(level, place, widths, rows, columns, values, outgoing)
+    return Layers(level, place, widths, rows, columns, values, outgoing, weights)
 
 
-def bordered(size: int, others: list[Border]) -> tuple[Indices, Indices, Complex, Indices, int]:
-    """Elements of all borders, the unknowns that are open outgoing modes, and the number of unknowns."""
-    rows, columns, values, outgoing = ([np.zeros(0, dtype=int)] for _ in range(4))
+def bordered(size: int, others: list[Border]) -> tuple[Indices, Indices, Complex, Indices, Floats, int]:
+    """Elements of all borders, the unknowns that are open outgoing modes, their weights, and the number of unknowns."""
+    rows, columns, values, outgoing, weights = ([np.zeros(0, dtype=int)] for _ in range(5))
     for border in others:
         count = border.out.shape[1]
-        modes = size + np.arange(count)
+        modes, unit = size + np.arange(count), np.abs(border.hop).max()
         blocks = (
-            (border.orbitals, modes, -border.hop @ border.out),
-            (modes[: border.hop.shape[1]], border.orbitals, -border.hop.conj().T),
-            (modes[: len(border.out_bare)], modes, border.out_bare),
+            (border.orbitals, modes, -unit * border.hop @ border.out),
+            (modes[: border.hop.shape[1]], border.orbitals, -unit * border.hop.conj().T),
+            (modes[: len(border.out_bare)], modes, unit**2 * border.out_bare),
         )
         for down, across, block in blocks:
             rows.append(np.repeat(down, len(across)))
             columns.append(np.tile(across, len(down)))
             values.append(block.ravel())
         outgoing.append(modes[: border.channels])
+        weights.append(np.full(border.channels, unit))
         size += count
     return (
         np.concatenate(rows),
         np.concatenate(columns),
         np.concatenate(values).astype(complex),
         np.concatenate(outgoing),
+        np.concatenate(weights),
         size,
     )
 

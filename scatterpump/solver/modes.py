@@ -41,7 +41,7 @@ def _with_modes(pump: Pump) -> Any:
     except Exception as cause:  # kwant meets modes without velocity at a band edge, or a user's value function fails
         raise InputError(
             f"the modes of the leads cannot be computed at the Fermi level {pump.fermi_level:g} ({told(cause)})",
-            allowed="an energy away from every lead's band edges",
+            allowed="an energy away from every lead's band edges, in a unit in which the hoppings are not tiny",
         ) from cause
     propagating, _ = system.leads[pump.probe].modes(pump.fermi_level)
     if len(propagating.momenta) == 0:

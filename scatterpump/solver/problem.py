@@ -66,6 +66,17 @@ class Problem:
         return max(1, min(MEMORY // int(16 * (elements + 6 * widest)), max(16, int(CACHE / (16 * widest)))))
 
     @cached_property
+    def hopping(self) -> float:
+        """The largest hopping: the energy that inverses are measured by."""
+        blocks, values = self.blocks, np.abs(self.blocks.still)
+        moves = np.flatnonzero(blocks.place >= 0)
+        turns = np.abs(self.path.many(np.arange(4) * np.pi / 2)).max(axis=0, initial=0.0)
+        moves = moves[blocks.place[moves] < len(turns)]
+        values[moves] = turns[blocks.place[moves]]
+        largest = values[(blocks.rows != blocks.columns)].max(initial=0.0)
+        return float(largest or np.abs(self.probe.hop).max() ** 2)
+
+    @cached_property
     def sparse(self) -> SparseDevice:
         """The whole device as one sparse problem."""
         return SparseDevice(self.blocks, [self.probe, *self.others])
@@ -105,12 +116,12 @@ class Problem:
         return cost.sweep(widths, is_real=is_real, transmission=transmission, compiled=has_compiler())
 
     def wanted(self, first: int) -> list[Complex]:
-        """For the layers from `first` on, which of their unknowns are open outgoing modes, shapes (k, w)."""
+        """For the layers from `first` on, the open outgoing amplitudes of their unknowns, shapes (k, w)."""
         layers = self.layers
         found = [np.zeros((len(layers.outgoing), width), dtype=complex) for width in layers.widths[first:]]
         for k, unknown in enumerate(layers.outgoing):
             if layers.level[unknown] >= first:
-                found[layers.level[unknown] - first][k, layers.place[unknown]] = 1.0
+                found[layers.level[unknown] - first][k, layers.place[unknown]] = layers.weights[k]
         return found
 
 

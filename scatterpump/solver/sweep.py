@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -34,8 +35,10 @@ def swept(problem: Problem, elements: Numbers, amplitude: bool) -> tuple[Load, F
     if problem.single:
         real_below = 0 if np.iscomplexobj(elements) else blocks.real_below
         diagonal, lower, upper = (blocks.band(step, elements) for step in (0, 1, -1))
-        found = eliminate_single(diagonal, lower, upper, count, real_below=real_below, amplitude=amplitude)
-        return closed_by_pair(found, problem.probe.hop, amplitude), np.ones(count)
+        unit = problem.hopping
+        found = eliminate_single(diagonal, lower, upper, count, unit=unit, real_below=real_below, amplitude=amplitude)
+        passed = found.passed * problem.layers.weights.max(initial=0.0)  # one mode at most: there is one end
+        return closed_by_pair(replace(found, passed=passed), problem.probe.hop, amplitude), np.ones(count)
     here, amplitudes, growth = eliminated(problem, elements, 0, amplitude)
     return closed_by(here, problem.probe.hop[None], amplitudes), growth
 
@@ -49,6 +52,7 @@ def eliminated(problem: Problem, elements: Numbers, first: int, amplitude: bool)
         lower,
         upper,
         problem.wanted(first) if amplitude else None,
+        unit=problem.hopping,
         real_below=0 if np.iscomplexobj(elements) else blocks.real_below - first,
     )
     return found.block, found.amplitudes, found.growth
