@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.operation.measure import Measure
 from scatterpump.operation.plateaus import Plateau, plateaus
@@ -59,5 +60,5 @@ class Bench:
 
     @cached_property
     def plateaus(self) -> tuple[Plateau, ...]:
-        """The windows of Fermi levels; none without a bulk cell."""
-        return () if self.pump.bulk is None else plateaus(self.pump, between=self.between)
+        """The windows of Fermi levels; none without a cell that was given or is found."""
+        return () if known_cell(self.pump) is None else plateaus(self.pump, between=self.between)
