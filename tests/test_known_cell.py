@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from math import log, pi
+from math import log, pi, sqrt
 from typing import Any
 
 import kwant
@@ -151,6 +151,14 @@ def test_limits_start_from_the_found_gap() -> None:
     short = replace(BUILT, sites=12).pump()
     limit = temperature_limit(replace(short, bulk=None), error=1e-2)
     assert limit.estimate == pytest.approx(bulk_gap(short).distance_upper / log(100), rel=1e-9)
+
+
+def test_chain_whose_waves_have_no_common_period_may_still_have_a_found_cell(sheets: tuple[Sheet, Sheet]) -> None:
+    """A second wave of amplitude 0 takes the builder's cell away, and with it the length, but nothing else."""
+    chain = replace(BUILT, onsite=[Wave(1.5, 3), Wave(0.0, sqrt(2))])
+    assert chain.pump().bulk is None
+    labels = [line.label for line in operating_sheet(chain, samples=0).limits]
+    assert labels == [line.label for line in sheets[1].limits]
 
 
 # --- the audit and the pictures ---

@@ -67,8 +67,11 @@ def drive(bench: Bench) -> Line | None:
 
 
 def length(bench: Bench) -> Line | None:
-    """How short may the device be?"""
-    if bench.gap is None or not isinstance(bench.device, Resizable):
+    """How short may the device be?
+
+    Asked of descriptions that know their own cell, and give it to the pump: only they can build another length.
+    """
+    if bench.gap is None or bench.pump.bulk is None or not isinstance(bench.device, Resizable):
         return None
     found = shortest_device(bench.device, leak=bench.error)
     cell = bench.pump.finalized_bulk.cell_size
