@@ -9,12 +9,15 @@ from typing import Any
 import kwant
 import numpy as np
 import pytest
-from geometries import metallic_ring
+from geometries import honeycomb_ribbon, metallic_ring
 from numpy.testing import assert_allclose
 
+from scatterpump.anatomy.layout import inspect
+from scatterpump.anatomy.period import cell_length
 from scatterpump.audit.examine import examine
 from scatterpump.builder.chain import ModulatedChain
 from scatterpump.builder.description import Lead, Wave
+from scatterpump.builder.ribbon import ModulatedRibbon
 from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import bulk_gap
 from scatterpump.cycle import Cycle
@@ -159,6 +162,38 @@ def test_chain_whose_waves_have_no_common_period_may_still_have_a_found_cell(she
     assert chain.pump().bulk is None
     labels = [line.label for line in operating_sheet(chain, samples=0).limits]
     assert labels == [line.label for line in sheets[1].limits]
+
+
+# --- the layout ---
+
+
+def test_layout_of_an_adopted_system_repeats_like_the_built_one() -> None:
+    given, found = inspect(BUILT.pump()), inspect(ADOPTED.pump())
+    assert found.period == given.period == 3.0
+    text = found.summary()
+    assert "repeats every 3 lattice constants: a cell of 3 orbitals, found 8 times in a row" in " ".join(text.split())
+    assert "3 lattice constants: the cell that the pump was given" in " ".join(given.summary().split())
+
+
+def test_length_of_a_cell_is_the_lattice_vector() -> None:
+    """Two rows of a honeycomb lattice of constant 1 under a wave of three of its unit cells (derived)."""
+    assert cell_length(honeycomb_ribbon(energy=-5.1)) == pytest.approx(3.0, abs=1e-12)
+    ribbon = ModulatedRibbon(sites=16, width=2, fermi_level=-2.5, onsite=[Wave(1.5, 4)]).pump()
+    assert cell_length(replace(ribbon, bulk=None)) == cell_length(ribbon) == 4.0
+
+
+def test_elements_that_repeat_where_places_do_not_have_no_length() -> None:
+    stretched = [x if x < 12 else x + 5 for x in range(24)]
+    pump = Pump(by_hand(stretched), Cycle.angle(), -1.2)
+    assert known_cell(pump) is not None
+    assert cell_length(pump) is None
+    assert "interior          a cell of 3 orbitals, found 8 times in a row" in inspect(pump).summary()
+
+
+def test_layout_says_why_nothing_repeats() -> None:
+    layout = inspect(metallic_ring())
+    assert layout.period is None
+    assert "interior          no cell that changes repeats along the device" in layout.summary()
 
 
 # --- the audit and the pictures ---

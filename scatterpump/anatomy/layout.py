@@ -14,6 +14,8 @@ from numpy.typing import NDArray
 
 from scatterpump.anatomy.geometry import Geometry, geometry
 from scatterpump.anatomy.motion import Motion, watch
+from scatterpump.anatomy.period import cell_length
+from scatterpump.bulk.cell import interior
 from scatterpump.errors import PumpError
 from scatterpump.pump import Pump
 
@@ -72,8 +74,10 @@ class Layout:
     leads : tuple of LeadView
     drive : str
         How H goes along the cycle: "trigonometric, degree 1", "straight between 4 corners", "sampled", or "unknown".
-    period : (float or None)
-        Length of one cell of the interior, in lattice constants; None if the pump has none.
+    interior : str
+        Which cell repeats inside, given or found, or why none does, in words.
+    period : float or None
+        Its length in lattice constants; None without a cell, or if its sites are not that far apart throughout.
     troubles : tuple of str
         Why something is unknown.
     """
@@ -90,6 +94,7 @@ class Layout:
     widths: Indices | None
     leads: tuple[LeadView, ...]
     drive: str
+    interior: str
     period: float | None
     troubles: tuple[str, ...]
 
@@ -125,7 +130,8 @@ def inspect(pump: Pump) -> Layout:
         None if problem is None else problem.layers.widths,
         tuple(_lead(pump, found, number) for number in range(len(found.interfaces))),
         "unknown" if problem is None else _drive(problem.path),
-        _period(pump),
+        "unknown" if problem is None else interior(pump),
+        None if problem is None else cell_length(pump),
         tuple(troubles),
     )
 
@@ -195,12 +201,3 @@ def _cells(system: Any, number: int, dimension: int) -> tuple[Floats, ...]:
     if positions.shape[1] != dimension:
         return ()
     return tuple(positions[cells == n] for n in range(CELLS))
-
-
-def _period(pump: Pump) -> float | None:
-    if pump.bulk is None:
-        return None
-    try:
-        return float(np.linalg.norm(np.array(pump.finalized_bulk.symmetry.periods, dtype=float)[0]))
-    except Exception:  # a cell without a symmetry of its own: nothing that the drawing needs
-        return None

@@ -24,8 +24,7 @@ def describe(layout: Layout) -> str:
     if layout.widths is not None:
         lines += _row("layers", _layers(layout))
     lines += _motion(layout)
-    period = "none known" if layout.period is None else f"repeats every {layout.period:.6g} lattice constants"
-    lines += _row("interior", period)
+    lines += _row("interior", _interior(layout))
     for trouble in layout.troubles:
         lines += _row("UNKNOWN", trouble)
     return "\n".join(lines)
@@ -62,6 +61,12 @@ def _layers(layout: Layout) -> str:
     narrow, wide = int(layout.widths.min()), int(layout.widths.max())
     width = f"{wide}" if narrow == wide else f"{narrow} to {wide}"
     return f"{len(layout.widths)} from the probe on, {width} unknown{'s' * (wide != 1)} wide"
+
+
+def _interior(layout: Layout) -> str:
+    if layout.period is None:
+        return layout.interior
+    return f"repeats every {layout.period:.6g} lattice constants: {layout.interior}"
 
 
 def _motion(layout: Layout) -> list[str]:
