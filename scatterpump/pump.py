@@ -19,7 +19,11 @@ from scatterpump.errors import InputError
 
 __all__ = ["Continuum", "Pump", "Units"]
 
-OF_ANY_LEVEL = ("path", "found cell")  # what is remembered of H(phi) and the probe, without the Fermi level
+OF_ANY_LEVEL = (
+    "path",
+    "found cell",
+    "driven leads",
+)  # what is remembered of H(phi) and the probe, without the Fermi level
 
 
 @dataclass(frozen=True)
