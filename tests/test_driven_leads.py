@@ -125,6 +125,9 @@ def test_lead_that_fails_at_some_phase_says_where(level: Level, words: str) -> N
     with pytest.raises(SolverError, match=words) as caught:
         judge(chain(level, sites=6))
     assert caught.value.phase >= 3
+    assert str(caught.value).startswith("lead 0 failed at phi = ")
+    found = finding(chain(level, sites=6))
+    assert (found.status, found.remedy) == ("alarm", "Mend the value functions of that lead.")
 
 
 def test_leads_are_looked_at_once_for_all_fermi_levels() -> None:

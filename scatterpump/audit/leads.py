@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from math import inf
 from typing import Any
 
 import numpy as np
@@ -10,7 +11,7 @@ import numpy as np
 from scatterpump.audit.check import Outcome, alarm, check, graded, passed
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Place
-from scatterpump.errors import ClosedProbeError, InputError
+from scatterpump.errors import ClosedProbeError, InputError, SolverError
 from scatterpump.pump import Pump
 from scatterpump.solver.leads import DrivenLead, driven_leads
 
@@ -30,7 +31,11 @@ STANDING = 1e-6  # of 2|V|: 1e-12 hoppings from the edge, where velocities are l
 )
 def leads_still(evidence: Evidence) -> Outcome | None:
     """Do all leads stay as they are along the cycle, with the same modes?"""
-    driven = driven_leads(evidence.pump)
+    try:
+        driven = driven_leads(evidence.pump)
+    except SolverError as error:
+        text = str(error)
+        return alarm(inf, 0, f"{text[0].upper()}{text[1:]}.", remedy="Mend the value functions of that lead.")
     if not driven:
         return passed(0, 0, "No lead takes a parameter of the cycle.", basis="exact")
     moving = [lead for lead in driven if not lead.is_still]

@@ -9,7 +9,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from math import inf
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -87,11 +86,11 @@ def _looked_at(pump: Pump) -> tuple[DrivenLead, ...]:
 
 
 def _compared(pump: Pump, number: int, names: tuple[str, ...]) -> DrivenLead:
-    lead, phases = pump.finalized.leads[number], _phases(pump)
-    if not hasattr(lead, "inter_cell_hopping"):
+    phases = _phases(pump)
+    if not hasattr(pump.finalized.leads[number], "inter_cell_hopping"):
         return DrivenLead(number, names, inf, 0.0, 0.0, 0)
-    start = _elements(pump, lead, 0.0)
-    changes = [float(np.abs(_elements(pump, lead, phase) - start).max(initial=0.0)) for phase in phases]
+    start = _elements(pump, number, 0.0)
+    changes = [float(np.abs(_elements(pump, number, phase) - start).max(initial=0.0)) for phase in phases]
     largest = int(np.argmax(changes))
     scale = float(np.abs(start).max(initial=0.0))
     return DrivenLead(number, names, changes[largest], phases[largest], scale, len(phases) + 1)
@@ -105,14 +104,14 @@ def _phases(pump: Pump) -> list[float]:
     return [phase for phase in (*spread.tolist(), *some) if phase % TURN]
 
 
-def _elements(pump: Pump, lead: Any, phase: float) -> NDArray[np.complex128]:
+def _elements(pump: Pump, number: int, phase: float) -> NDArray[np.complex128]:
     """The elements of a lead's cell and of its hop to the next one, in one row."""
-    parameters = pump.parameters(phase)
+    lead, parameters, what = pump.finalized.leads[number], pump.parameters(phase), f"lead {number}"
     try:
         parts = (lead.cell_hamiltonian(params=parameters), lead.inter_cell_hopping(params=parameters))
         found = np.concatenate([np.asarray(part, dtype=complex).ravel() for part in parts])
     except Exception as cause:  # a user's value function may raise anything
-        raise SolverError(phase, parameters, cause) from cause
+        raise SolverError(phase, parameters, cause, what) from cause
     if not np.isfinite(found).all():
-        raise SolverError(phase, parameters, ValueError("a lead has elements that are not finite"))
+        raise SolverError(phase, parameters, ValueError("it has elements that are not finite"), what)
     return found
