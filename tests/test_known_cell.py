@@ -4,12 +4,13 @@ from __future__ import annotations
 
 from dataclasses import replace
 from math import log, pi, sqrt
+from types import SimpleNamespace
 from typing import Any
 
 import kwant
 import numpy as np
 import pytest
-from geometries import honeycomb_ribbon, metallic_ring
+from geometries import honeycomb_ribbon, metallic_ring, three_leads, with_moving_lead
 from numpy.testing import assert_allclose
 
 from scatterpump.anatomy.layout import inspect
@@ -44,12 +45,17 @@ class Adopted:
         return Pump(by_hand(range(24)), Cycle.angle(), self.level, name=BUILT.name)
 
 
-def by_hand(places: Any) -> Any:
-    """Return a chain of 24 sites at `places` and a neutral one before and behind it, with its leads."""
+def by_hand(places: Any, noise: Any = (0.0,) * 24) -> Any:
+    """Return a chain of 24 sites at `places`, raised by `noise`, a neutral one on either side, and leads."""
     lattice, system = kwant.lattice.chain(norbs=1), kwant.Builder()
     ends = (places[0] - 1, places[-1] + 1)
     number = {x: n for n, x in enumerate(places)}
-    system[(lattice(x) for x in places)] = lambda site, phi: 1.5 * np.cos(2 * pi * number[site.tag[0]] / 3 - phi)
+
+    def level(site: Any, phi: Any) -> Any:
+        n = number[site.tag[0]]
+        return noise[n] + 1.5 * np.cos(2 * pi * n / 3 - phi)
+
+    system[(lattice(x) for x in places)] = level
     system[(lattice(x) for x in ends)] = 0.0
     for a, b in zip((ends[0], *places), (*places, ends[1]), strict=True):
         system[lattice(a), lattice(b)] = -1.0
@@ -164,6 +170,15 @@ def test_chain_whose_waves_have_no_common_period_may_still_have_a_found_cell(she
     assert labels == [line.label for line in sheets[1].limits]
 
 
+def test_sheet_says_why_it_knows_no_limits_and_where_the_charge_goes() -> None:
+    noise = np.random.default_rng(3).uniform(-0.1, 0.1, 24)
+    pump = Pump(by_hand(range(24), noise), Cycle.angle(), -1.2, lead_names=("west", "east"))
+    found = operating_sheet(SimpleNamespace(pump=lambda: pump), samples=0)
+    text = " ".join(found.summary().split())
+    assert "limits none to tell: no cell that changes repeats along the device" in text
+    assert "+1 from west to east" in text
+
+
 # --- the layout ---
 
 
@@ -194,6 +209,20 @@ def test_layout_says_why_nothing_repeats() -> None:
     layout = inspect(metallic_ring())
     assert layout.period is None
     assert "interior          no cell that changes repeats along the device" in layout.summary()
+
+
+def test_layout_calls_leads_by_their_names() -> None:
+    pump = replace(three_leads(sites=12, at=6), lead_names=("west", "east", "gauge"))
+    text = " ".join(inspect(pump).summary().split())
+    assert "lead 0 west: probe, attached to 1 site" in text
+    assert "lead 2 gauge: counts as part of the drain, attached to 1 site" in text
+    assert "12 on-site values change, by up to 1.5; no bond changes" in text
+
+
+def test_layout_knows_the_interior_where_the_leads_are_unusable() -> None:
+    layout = inspect(with_moving_lead())
+    assert (layout.drive, layout.period) == ("trigonometric in phi, degree 1", 3.0)
+    assert layout.widths is None
 
 
 # --- the audit and the pictures ---

@@ -18,6 +18,7 @@ from scatterpump.anatomy.period import cell_length
 from scatterpump.bulk.cell import interior
 from scatterpump.errors import PumpError
 from scatterpump.pump import Pump
+from scatterpump.solver.hamiltonian import driven_path
 
 __all__ = ["Layout", "LeadView", "inspect"]
 
@@ -34,7 +35,10 @@ class LeadView:
     Attributes
     ----------
     number : int
+    name : str
+        What the pump calls it; empty if it has no name.
     role : "probe", "drain" or "lead"
+        Further leads count as part of the drain.
     sites : (k,) int array
         Sites of the device that it is attached to.
     modes : int or None
@@ -44,6 +48,7 @@ class LeadView:
     """
 
     number: int
+    name: str
     role: str
     sites: Indices
     modes: int | None
@@ -129,9 +134,9 @@ def inspect(pump: Pump) -> Layout:
         None if motion is None or problem is None else _layers(problem, motion, len(found.positions)),
         None if problem is None else problem.layers.widths,
         tuple(_lead(pump, found, number) for number in range(len(found.interfaces))),
-        "unknown" if problem is None else _drive(problem.path),
-        "unknown" if problem is None else interior(pump),
-        None if problem is None else cell_length(pump),
+        "unknown" if motion is None else _drive(driven_path(pump)[1]),
+        "unknown" if motion is None else interior(pump),
+        None if motion is None else cell_length(pump),
         tuple(troubles),
     )
 
@@ -176,7 +181,9 @@ def _drive(path: Any) -> str:
 def _lead(pump: Pump, found: Geometry, number: int) -> LeadView:
     lead, sites = pump.finalized.leads[number], found.interfaces[number]
     role = "probe" if number == pump.probe else "drain" if number == pump.drain else "lead"
-    return LeadView(number, role, sites, _modes(pump, lead), _cells(pump.finalized, number, found.positions.shape[1]))
+    name = pump.lead_names[number] if pump.lead_names else ""
+    cells = _cells(pump.finalized, number, found.positions.shape[1])
+    return LeadView(number, name, role, sites, _modes(pump, lead), cells)
 
 
 def _modes(pump: Pump, lead: Any) -> int | None:
