@@ -91,7 +91,7 @@ def integer(bench: Bench) -> Line:
         return Line("charges a cycle", "computed", "none to be trusted; see the verdict", {"number": None})
     text = f"{winding.number:+d}" if winding.number else "0"
     how: How = "proven" if winding.exact else "estimated"
-    return Line("charges a cycle", how, f"{text} from probe to drain", {"number": winding.number})
+    return Line("charges a cycle", how, f"{text} {bench.verdict.route}", {"number": winding.number})
 
 
 def leak(bench: Bench) -> Line | None:
