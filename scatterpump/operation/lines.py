@@ -97,7 +97,7 @@ def integer(bench: Bench) -> Line:
 def leak(bench: Bench) -> Line | None:
     """How much leaks through?"""
     winding = bench.verdict.winding
-    if winding is None or not 0 < winding.leak.bound < 1:
+    if winding is None or bench.verdict.is_void or not 0 < winding.leak.bound < 1:
         return None
     text = f"at most {winding.leak.bound:.1e} of the electrons, at every phi"
     return Line("leak", _if_exact(winding.exact), text, {"bound": float(winding.leak.bound)})

@@ -98,6 +98,8 @@ class Sheet:
 
     def _why_no_limits(self) -> str:
         gap = self.verdict.gap
+        if self.verdict.is_void:
+            return "with what the alarm names none means anything"
         return self.verdict.interior if gap is None else "the interior is not gapped at this Fermi level"
 
     def _plateau(self, plateau: Plateau) -> str:
