@@ -54,6 +54,8 @@ def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
     lines += _row("in order", ", ".join(f.check for f in report.findings if f.status == "pass"))
     if report.unseen:
         lines += _row("not looked at", ", ".join(report.unseen))
+    if report.idle:
+        lines += _row("do not apply", ", ".join(report.idle))
     if report.quick:
         lines += _row("how sure", "sampled at single phases, not proven; 'scatterpump verdict' proves")
     return "\n".join([*lines, *_counts(report)])

@@ -232,5 +232,6 @@ def test_audit_and_pictures_ask_for_the_same_cell() -> None:
     names = [{finding.check for finding in examine(device.pump(), quick=True).findings} for device in (BUILT, ADOPTED)]
     assert names[0] == names[1]
     assert "Fermi level in gap" in names[1]
+    assert {"Fermi level in gap", "leak falls with length"} <= set(examine(metallic_ring(), quick=True).idle)
     spectra = [Album(device.pump()).spectrum for device in (BUILT, ADOPTED)]
     assert_allclose(spectra[1].top, spectra[0].top, rtol=0, atol=1e-12)
