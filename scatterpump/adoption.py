@@ -2,7 +2,7 @@
 
 Any system with leads will do that kwant finalizes from a Builder, whatever its lattice, orbitals and shape.  What is
 refused here would fail later, in words of another layer, or mean nothing: an infinite system, one without leads, a lead
-without modes, and systems whose values are not to be had site by site.
+without modes, systems whose values are not to be had site by site, and value functions whose parameters have no names.
 """
 
 from __future__ import annotations
@@ -46,6 +46,8 @@ def finalized(system: Any) -> Any:
                 f"lead {number} is given by its self-energy alone, without modes to send electrons in",
                 allowed="leads made of a Builder with a translational symmetry, or a kwant.builder.ModesLead",
             )
+    for where, part in (("the system", found), *((f"lead {n}", lead) for n, lead in enumerate(found.leads))):
+        _require_names(part, where)
     return found
 
 
@@ -62,7 +64,23 @@ def finalized_cell(cell: Any) -> Any:
             f"the bulk is {_kind(cell)}, which does not repeat",
             allowed="a kwant.Builder with one translational symmetry, pointing away from the probe",
         )
-    return _finalize(cell)
+    found = _finalize(cell)
+    _require_names(found, "the bulk")
+    return found
+
+
+def _require_names(part: Any, where: str) -> None:
+    """Refuse value functions whose parameters kwant cannot tell by name: it says why in place of the names."""
+    for value, names in (*getattr(part, "onsites", ()), *getattr(part, "hoppings", ())):
+        if isinstance(names, Exception):
+            reason, _, place = str(names).partition(":\n")
+            function = getattr(value, "__name__", "a value function")
+            line = place.partition("line ")[2].partition(",")[0]
+            raise InputError(
+                f"{function}{f' (line {line})' * bool(line)}, a value function of {where}, cannot be used: {reason}",
+                allowed="functions of the site or sites and of parameters by name, such as f(site, phi); a number that "
+                "stays fixed comes from the function's surroundings, or from the pump's constants",
+            ) from names
 
 
 def _is_infinite(system: Any) -> bool:

@@ -125,12 +125,20 @@ class SolverError(PumpError):
         Where, in radians.
     parameters : dict
         The pump's parameters there.
+    what : str
+        What failed.
     """
 
-    def __init__(self, phase: float, parameters: dict[str, object], cause: BaseException) -> None:
-        self.phase, self.parameters = phase, parameters
+    def __init__(
+        self,
+        phase: float,
+        parameters: dict[str, object],
+        cause: BaseException,
+        what: str = "the Hamiltonian or its solution",
+    ) -> None:
+        self.phase, self.parameters, self.what = phase, parameters, what
         values = ", ".join(f"{name}={_shown(value)}" for name, value in parameters.items())
-        super().__init__(f"the Hamiltonian or its solution failed at phi = {phase:.6g} ({values}): {told(cause)}")
+        super().__init__(f"{what} failed at phi = {phase:.6g} ({values}): {told(cause)}")
 
 
 class CycleError(PumpError):

@@ -19,6 +19,12 @@ from scatterpump.errors import InputError
 
 __all__ = ["Continuum", "Pump", "Units"]
 
+OF_ANY_LEVEL = (
+    "path",
+    "found cell",
+    "driven leads",
+)  # what is remembered of H(phi) and the probe, without the Fermi level
+
 
 @dataclass(frozen=True)
 class Continuum:
@@ -198,8 +204,7 @@ class Pump:
     def at_fermi_level(self, fermi_level: float) -> Pump:
         """Return the same pump at another Fermi level."""
         other = replace(self, system=self.finalized, bulk=self.finalized_bulk, fermi_level=fermi_level)
-        if "path" in self.remembered:  # H(phi) does not know the Fermi level
-            other.remembered["path"] = self.remembered["path"]
+        other.remembered.update({name: self.remembered[name] for name in OF_ANY_LEVEL if name in self.remembered})
         return other
 
     def seen_from(self, lead: int) -> Pump:

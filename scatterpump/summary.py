@@ -20,6 +20,7 @@ __all__ = ["summarise", "summarise_audit"]
 WIDTH = 98
 LABEL = 18
 SHOWN_INTERVALS = 4
+VOID = "not at all: with what the alarm names no proof, gap or leak means anything"
 
 
 def summarise(verdict: Verdict) -> str:
@@ -28,17 +29,21 @@ def summarise(verdict: Verdict) -> str:
     for finding in verdict.audit.alarms:
         lines += _finding(finding)
     lines += _integer(verdict)
-    if verdict.winding is not None:
-        lines += _winding(verdict.winding)
+    lines += _row("how sure", VOID) if verdict.is_void else _margins(verdict)
+    for finding in verdict.audit.cautions:
+        lines += _finding(finding)
+    lines += _counts(verdict.audit)
+    return "\n".join(lines)
+
+
+def _margins(verdict: Verdict) -> list[str]:
+    lines = [] if verdict.winding is None else _winding(verdict.winding)
     if verdict.resolved is not None:
         lines += _row("conserved", _resolved(verdict.resolved))
     lines += _row("bulk gap", f"none: {verdict.interior}") if verdict.gap is None else _gap(verdict.gap)
     if verdict.chern is not None:
         lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
-    for finding in verdict.audit.cautions:
-        lines += _finding(finding)
-    lines += _counts(verdict.audit)
-    return "\n".join(lines)
+    return lines
 
 
 def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
@@ -49,6 +54,8 @@ def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
     lines += _row("in order", ", ".join(f.check for f in report.findings if f.status == "pass"))
     if report.unseen:
         lines += _row("not looked at", ", ".join(report.unseen))
+    if report.idle:
+        lines += _row("do not apply", ", ".join(report.idle))
     if report.quick:
         lines += _row("how sure", "sampled at single phases, not proven; 'scatterpump verdict' proves")
     return "\n".join([*lines, *_counts(report)])
@@ -84,6 +91,8 @@ def _integer(verdict: Verdict) -> list[str]:
         return _row("charges a cycle", "undefined: r is singular on the cycle")
     if winding.number is None:
         return _row("charges a cycle", "not proven")
+    if verdict.is_void:
+        return _row("charges a cycle", "none that means anything")
     if not verdict.trustworthy:
         return _row("charges a cycle", f"not to be trusted (det r winds {_signed(winding.number)} times)")
     return _row("charges a cycle", f"{_signed(winding.number)} {verdict.route}")

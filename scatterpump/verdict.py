@@ -65,6 +65,11 @@ class Verdict:
         """True if there is a proven integer and no alarm."""
         return self.winding is not None and self.winding.certified and self.audit.passed
 
+    @property
+    def is_void(self) -> bool:
+        """True if by an alarm there is no r(phi) to speak of, as without a Hermitian H: no proof counts then."""
+        return bool(self.audit.unseen)  # with proofs no check is left out but for such an alarm
+
     def to_dict(self) -> dict[str, Any]:
         """Return plain data: numbers, text, lists and dictionaries; an infinite number is None."""
         content = {"scatterpump": version(), "trustworthy": self.trustworthy, **asdict(self)}

@@ -117,6 +117,40 @@ def test_lead_that_depends_on_the_cycle_is_refused() -> None:
     assert [alarm.check for alarm in examine(pump).alarms] == ["leads still"]
 
 
+def test_device_that_takes_nothing_from_its_cycle_is_told_so() -> None:
+    lattice, system = kwant.lattice.chain(norbs=1), kwant.Builder()
+    system[(lattice(x) for x in range(12))] = 0.0
+    system[lattice.neighbors()] = -1.0
+    for direction in (-1, 1):
+        lead = kwant.Builder(kwant.TranslationalSymmetry((direction,)))
+        lead[lattice(0)], lead[lattice.neighbors()] = 0.0, -1.0
+        system.attach_lead(lead)
+    verdict = judge(Pump(system, Cycle.angle(), 0.5))
+    assert not verdict.trustworthy
+    assert "cycle drives the device" in {caution.check for caution in verdict.audit.cautions}
+
+
+@pytest.mark.parametrize(
+    ("level", "reason"),
+    [
+        (lambda site, phi, depth=1.5: depth * np.cos(phi), "must not have default values"),
+        (lambda site, *parameters: 0.0, "must not take"),
+        (lambda site, *, phi: np.cos(phi), "Keyword-only"),
+    ],
+    ids=["default", "starred", "keyword only"],
+)
+@pytest.mark.parametrize("place", ["the system", "lead 0"])
+def test_value_function_whose_parameters_have_no_names_is_refused(level: Any, reason: str, place: str) -> None:
+    lattice, system = kwant.lattice.chain(norbs=1), kwant.Builder()
+    system[(lattice(x) for x in range(3))] = level if place == "the system" else 0.0
+    system[lattice.neighbors()] = -1.0
+    lead = kwant.Builder(kwant.TranslationalSymmetry((-1,)))
+    lead[lattice(0)], lead[lattice.neighbors()] = level if place == "lead 0" else 0.0, -1.0
+    system.attach_lead(lead)
+    with pytest.raises(InputError, match=rf"line \d+\), a value function of {place}, cannot be used: .*{reason}"):
+        Pump(system, Cycle.angle(), 0.5, drain=None)
+
+
 @pytest.mark.parametrize("level", [0.0, GAP])
 def test_island_that_nothing_connects_changes_nothing(level: float) -> None:
     """Its levels may even pass the Fermi level: no electron gets there (derived)."""

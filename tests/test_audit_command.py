@@ -127,7 +127,7 @@ def test_inspect_prints_the_device(device: Path) -> None:
         "bonds 37",
         "probe, attached to 1 site, 1 open mode",
         "layers 39 from the probe on, 1 unknown wide",
-        "36 on-site values change, by up to 1.5; 0 bonds",
+        "36 on-site values change, by up to 1.5; no bond changes",
         "trigonometric in phi, degree 1",
         "repeats every 3 lattice constants",
     ):

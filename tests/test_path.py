@@ -194,6 +194,13 @@ def test_a_strong_still_element_does_not_hide_what_a_weak_one_does(kind: str, wa
     assert miss < 1e-12 * max(1.0, wall)
 
 
+def test_a_path_of_no_elements_is_trigonometric() -> None:
+    """A device that takes nothing from its cycle has none that it drives."""
+    path = follow_many(lambda phases: np.empty((len(phases), 0), dtype=complex), Cycle.angle())
+    assert isinstance(path, TrigonometricPath)
+    assert path.many(np.array([0.0, 1.0])).shape == (2, 0)
+
+
 def test_an_element_that_is_rounding_does_not_spoil_an_exact_path() -> None:
     """Far below what a look allows for as noise."""
     wave = Wave(2, 3)

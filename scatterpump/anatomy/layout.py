@@ -14,8 +14,11 @@ from numpy.typing import NDArray
 
 from scatterpump.anatomy.geometry import Geometry, geometry
 from scatterpump.anatomy.motion import Motion, watch
+from scatterpump.anatomy.period import cell_length
+from scatterpump.bulk.cell import interior
 from scatterpump.errors import PumpError
 from scatterpump.pump import Pump
+from scatterpump.solver.hamiltonian import driven_path
 
 __all__ = ["Layout", "LeadView", "inspect"]
 
@@ -32,7 +35,10 @@ class LeadView:
     Attributes
     ----------
     number : int
+    name : str
+        What the pump calls it; empty if it has no name.
     role : "probe", "drain" or "lead"
+        Further leads count as part of the drain.
     sites : (k,) int array
         Sites of the device that it is attached to.
     modes : int or None
@@ -42,6 +48,7 @@ class LeadView:
     """
 
     number: int
+    name: str
     role: str
     sites: Indices
     modes: int | None
@@ -72,8 +79,10 @@ class Layout:
     leads : tuple of LeadView
     drive : str
         How H goes along the cycle: "trigonometric, degree 1", "straight between 4 corners", "sampled", or "unknown".
-    period : (float or None)
-        Length of one cell of the interior, in lattice constants; None if the pump has none.
+    interior : str
+        Which cell repeats inside, given or found, or why none does, in words.
+    period : float or None
+        Its length in lattice constants; None without a cell, or if its sites are not that far apart throughout.
     troubles : tuple of str
         Why something is unknown.
     """
@@ -90,6 +99,7 @@ class Layout:
     widths: Indices | None
     leads: tuple[LeadView, ...]
     drive: str
+    interior: str
     period: float | None
     troubles: tuple[str, ...]
 
@@ -124,8 +134,9 @@ def inspect(pump: Pump) -> Layout:
         None if motion is None or problem is None else _layers(problem, motion, len(found.positions)),
         None if problem is None else problem.layers.widths,
         tuple(_lead(pump, found, number) for number in range(len(found.interfaces))),
-        "unknown" if problem is None else _drive(problem.path),
-        _period(pump),
+        "unknown" if motion is None else _drive(driven_path(pump)[1]),
+        "unknown" if motion is None else interior(pump),
+        None if motion is None else cell_length(pump),
         tuple(troubles),
     )
 
@@ -170,7 +181,9 @@ def _drive(path: Any) -> str:
 def _lead(pump: Pump, found: Geometry, number: int) -> LeadView:
     lead, sites = pump.finalized.leads[number], found.interfaces[number]
     role = "probe" if number == pump.probe else "drain" if number == pump.drain else "lead"
-    return LeadView(number, role, sites, _modes(pump, lead), _cells(pump.finalized, number, found.positions.shape[1]))
+    name = pump.lead_names[number] if pump.lead_names else ""
+    cells = _cells(pump.finalized, number, found.positions.shape[1])
+    return LeadView(number, name, role, sites, _modes(pump, lead), cells)
 
 
 def _modes(pump: Pump, lead: Any) -> int | None:
@@ -195,12 +208,3 @@ def _cells(system: Any, number: int, dimension: int) -> tuple[Floats, ...]:
     if positions.shape[1] != dimension:
         return ()
     return tuple(positions[cells == n] for n in range(CELLS))
-
-
-def _period(pump: Pump) -> float | None:
-    if pump.bulk is None:
-        return None
-    try:
-        return float(np.linalg.norm(np.array(pump.finalized_bulk.symmetry.periods, dtype=float)[0]))
-    except Exception:  # a cell without a symmetry of its own: nothing that the drawing needs
-        return None

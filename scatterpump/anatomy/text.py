@@ -5,12 +5,14 @@ from __future__ import annotations
 from textwrap import wrap
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterpump.anatomy.layout import UNREACHED, Layout, LeadView
 from scatterpump.version import version
 
 __all__ = ["describe"]
 
+Floats = NDArray[np.float64]
 WIDTH, LABEL = 98, 18
 
 
@@ -24,8 +26,7 @@ def describe(layout: Layout) -> str:
     if layout.widths is not None:
         lines += _row("layers", _layers(layout))
     lines += _motion(layout)
-    period = "none known" if layout.period is None else f"repeats every {layout.period:.6g} lattice constants"
-    lines += _row("interior", period)
+    lines += _row("interior", _interior(layout))
     for trouble in layout.troubles:
         lines += _row("UNKNOWN", trouble)
     return "\n".join(lines)
@@ -54,7 +55,9 @@ def _lead(lead: LeadView) -> str:
         if lead.modes is None
         else f"{lead.modes} open mode{'s' * (lead.modes != 1)} at the Fermi level"
     )
-    return f"{lead.role}, attached to {len(lead.sites)} site{'s' * (len(lead.sites) != 1)}, {modes}"
+    role = "counts as part of the drain" if lead.role == "lead" else lead.role
+    name = f"{lead.name}: " if lead.name else ""
+    return f"{name}{role}, attached to {len(lead.sites)} site{'s' * (len(lead.sites) != 1)}, {modes}"
 
 
 def _layers(layout: Layout) -> str:
@@ -64,13 +67,23 @@ def _layers(layout: Layout) -> str:
     return f"{len(layout.widths)} from the probe on, {width} unknown{'s' * (wide != 1)} wide"
 
 
+def _interior(layout: Layout) -> str:
+    if layout.period is None:
+        return layout.interior
+    return f"repeats every {layout.period:.6g} lattice constant{'s' * (layout.period != 1)}: {layout.interior}"
+
+
 def _motion(layout: Layout) -> list[str]:
     if layout.site_change is None or layout.bond_change is None:
         return []
     sites, bonds = layout.site_change, layout.bond_change
-    text = (
-        f"{np.count_nonzero(sites)} on-site values change, by up to {sites.max(initial=0.0):.4g}; "
-        f"{np.count_nonzero(bonds)} bonds, by up to {bonds.max(initial=0.0):.4g}; the largest element of H is "
-        f"{layout.scale:.4g}"
-    )
+    changes = f"{_changing(sites, 'on-site value')}; {_changing(bonds, 'bond')}"
+    text = f"{changes}; the largest element of H is {layout.scale:.4g}"
     return [*_row("along the cycle", text), *_row("change of H", layout.drive)]
+
+
+def _changing(changes: Floats, name: str) -> str:
+    count = np.count_nonzero(changes)
+    if not count:
+        return f"no {name} changes"
+    return f"{count} {name}{'s change' if count > 1 else ' changes'}, by up to {changes.max():.4g}"

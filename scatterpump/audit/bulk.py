@@ -9,7 +9,7 @@ import numpy as np
 from scatterpump.audit.check import Outcome, alarm, caution, check, passed
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Place
-from scatterpump.bulk.cell import bloch_cell
+from scatterpump.bulk.cell import BlochCell
 from scatterpump.bulk.gap import FLOOR, BulkGap
 
 __all__ = ["fermi_level_in_gap"]
@@ -30,9 +30,10 @@ SMALL_CELL = 24  # orbitals up to which the large grid costs little
 )
 def fermi_level_in_gap(evidence: Evidence) -> Outcome | None:
     """Does the Fermi level stay inside one gap of the interior, over the whole (k, phi) torus?"""
-    if not evidence.has_cell:
+    cell, gap = evidence.cell, evidence.gap
+    if cell is None:
         return None
-    return _sampled(evidence) if evidence.gap is None else _proven(evidence.gap, evidence.pump.fermi_level)
+    return _sampled(cell) if gap is None else _proven(gap, cell.fermi_level)
 
 
 def _proven(gap: BulkGap, level: float) -> Outcome:
@@ -49,9 +50,9 @@ def _proven(gap: BulkGap, level: float) -> Outcome:
     return passed(gap.distance_lower, limit, text, place, basis="proven")
 
 
-def _sampled(evidence: Evidence) -> Outcome:
+def _sampled(cell: BlochCell) -> Outcome:
     """The same from a grid of k and phi."""
-    cell, level = bloch_cell(evidence.pump), evidence.pump.fermi_level
+    level = cell.fermi_level
     n_k, n_phi = GRID if cell.bands <= SMALL_CELL else SMALL_GRID
     momenta, phases = (2 * np.pi * np.arange(n) / n for n in (n_k, n_phi))
     h, hop = np.moveaxis(cell.blocks(phases), 1, 0)

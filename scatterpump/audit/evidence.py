@@ -12,10 +12,10 @@ from numpy.typing import NDArray
 
 from scatterpump.anatomy.geometry import Geometry, geometry
 from scatterpump.anatomy.motion import Motion, watch
-from scatterpump.bulk.cell import bloch_cell
+from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.bulk.chern import chern_number
 from scatterpump.bulk.gap import BulkGap, bulk_gap
-from scatterpump.errors import ClosedGapError, NoBulkError, SingularReflectionError
+from scatterpump.errors import ClosedGapError, SingularReflectionError
 from scatterpump.pump import Pump
 from scatterpump.solver.direct import scattering_matrices
 from scatterpump.solver.folded import FoldedDevice, fold
@@ -96,23 +96,19 @@ class Evidence:
         return scattering_matrices(self.pump, np.array(PROBED))
 
     @cached_property
-    def has_cell(self) -> bool:
-        """Whether a cell repeats in the interior, given or found."""
-        try:
-            bloch_cell(self.pump)
-        except NoBulkError:
-            return False
-        return True
+    def cell(self) -> BlochCell | None:
+        """The cell that repeats in the interior, given or found, or None."""
+        return known_cell(self.pump)
 
     @cached_property
     def gap(self) -> BulkGap | None:
         """The proven gap; None without a repeating cell, or in a quick audit."""
-        return None if self.quick or not self.has_cell else bulk_gap(self.pump)
+        return None if self.quick or self.cell is None else bulk_gap(self.pump)
 
     @cached_property
     def chern(self) -> int | None:
         """Chern number; None without a repeating cell, where the gap closes, or in a quick audit."""
-        if self.quick or not self.has_cell:
+        if self.quick or self.cell is None:
             return None
         try:
             return chern_number(self.pump)

@@ -73,14 +73,17 @@ def run_checks(evidence: Evidence) -> AuditReport:
 
     found: list[Finding] = []
     unseen: list[str] = []
+    idle: list[str] = []
     blocked = False
     with threadpool_limits(1), np.errstate(all="ignore"):  # small matrices; what overflows is told by the findings
         for stage in STAGES:
             for check in stage.checks:
                 if blocked or (check.needs_proof and evidence.quick):
                     unseen.append(check.name)
-                elif (finding := check(evidence)) is not None:
+                elif (finding := check(evidence)) is None:
+                    idle.append(check.name)
+                else:
                     found.append(finding)
             needed = {check.name for check in stage.needed}
             blocked = blocked or any(f.check in needed and f.status == "alarm" for f in found)
-    return AuditReport(tuple(found), tuple(unseen), evidence.quick)
+    return AuditReport(tuple(found), tuple(unseen), evidence.quick, tuple(idle))

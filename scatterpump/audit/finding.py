@@ -96,11 +96,14 @@ class AuditReport:
         Names of checks that were not made: they need a proof, or something that an alarm says is not there.
     quick : bool
         True if no proof was tried: findings hold at the phases sampled.
+    idle : tuple of str
+        Names of checks that have nothing to look at, such as those on bands of a device in which no cell repeats.
     """
 
     findings: tuple[Finding, ...]
     unseen: tuple[str, ...] = ()
     quick: bool = False
+    idle: tuple[str, ...] = ()
 
     @property
     def alarms(self) -> tuple[Finding, ...]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from math import inf
 from typing import Any
 
 import numpy as np
@@ -10,9 +11,9 @@ import numpy as np
 from scatterpump.audit.check import Outcome, alarm, check, graded, passed
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Place
-from scatterpump.errors import ClosedProbeError, InputError
+from scatterpump.errors import ClosedProbeError, InputError, SolverError
 from scatterpump.pump import Pump
-from scatterpump.solver.modes import varying_leads
+from scatterpump.solver.leads import DrivenLead, driven_leads
 
 __all__ = ["leads_still", "modes_move", "probe_open"]
 
@@ -30,15 +31,30 @@ STANDING = 1e-6  # of 2|V|: 1e-12 hoppings from the edge, where velocities are l
 )
 def leads_still(evidence: Evidence) -> Outcome | None:
     """Do all leads stay as they are along the cycle, with the same modes?"""
-    varying = varying_leads(evidence.pump)
-    if not varying:
-        return passed(0, 0, "No lead depends on the cycle.", basis="exact")
-    lead, names = varying[0]
-    text = f"Lead {lead} depends on {', '.join(names)}, so its modes change along the cycle"
-    counts = _mode_counts(evidence.pump, lead)
+    try:
+        driven = driven_leads(evidence.pump)
+    except SolverError as error:
+        text = str(error)
+        return alarm(inf, 0, f"{text[0].upper()}{text[1:]}.", remedy="Mend the value functions of that lead.")
+    if not driven:
+        return passed(0, 0, "No lead takes a parameter of the cycle.", basis="exact")
+    moving = [lead for lead in driven if not lead.is_still]
+    if not moving:
+        return passed(0, 0, _still(driven))
+    lead = moving[0]
+    text = lead.problem[0].upper() + lead.problem[1:] + ", so its modes change along the cycle"
+    counts = _mode_counts(evidence.pump, lead.number)
     if len(counts) > 1:
         text += f" (between {min(counts)} and {max(counts)} of them are open)"
-    return alarm(len(varying), 0, text + " and det r is not comparable.", Place(lead=lead), basis="exact")
+    return alarm(len(moving), 0, text + " and det r is not comparable.", Place(phase=lead.phase, lead=lead.number))
+
+
+def _still(leads: tuple[DrivenLead, ...]) -> str:
+    numbers, names = [str(lead.number) for lead in leads], sorted({name for lead in leads for name in lead.names})
+    one = len(leads) == 1
+    text = f"Lead{'' if one else 's'} {', '.join(numbers)} take{'s' if one else ''} {', '.join(names)}"
+    looked = min(lead.phases for lead in leads)
+    return f"{text}, but {'its' if one else 'their'} elements are the same at all {looked} phases sampled."
 
 
 def _mode_counts(pump: Pump, lead: int) -> set[int]:

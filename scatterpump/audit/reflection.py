@@ -7,7 +7,6 @@ from math import ceil, log
 from scatterpump.audit.check import Outcome, alarm, caution, check, graded, passed
 from scatterpump.audit.evidence import Evidence
 from scatterpump.audit.finding import Place
-from scatterpump.bulk.cell import bloch_cell
 from scatterpump.bulk.decay import decay_per_cell
 
 __all__ = ["decays", "leakage", "reflection_invertible"]
@@ -80,9 +79,9 @@ def reflection_invertible(evidence: Evidence) -> Outcome | None:
 )
 def decays(evidence: Evidence) -> Outcome | None:
     """How fast do states at the Fermi level die out in the interior, and which length does that ask for?"""
-    if not evidence.has_cell:
+    if evidence.cell is None:
         return None
-    cheap = bloch_cell(evidence.pump).bands <= SMALL_CELL
+    cheap = evidence.cell.bands <= SMALL_CELL
     rate = decay_per_cell(evidence.pump, phases=PHASES if cheap else FEW_PHASES)
     if rate >= PROPAGATING:
         text = "At some phase a state at the Fermi level propagates through the interior, so no length stops the leak."

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -20,11 +21,11 @@ from scatterpump.errors import NoBulkError, SolverError
 from scatterpump.pump import Pump
 from scatterpump.solver.harmonics import Harmonics, fit
 
-__all__ = ["BlochCell", "bloch_cell", "interior"]
+__all__ = ["BlochCell", "bloch_cell", "interior", "known_cell"]
 
 Matrices = NDArray[np.complex128]
 Sample = Callable[[Any], Matrices]
-REMEMBERED = "bloch cell"
+GIVEN = "the cell that the pump was given"
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,16 +38,23 @@ class BlochCell:
         The pump whose interior this is.
     sample : callable
         Phases (n,) to (h, V) at each of them, shape (n, 2, q, q).
-    harmonics : Harmonics or None
-        Fourier coefficients of the stack (h, V), shape (2K+1, 2, q, q), or None if phi enters otherwise.
-    origin : str
-        Where the cell comes from, in words.
+    found : FoundCell or None
+        Where the cell is in the device; None if the pump was given it.
     """
 
     pump: Pump
     sample: Sample
-    harmonics: Harmonics | None
-    origin: str
+    found: FoundCell | None
+
+    @property
+    def origin(self) -> str:
+        """Where the cell comes from, in words."""
+        return GIVEN if self.found is None else self.found.origin
+
+    @cached_property
+    def harmonics(self) -> Harmonics | None:
+        """Fourier coefficients of the stack (h, V), shape (2K+1, 2, q, q), or None if phi enters otherwise."""
+        return fit(self.sample) if self.found is None else self.found.harmonics
 
     @property
     def fermi_level(self) -> float:
@@ -78,16 +86,19 @@ def bloch_cell(pump: Pump) -> BlochCell:
     NoBulkError
         If it has none: no cell was given, and none repeats along the device.
     """
-    if REMEMBERED not in pump.remembered:
-        try:
-            pump.remembered[REMEMBERED] = _found(pump) if pump.bulk is None else _given(pump)
-        except NoBulkError as error:
-            pump.remembered[REMEMBERED] = error
-    kept = pump.remembered[REMEMBERED]
-    if isinstance(kept, NoBulkError):
-        raise kept
-    assert isinstance(kept, BlochCell)  # nothing else is remembered under this name
-    return kept
+    cell: BlochCell = pump.once("bloch cell", lambda: _found(pump) if pump.bulk is None else _given(pump))
+    return cell
+
+
+def known_cell(pump: Pump) -> BlochCell | None:
+    """Return the cell that `pump` was given, or else the one that is found in its device, or None: all rooms ask here.
+
+    A given cell is taken as it is, without a look at its elements; one that was not given is looked for once.
+    """
+    try:
+        return bloch_cell(pump)
+    except NoBulkError:
+        return None
 
 
 def interior(pump: Pump) -> str:
@@ -104,7 +115,7 @@ def _given(pump: Pump) -> BlochCell:
     def sample(phases: Any) -> Matrices:
         return np.array([_at(cell, phase, pump.parameters(phase)) for phase in np.asarray(phases).tolist()])
 
-    return BlochCell(pump, sample, fit(sample), "the cell that the pump was given")
+    return BlochCell(pump, sample, None)
 
 
 def _at(cell: Any, phase: float, parameters: dict[str, Any]) -> Matrices:
@@ -122,5 +133,5 @@ def _at(cell: Any, phase: float, parameters: dict[str, Any]) -> Matrices:
 
 
 def _found(pump: Pump) -> BlochCell:
-    cell: FoundCell = find_cell(pump)
-    return BlochCell(pump, cell.sample, cell.harmonics, cell.origin)
+    cell = find_cell(pump)
+    return BlochCell(pump, cell.sample, cell)

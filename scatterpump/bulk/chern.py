@@ -33,7 +33,7 @@ def chern_number(pump: Pump) -> int:
     ClosedGapError
         If the number of bands below the Fermi level changes over the torus, or the plaquettes stay large.
     InputError
-        If the pump has no bulk cell.
+        If the pump has no cell, given or found.
     """
     cell, size = bloch_cell(pump), 24
     while size <= FINEST:

@@ -43,8 +43,8 @@ class FoundCell:
     ----------
     run : Run
         Where the cells are, in layers from the probe.
-    size : int
-        Number q of orbitals in a cell.
+    orbitals : (repeats, q) int array
+        Numbers of the device's orbitals in each cell, in the same order.
     path : Path
         H's elements along the cycle.
     elements : (e,) int array
@@ -54,12 +54,17 @@ class FoundCell:
     """
 
     run: Run
-    size: int
+    orbitals: Indices
     path: Path
     elements: Indices
     block: Indices
     rows: Indices
     columns: Indices
+
+    @property
+    def size(self) -> int:
+        """Number q of orbitals in a cell."""
+        return int(self.orbitals.shape[1])
 
     @property
     def origin(self) -> str:
@@ -86,13 +91,28 @@ class FoundCell:
 
 
 def find_cell(pump: Pump) -> FoundCell:
-    """Find the cell that repeats along the device.
+    """Find the cell that repeats along the device; looked for once, also on behalf of other Fermi levels.
 
     Raises
     ------
     NoBulkError
         If none does, or not over most of what changes, or it is too large to search its bands.
     """
+    found = pump.once("found cell", lambda: _tried(pump))
+    if isinstance(found, NoBulkError):
+        raise found
+    assert isinstance(found, FoundCell)  # nothing else is remembered under this name
+    return found
+
+
+def _tried(pump: Pump) -> FoundCell | NoBulkError:
+    try:
+        return _looked_for(pump)
+    except NoBulkError as error:
+        return error
+
+
+def _looked_for(pump: Pump) -> FoundCell:
     driven, path = driven_path(pump)
     level, place, widths = _layers(pump, driven)
     changing = _changing(level, driven, moving(path), len(widths))
@@ -181,4 +201,6 @@ def _cell(
     chosen = np.flatnonzero(inside | onward)
     rows = start[above[chosen] % run.length] + place[driven.rows[chosen]]
     columns = start[below[chosen]] + place[driven.columns[chosen]]
-    return FoundCell(run, size, path, chosen, onward[chosen].astype(int), rows, columns)
+    held = np.flatnonzero((level >= run.first) & (level < run.layers.stop))
+    orbitals = held[np.lexsort((place[held], level[held]))].reshape(run.repeats, size)
+    return FoundCell(run, orbitals, path, chosen, onward[chosen].astype(int), rows, columns)

@@ -100,7 +100,7 @@ def bulk_gap(pump: Pump, *, accuracy: float = ACCURACY, floor: float = FLOOR, bu
     Parameters
     ----------
     pump : Pump
-        A pump with a bulk cell.
+        A pump whose interior repeats: with a cell that was given, or is found in its device.
     accuracy : float
         Width of the bracket of the direct gap relative to the gap, and of the brackets of both edges relative to the
         distance of the Fermi level from the nearer one; between 0 and 1.
@@ -119,7 +119,7 @@ def bulk_gap(pump: Pump, *, accuracy: float = ACCURACY, floor: float = FLOOR, bu
     Raises
     ------
     InputError
-        If the pump has no bulk cell, or an argument is out of range.
+        If the pump has no cell, given or found, or an argument is out of range.
 
     Notes
     -----

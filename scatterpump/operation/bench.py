@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.operation.measure import Measure
 from scatterpump.operation.plateaus import Plateau, plateaus
@@ -53,11 +54,12 @@ class Bench:
 
     @property
     def gap(self) -> BulkGap | None:
-        """The proven gap, or None without one that is open at the Fermi level."""
-        gap = self.verdict.gap
+        """The proven gap, or None without one that is open at the Fermi level, or where no proof means anything."""
+        gap = None if self.verdict.is_void else self.verdict.gap
         return gap if gap is not None and gap.is_open else None
 
     @cached_property
     def plateaus(self) -> tuple[Plateau, ...]:
-        """The windows of Fermi levels; none without a bulk cell."""
-        return () if self.pump.bulk is None else plateaus(self.pump, between=self.between)
+        """The windows of Fermi levels; none without a cell that was given or is found, or where no proof counts."""
+        none = self.verdict.is_void or known_cell(self.pump) is None
+        return () if none else plateaus(self.pump, between=self.between)

@@ -9,6 +9,7 @@ from math import isfinite, log
 
 import numpy as np
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import bulk_gap
 from scatterpump.operation.limit import Limit, found_limit, require_error, why_not
 from scatterpump.operation.slow import SlowCharge, SlowCharges, slow_charge
@@ -64,7 +65,7 @@ def temperature_limit(pump: Pump, error: float = 1e-6, *, winding: Winding | Non
 
 def _distance(pump: Pump) -> float:
     """Distance of the nearest bulk band from the Fermi level; 0 where none is known."""
-    distance = 0.0 if pump.bulk is None else bulk_gap(pump).distance_upper
+    distance = 0.0 if known_cell(pump) is None else bulk_gap(pump).distance_upper
     return float(distance) if isfinite(distance) else 0.0
 
 

@@ -67,8 +67,11 @@ def drive(bench: Bench) -> Line | None:
 
 
 def length(bench: Bench) -> Line | None:
-    """How short may the device be?"""
-    if bench.gap is None or not isinstance(bench.device, Resizable):
+    """How short may the device be?
+
+    Asked of descriptions that know their own cell, and give it to the pump: only they can build another length.
+    """
+    if bench.gap is None or bench.pump.bulk is None or not isinstance(bench.device, Resizable):
         return None
     found = shortest_device(bench.device, leak=bench.error)
     cell = bench.pump.finalized_bulk.cell_size
@@ -88,13 +91,13 @@ def integer(bench: Bench) -> Line:
         return Line("charges a cycle", "computed", "none to be trusted; see the verdict", {"number": None})
     text = f"{winding.number:+d}" if winding.number else "0"
     how: How = "proven" if winding.exact else "estimated"
-    return Line("charges a cycle", how, f"{text} from probe to drain", {"number": winding.number})
+    return Line("charges a cycle", how, f"{text} {bench.verdict.route}", {"number": winding.number})
 
 
 def leak(bench: Bench) -> Line | None:
     """How much leaks through?"""
     winding = bench.verdict.winding
-    if winding is None or not 0 < winding.leak.bound < 1:
+    if winding is None or bench.verdict.is_void or not 0 < winding.leak.bound < 1:
         return None
     text = f"at most {winding.leak.bound:.1e} of the electrons, at every phi"
     return Line("leak", _if_exact(winding.exact), text, {"bound": float(winding.leak.bound)})

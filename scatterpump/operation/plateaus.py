@@ -83,7 +83,7 @@ def plateaus(
     Parameters
     ----------
     pump : Pump
-        A pump with a bulk cell.
+        A pump whose interior repeats: with a cell that was given, or is found in its device.
     between : (low, high), optional
         Range of Fermi levels; by default the plateau at or next to the pump's Fermi level and its two neighbours.
     accuracy : float
@@ -99,7 +99,7 @@ def plateaus(
     Raises
     ------
     InputError
-        If the pump has no bulk cell, or the range is not one.
+        If the pump has no cell, given or found, or the range is not one.
 
     Examples
     --------

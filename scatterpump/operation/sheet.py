@@ -87,7 +87,7 @@ class Sheet:
         for finding in self.verdict.audit.alarms:
             lines += _row("ALARM", "", f"{finding.check}: {finding.message} {finding.remedy}")
         if not self.limits:
-            lines += _row("limits", "", "none to tell: the interior is not known, or not gapped at this level")
+            lines += _row("limits", "", f"none to tell: {self._why_no_limits()}")
         for line in (*self.limits, *self.output):
             lines += _row(line.label, line.how, line.text)
         for number, plateau in enumerate(self.plateaus):
@@ -95,6 +95,12 @@ class Sheet:
         for number, caution in enumerate(self.cautions):
             lines += _row("" if number else "not modelled", "", caution)
         return "\n".join(lines)
+
+    def _why_no_limits(self) -> str:
+        gap = self.verdict.gap
+        if self.verdict.is_void:
+            return "with what the alarm names none means anything"
+        return self.verdict.interior if gap is None else "the interior is not gapped at this Fermi level"
 
     def _plateau(self, plateau: Plateau) -> str:
         carried = "not resolved" if plateau.number is None else f"{plateau.number:+d}" if plateau.number else "0"

@@ -18,6 +18,7 @@ from math import exp, isfinite, log, pi
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import bulk_gap
 from scatterpump.operation.driven import FIRST_SIDEBANDS, driven_charge
 from scatterpump.operation.limit import Limit, found_limit, require_error, why_not
@@ -72,7 +73,7 @@ def sweep_rate(pump: Pump) -> float:
 
 def adiabatic_frequency(pump: Pump, error: float = 1e-6) -> float | None:
     """Return hbar omega at which the Landau-Zener probability at the bulk gap is `error`; None without a bulk gap."""
-    if pump.bulk is None:
+    if known_cell(pump) is None:
         return None
     gap, rate = bulk_gap(pump).lower, sweep_rate(pump)
     return float(pi * gap**2 / (2 * rate * log(1 / error))) if rate > 0 and isfinite(gap) else None

@@ -112,7 +112,7 @@ def disorder_tolerance(pump: Pump, *, samples: int = SAMPLES) -> DisorderToleran
     Parameters
     ----------
     pump : Pump
-        A pump with a bulk cell.
+        A pump whose interior repeats: with a cell that was given, or is found in its device.
     samples : int
         How many samples of box disorder to try, on every site of the scattering region, independent from site to site.
 
@@ -121,7 +121,7 @@ def disorder_tolerance(pump: Pump, *, samples: int = SAMPLES) -> DisorderToleran
     ClosedGapError
         If the gap is not open at the Fermi level without any disorder.
     InputError
-        If the pump has no bulk cell.
+        If the pump has no cell, given or found.
     """
     gap = _open_gap(pump)
     low, high = gap.lower_edge.upper, gap.upper_edge.lower
@@ -140,7 +140,7 @@ def drive_tolerance(pump: Pump, *, limit: float = LIMIT) -> DriveTolerance:
     Parameters
     ----------
     pump : Pump
-        A pump with a bulk cell.
+        A pump whose interior repeats: with a cell that was given, or is found in its device.
     limit : float
         The largest factor to look at, above 1; the smallest is 0.
 
@@ -149,7 +149,7 @@ def drive_tolerance(pump: Pump, *, limit: float = LIMIT) -> DriveTolerance:
     ClosedGapError
         If the gap is not open as the pump is.
     InputError
-        If the pump has no bulk cell, or the limit is not above 1.
+        If the pump has no cell, given or found, or the limit is not above 1.
     """
     if not 1 < limit < inf:
         raise InputError(f"limit is {limit}", allowed="a number above 1")

@@ -50,7 +50,7 @@ def at_rest(bench: Bench) -> Line | None:
         return None
     found = charge(bench.pump, winding=bench.verdict.winding)
     leaked = 0.0 if found.leakage is None else found.leakage
-    text = f"{found.probe:+.9f} e a cycle; the leak takes {leaked:.1e} off the integer"
+    text = f"{found.probe:+.9f} e a cycle; the leak moves it by {leaked:+.1e} off the integer"
     values = {"charge": found.probe, "leakage": found.leakage, "error": found.error}
     return Line("charge at rest", "computed", text, values)
 

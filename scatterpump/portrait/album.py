@@ -7,8 +7,8 @@ from functools import cached_property
 
 import numpy as np
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import BulkGap, bulk_gap
-from scatterpump.errors import NoBulkError
 from scatterpump.portrait.density import ENERGIES, LocalDensity, local_density
 from scatterpump.portrait.length import Lengths, leakage_by_length
 from scatterpump.portrait.parameters import ParameterPlane, parameter_plane
@@ -46,10 +46,7 @@ class Album:
     @cached_property
     def gap(self) -> BulkGap | None:
         """The proven gap; None where no cell repeats."""
-        try:
-            return self.known_gap or bulk_gap(self.pump)
-        except NoBulkError:
-            return None
+        return self.known_gap or (None if known_cell(self.pump) is None else bulk_gap(self.pump))
 
     @cached_property
     def turning(self) -> Turning:

@@ -7,8 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.decay import decay_per_cell
-from scatterpump.errors import NoBulkError
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 
@@ -53,8 +53,5 @@ def leakage_by_length(pump: Pump, cells: tuple[int, ...] = CELLS, *, phases: int
     """
     points = TURN * np.arange(phases) / phases
     leaks = [float(reflect(pump, points, engine="layered", repeat=n).leakage.max()) for n in cells]
-    try:
-        decay: float | None = decay_per_cell(pump)
-    except NoBulkError:
-        decay = None
+    decay = None if known_cell(pump) is None else decay_per_cell(pump)
     return Lengths(pump.name, np.array(cells, dtype=np.int64), np.array(leaks), decay)

@@ -12,9 +12,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.bulk.cell import BlochCell, bloch_cell
+from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.bulk.gap import BulkGap
-from scatterpump.errors import NoBulkError
 from scatterpump.pump import Pump
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.layers import distances
@@ -71,10 +70,8 @@ def spectrum(pump: Pump, gap: BulkGap | None = None, *, phases: int = PHASES) ->
     from threadpoolctl import threadpool_limits
 
     points = np.linspace(0.0, TURN, phases)
-    try:
-        bottom, top = _bands(bloch_cell(pump), points)
-    except NoBulkError:
-        bottom = top = np.empty((phases, 0))
+    cell, none = known_cell(pump), np.empty((phases, 0))
+    bottom, top = (none, none) if cell is None else _bands(cell, points)
     with threadpool_limits(1):  # many small matrices: threads would only get in each other's way
         levels, nearness = _levels(fold(pump), pump.fermi_level, points)
     return Spectrum(pump.name, pump.fermi_level, points, bottom, top, levels, nearness, gap)

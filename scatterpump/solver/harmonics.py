@@ -126,7 +126,7 @@ def _with_constants(
     every = np.zeros((len(found.coefficients), len(known)), dtype=complex)
     every[found.degree] = known
     every[:, varies] = found.coefficients
-    return Harmonics(every.reshape(-1, *shape))
+    return Harmonics(every.reshape(len(every), *shape))
 
 
 def _even(degree: int) -> NDArray[np.float64]:

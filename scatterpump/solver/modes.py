@@ -10,8 +10,9 @@ from typing import Any
 
 from scatterpump.errors import ClosedProbeError, InputError, told
 from scatterpump.pump import Pump
+from scatterpump.solver.leads import driven_leads
 
-__all__ = ["varying_leads", "with_modes"]
+__all__ = ["with_modes"]
 
 
 def with_modes(pump: Pump) -> Any:
@@ -22,20 +23,22 @@ def with_modes(pump: Pump) -> Any:
     ClosedProbeError
         If the probe has no open mode there.
     InputError
-        If a lead depends on a parameter of the cycle, or a parameter of the system has no value.
+        If a lead changes along the cycle, or a parameter of the system has no value.
+    SolverError
+        If the elements of a lead that takes parameters of the cycle cannot be had at some phase.
     """
     return pump.once("modes", lambda: _with_modes(pump))
 
 
 def _with_modes(pump: Pump) -> Any:
     _require_parameters(pump)
-    varying = varying_leads(pump)
-    if varying:
-        lead, names = varying[0]
-        raise InputError(
-            f"lead {lead} depends on {', '.join(names)}, which the cycle sets",
-            allowed="leads that stay the same all along the cycle; move the modulated part into the scattering region",
-        )
+    for lead in driven_leads(pump):
+        if not lead.is_still:
+            raise InputError(
+                lead.problem,
+                allowed="leads that stay the same all along the cycle; move the modulated part into the scattering "
+                "region",
+            )
     try:
         system = _precalculated(pump)
     except Exception as cause:  # kwant meets modes without velocity at a band edge, or a user's value function fails
@@ -80,10 +83,3 @@ def _require_parameters(pump: Pump) -> None:
             f"nothing sets the parameter(s) {', '.join(missing)} of the system",
             allowed="values for all of them, from the cycle or from the pump's constants",
         )
-
-
-def varying_leads(pump: Pump) -> list[tuple[int, list[str]]]:
-    """Return (lead, names) for every lead that takes parameters which the cycle sets."""
-    driven = set(pump.cycle.names)
-    found = ((i, sorted(driven & set(lead.parameters))) for i, lead in enumerate(pump.finalized.leads))
-    return [(i, names) for i, names in found if names]

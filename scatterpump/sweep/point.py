@@ -11,6 +11,7 @@ from typing import Any, Literal
 
 import numpy as np
 
+from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import BulkGap, bulk_gap
 from scatterpump.device_file import put, read_device
 from scatterpump.errors import InputError, SingularReflectionError
@@ -106,10 +107,10 @@ class Point:
 
     @cached_property
     def gap(self) -> BulkGap | None:
-        """The bulk gap, or None without a bulk cell."""
+        """The bulk gap, or None without a cell that was given or is found."""
         if self.whole:
             return self.verdict.gap
-        return None if self.pump.bulk is None else bulk_gap(self.pump)
+        return None if known_cell(self.pump) is None else bulk_gap(self.pump)
 
     @cached_property
     def verdict(self) -> Verdict:

@@ -86,12 +86,13 @@ def _window(point: Point) -> tuple[Any, ...]:
 
 
 def _chern(point: Point) -> tuple[Any, ...]:
+    from scatterpump.bulk.cell import known_cell
     from scatterpump.bulk.chern import chern_number
 
     if point.whole:
         return (point.verdict.chern,)
     try:
-        return (None if point.pump.bulk is None else chern_number(point.pump),)
+        return (None if known_cell(point.pump) is None else chern_number(point.pump),)
     except ClosedGapError:
         return (None,)
 
