@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 import pytest
@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from scatterpump.cycle import Cycle
 from scatterpump.solver.follow import follow as follow_many
-from scatterpump.solver.path import Path, SampledPath, StraightPath, TrigonometricPath
+from scatterpump.solver.path import Path, SampledPath, Slopes, StraightPath, TrigonometricPath
 
 Entries = NDArray[np.complex128]
 Floats = NDArray[np.float64]
@@ -359,3 +359,25 @@ def test_some_elements_alone_move_as_they_did(wave: Wave, chosen: list[int]) -> 
     assert (path.variation() >= np.abs(values - mean).max(axis=0) * (1 - 1e-12)).all()
     assert_allclose(part.at(1.1), path.at(1.1)[chosen], rtol=0, atol=1e-13)
     assert_allclose(part.derivative(1.1, 1, 2), path.derivative(1.1, 1, 2)[chosen], rtol=0, atol=1e-12)
+
+
+@given(
+    heights=st.lists(st.floats(0, 50), min_size=2, max_size=9),
+    excess=st.sampled_from([0.0, 1e-9, 0.3]),
+    start=st.floats(-7, 7),
+    side=st.sampled_from([-1, 1]),
+    limit=st.floats(0, 60),
+)
+@settings(derandomize=True, deadline=None)
+def test_reach_is_as_far_as_the_length_allows(
+    heights: list[float], excess: float, start: float, side: Literal[-1, 1], limit: float
+) -> None:
+    values = np.array([*heights, heights[0]])
+    nodes = np.linspace(0, 2 * np.pi, len(values))
+    slopes = Slopes(nodes, values[:-1], values[1:], excess, 1.0, 1.0)
+    reach = slopes.reach(start, side, limit)
+    assert 0 <= reach <= np.pi
+    assert slopes.length(start, np.array(start + side * reach)) <= limit
+    if reach < np.pi:  # derived: a little farther on, and by a little more than rounding, the limit is passed
+        beyond = slopes.length(start, np.array(start + side * min(np.pi, reach + 1e-6)))
+        assert beyond >= limit - 1e-9 * (1 + limit)

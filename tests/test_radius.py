@@ -15,7 +15,7 @@ from scatterpump.solver.band import norm_bound
 from scatterpump.solver.folded import FoldedDevice
 from scatterpump.solver.harmonics import Harmonics
 from scatterpump.solver.path import Path, Side, Slopes, StraightPath, TrigonometricPath
-from scatterpump.winding.cover import Arm, Centre, centre, cover_cycle, farthest, join, neighbours, open_gaps
+from scatterpump.winding.cover import Arm, Centre, centre, cover_cycle, join, neighbours, open_gaps
 from scatterpump.winding.look import Look, look
 from scatterpump.winding.radius import Model, Rates, length_limit, split_reach
 
@@ -374,7 +374,7 @@ def test_sharpness_of_the_rule_of_path_length() -> None:
     # derived: at resonance g = b = 2/width, both columns are 2/sqrt(width): (4/width) x / (1 - 2x/width) = pi/2
     x = (np.pi / 2) / (4 / width + np.pi / width)
     assert length_limit(seen) == pytest.approx(x, rel=0.02)
-    reach = farthest(lambda s: case.slopes.length(case.phase, case.phase + s), length_limit(seen))
+    reach = case.slopes.reach(case.phase, 1, length_limit(seen))
     assert reach == pytest.approx(length_limit(seen) / speed, rel=1e-6)
     r = case.reflection(np.array([case.phase, case.phase + reach]))[:, 0, 0]
     # derived: r = (a - i width/2) / (a + i width/2) with a = -speed s turns by 2 atan(2 speed s / width)

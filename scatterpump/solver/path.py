@@ -28,6 +28,7 @@ Norm = Callable[[Entries], float]
 Sample = Callable[[Floats], Entries]
 Side = Literal[-1, 1]
 TURN = 2 * np.pi
+REACHED = 1e-12  # relative: by so much a distance is taken shorter than its formula says, and until its bound holds
 STILL = 1e-13
 
 
@@ -95,6 +96,33 @@ class Slopes:
     def length(self, start: float, ends: Floats) -> Floats:
         """Return bounds on the path length of H from `start` to each of `ends` (radians)."""
         return np.abs(self._from_zero(np.asarray(ends, dtype=float)) - self._from_zero(np.asarray(start)))
+
+    def reach(self, start: float, side: Side, limit: float) -> float:
+        """Return the largest distance, up to half a turn, within which the bound on the path length stays <= `limit`.
+
+        It is 0 if `limit` is not positive.
+        """
+        if not limit > 0:
+            return 0.0
+        end = self._phase_of(float(self._from_zero(np.asarray(start))) + side * limit)
+        distance = min(np.pi, max(0.0, side * (end - start)) * (1 - REACHED))
+        while distance > 0 and self.length(start, np.asarray(start + side * distance)) > limit:
+            distance = distance * (1 - REACHED) if distance > REACHED else 0.0
+        return float(distance)
+
+    def _phase_of(self, length: float) -> float:
+        """The phase at which `_from_zero` is `length`; infinite if H does not move."""
+        marks = self._whole + self.excess * self.nodes
+        if not marks[-1] > 0:
+            return float(np.copysign(np.inf, length))
+        laps, rest = np.divmod(length, marks[-1])
+        cell = int(np.clip(np.searchsorted(marks, rest, side="right") - 1, 0, len(self.left) - 1))
+        width = self.nodes[cell + 1] - self.nodes[cell]
+        speed, need = self.left[cell] + self.excess, rest - marks[cell]
+        # speed x + rise x^2 / 2 = need, solved without cancellation
+        rise = (self.right[cell] - self.left[cell]) / width
+        below = speed + np.sqrt(max(0.0, speed**2 + 2 * rise * need))
+        return float(laps * TURN + self.nodes[cell] + (min(width, 2 * need / below) if below > 0 else width))
 
     @cached_property
     def _whole(self) -> Floats:

@@ -15,6 +15,7 @@ __all__ = ["Engine", "reflect", "reflect_grid"]
 
 Engine = Literal["auto", "layered", "direct"]
 ENGINES = ("auto", "layered", "direct")
+WIDE = 50  # sites of the probe from which kwant needs longer for one phase than finding H along the cycle takes
 
 
 def reflect(
@@ -36,7 +37,7 @@ def reflect(
     engine : "auto", "layered" or "direct"
         "direct" is kwant's own solver, one phi at a time: the reference.  "layered" eliminates all phases at once,
         layer by layer, or where layers are wide by one sparse factorisation each.  "auto" takes "layered", but "direct"
-        for a single phase of a pump that nothing is known about yet.  The trace says which one ran.
+        for a single phase of a narrow pump that nothing is known about yet.  The trace says which one ran.
     transmission : bool
         Whether t is wanted as well; without it the trace's ``transmission`` has no rows.
     repeat : int
@@ -70,8 +71,7 @@ def reflect(
         if endless:
             return layered.solve_endless(pump, points)
         return layered.solve_repeated(pump, points, repeat, transmission=transmission)
-    alone = len(points) == 1 and "path" not in pump.remembered  # H is asked for once, instead of along the whole cycle
-    if engine == "direct" or (engine == "auto" and alone):
+    if engine == "direct" or (engine == "auto" and len(points) == 1 and _pays_once(pump)):
         return direct.solve(pump, points, transmission=transmission)
     return layered.solve(pump, points, transmission=transmission)
 
@@ -109,6 +109,11 @@ def reflect_grid(
 
     lists = (_finite(energies, "energies", "energies"), _finite(phases, "phases", "angles in radians"))
     return solve_grid(pump, *lists, transmission=transmission)
+
+
+def _pays_once(pump: Pump) -> bool:
+    """Whether asking kwant once is expected to be faster than finding H along the whole cycle first."""
+    return "path" not in pump.remembered and len(pump.finalized.lead_interfaces[pump.probe]) < WIDE
 
 
 def _finite(values: ArrayLike, name: str, kind: str) -> NDArray[np.float64]:

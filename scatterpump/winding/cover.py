@@ -161,7 +161,7 @@ def _arm(device: FoldedDevice, slopes: Slopes, seen: Look, side: Side) -> Arm:
     def length(distances: Floats) -> Floats:
         return slopes.length(seen.phase, seen.phase + side * distances)
 
-    plain = farthest(length, length_limit(seen) - seen.noise)
+    plain = slopes.reach(seen.phase, side, length_limit(seen) - seen.noise)
     simple = Arm(plain, Model.constant(seen.reflection), (), seen.smallest * float(np.exp(-RIGHT_ANGLE)))
     if seen.split is None:
         return simple
@@ -194,21 +194,6 @@ def _smooth_stretch(corners: Floats, phase: float, side: Side) -> float:
         return np.pi
     ahead = (side * (corners - phase)) % TURN
     return float(min(np.pi, np.where(ahead > 0, ahead, TURN).min()))
-
-
-def farthest(length: Callable[[Floats], Floats], limit: float) -> float:
-    """Largest distance up to half a turn at which a growing `length` stays within `limit`; 0 if there is none."""
-    low, high = 0.0, np.pi
-    for _ in range(6):
-        grid = np.linspace(low, high, 65)
-        inside = length(grid) <= limit
-        if not inside[0]:
-            return 0.0
-        last = int(np.flatnonzero(inside)[-1])
-        if last == 64:
-            return high
-        low, high = float(grid[last]), float(grid[last + 1])
-    return low
 
 
 def open_gaps(centres: list[Centre]) -> list[Gap]:

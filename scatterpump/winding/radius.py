@@ -45,12 +45,11 @@ def length_limit(seen: Look) -> float:
         return 0.0
     if abs(b - g) < 1e-9 * g:
         b = g * (1 + 1e-9)
-    low, high = 0.0, (1 - 1e-9) / max(g, b)
-    for _ in range(60):
-        middle = (low + high) / 2
-        turned = product * np.log1p((b - g) * middle / (1 - b * middle)) / (b - g)
-        low, high = (middle, high) if turned < RIGHT_ANGLE else (low, middle)
-    return low
+    # product log(1 + (b - g) x / (1 - b x)) / (b - g) = RIGHT_ANGLE, solved for x
+    with np.errstate(over="ignore"):
+        grown = np.expm1(RIGHT_ANGLE * (b - g) / max(product, 1e-300))
+    end = 1 / (b + (b - g) / grown) if grown != 0 else 0.0
+    return float(min(end * (1 - 1e-12), (1 - 1e-9) / max(g, b)))
 
 
 @dataclass(frozen=True, eq=False)
