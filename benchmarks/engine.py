@@ -7,6 +7,7 @@ every case runs in a process of its own, whose peak memory before the loop start
 imports in it.  What numba compiles, if it is installed, is compiled before the clock starts.
 
     python benchmarks/engine.py [--json FILE] [--phases 400] [--repeats 5] [--sizes 300x1 ...] [--only ratios proof]
+        [--without-numba]
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ from __future__ import annotations
 import argparse
 import json
 import resource
+import sys
 import time
 from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor
@@ -233,8 +235,14 @@ def _choice(pump: sp.Pump, count: int) -> dict[str, Any]:
 
 def _alone(function: Callable[..., Any], *arguments: Any) -> Any:
     """Run in a fresh process, so that nobody's memory or caches are in the way."""
-    with ProcessPoolExecutor(1, mp_context=get_context("spawn")) as pool:
+    is_hidden = sys.modules.get("numba", sys) is None
+    with ProcessPoolExecutor(1, get_context("spawn"), _hide_numba if is_hidden else None) as pool:
         return pool.submit(function, *arguments).result()
+
+
+def _hide_numba() -> None:
+    """Let nobody in this process find numba."""
+    sys.modules["numba"] = None  # type: ignore[assignment]  # importlib's way to say that there is no such module
 
 
 def main() -> None:
@@ -245,7 +253,10 @@ def main() -> None:
     parser.add_argument("--sizes", nargs="+", default=SIZES, metavar="LxW")
     parts = {"ratios": ratios, "growth": growth, "proof": proof}
     parser.add_argument("--only", nargs="+", default=list(parts), choices=parts)
+    parser.add_argument("--without-numba", action="store_true", help="measure what is left if it is not installed")
     options = parser.parse_args()
+    if options.without_numba:
+        _hide_numba()
     found = {name: parts[name](options) for name in options.only}
     if options.json:
         options.json.write_text(json.dumps(found, indent=2, default=float) + "\n")

@@ -16,8 +16,11 @@ WIDTHS = [[2] * 6, [5, 10, 14, 16, 6], [3, 1, 4, 7, 2, 6], [12, 5, 9, 1, 10], [8
 COUNT = 6  # not a multiple of the lanes
 
 
-@pytest.fixture(params=["numpy", "compiled"])
-def kernel(request: pytest.FixtureRequest) -> Kernel:
+@pytest.fixture(params=["numpy", "numpy, all together", "compiled"])
+def kernel(request: pytest.FixtureRequest, monkeypatch: pytest.MonkeyPatch) -> Kernel:
+    if "together" in request.param:
+        monkeypatch.setattr("scatterpump.solver.inverses.FEWEST", 1)
+        return "numpy"
     if request.param == "compiled" and not has_compiler():
         pytest.skip("numba is not installed (extra `jit`)")
     return request.param

@@ -12,6 +12,7 @@ from typing import Any
 import numpy as np
 from numba import njit
 
+from scatterpump.solver.inverses import SMALL_PIVOT
 from scatterpump.solver.lanes import PANEL, inner, inverted, inverted_with_pivots, subtract_product
 from scatterpump.solver.simd import (
     LANES,
@@ -33,8 +34,7 @@ from scatterpump.solver.simd import (
 __all__ = ["swept"]
 
 LOOK_EVERY = 4
-DROPPED = 1e-17  # of |D|: a twentieth of what one rounding changes
-SMALL_PIVOT = 1e4  # inverse of a pivot, in the unit of energy, that costs four digits
+DROPPED = 1e-16  # of |D|: what one rounding changes
 
 
 @inner

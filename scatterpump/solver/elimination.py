@@ -27,6 +27,7 @@ from numpy.typing import NDArray
 
 from scatterpump.solver.blocks import Band, Stack
 from scatterpump.solver.elements import listed_all, tabled
+from scatterpump.solver.inverses import inverses
 
 __all__ = ["Eliminated", "EliminatedSingle", "backward", "eliminate", "eliminate_single"]
 
@@ -37,7 +38,7 @@ Indices = NDArray[np.int64]
 RESCALE_EVERY = 32
 WEIGHABLE = 1e-100, 1e100
 LOOK_EVERY = 4
-DROPPED = 1e-17  # of |D|: a twentieth of what one rounding changes
+DROPPED = 1e-16  # of |D|: what one rounding changes
 ROUNDED = 4e-16  # of the larger of p and q: what roundings leave of an imaginary part that has died out
 
 
@@ -253,8 +254,8 @@ def _eliminated_numpy(
     for n in range(len(diagonal) - 2, -1, -1):
         if n < real_below and n % LOOK_EVERY == 0:
             here = _real_if_negligible(here)
-        inverse: Numbers = np.linalg.inv(here)
-        growth = np.maximum(growth, unit * _largest(inverse) + _taint(here))
+        inverse, largest = inverses(here, unit)
+        growth = np.maximum(growth, largest)
         here, amplitudes = backward(diagonal[n], lower[n], upper[n], inverse, amplitudes)
         if amplitudes is not None and wanted is not None:
             amplitudes = wanted[n] + amplitudes
@@ -277,16 +278,6 @@ def _real_if_negligible(block: Numbers) -> Numbers:
         return block
     imaginary, real = np.abs(block.imag).max(axis=(1, 2)), np.abs(block.real).max(axis=(1, 2))
     return np.ascontiguousarray(block.real) if (imaginary <= DROPPED * real).all() else block
-
-
-def _largest(blocks: Numbers) -> NDArray[np.float64]:
-    """Largest real or imaginary part of each block."""
-    return np.asarray(np.abs(blocks.view(np.float64)).max(axis=(1, 2), initial=0.0))
-
-
-def _taint(blocks: Numbers) -> NDArray[np.float64]:
-    """Zero, or not a number for blocks that are not finite."""
-    return np.asarray(0.0 * np.abs(blocks.sum(axis=(1, 2))))
 
 
 def _times(amplitudes: Numbers, inverse: Numbers) -> Numbers:

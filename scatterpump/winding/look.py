@@ -131,7 +131,7 @@ def look(phase: float, band: Complex, probe: Complex, *, splitting: bool = True)
     size = row_sum_norm(band)
     noise = ROUNDING * EPS * size + _residual(band, right, probe) + _residual(other, right_b, probe)
     sigma, v = small_singular(band, lu)
-    sigma_b, _ = small_singular(other, lu_b)
+    sigma_b, _ = small_singular(other, lu_b, damped=True)
     squared = gram(band)
     half = len(band) // 2
     g_norm = inverse_norm(squared, sigma[0], half)
@@ -164,14 +164,17 @@ def _residual(band: Complex, solution: Complex, right: Complex) -> float:
     return spectral_norm(apply(band, solution) - right) / max(spectral_norm(solution), 1e-300)
 
 
-def small_singular(band: Complex, lu: BandLU) -> tuple[NDArray[np.float64], Complex]:
-    """Upper estimates of the smallest singular values of A, with right vectors, from a Krylov space of (A^+ A)^-1."""
+def small_singular(band: Complex, lu: BandLU, *, damped: bool = False) -> tuple[NDArray[np.float64], Complex]:
+    """Upper estimates of the smallest singular values of A, with right vectors, from a Krylov space of (A^+ A)^-1.
+
+    Where A is `damped` no value is so small against the next that it would be all that is left of the vectors.
+    """
     n = band.shape[1]
     block = np.random.default_rng(11).standard_normal((n, min(BLOCK, n))).astype(complex)
     blocks = []
     for _ in range(DEPTH):
         block = lu.solve(lu.solve(block, adjoint=True))
-        block = np.linalg.qr(block)[0]
+        block = block / np.linalg.norm(block, axis=0) if damped else np.linalg.qr(block)[0]
         blocks.append(block)
     basis = np.linalg.qr(np.hstack(blocks))[0]
     _, sigma, v = np.linalg.svd(apply(band, basis), full_matrices=False)
