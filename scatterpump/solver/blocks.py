@@ -17,11 +17,20 @@ from numpy.typing import NDArray
 from scatterpump.solver.elements import Elements, listed
 from scatterpump.solver.layers import Layers
 
-__all__ = ["Band", "Block", "Blocks", "Stack"]
+__all__ = ["Band", "Block", "Blocks", "Picks", "Stack", "picked"]
 
 Numbers = NDArray[Any]  # float64 where all is real, else complex128
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
+Picks = tuple[Indices, Numbers]
+
+
+def picked(coupling: Numbers) -> Picks | None:
+    """For every row of one still block (1, w, w') the column of its only element and that element, else None."""
+    if len(coupling) != 1 or (np.count_nonzero(coupling[0], axis=1) > 1).any():
+        return None
+    place = np.abs(coupling[0]).argmax(axis=1)
+    return place, coupling[0][np.arange(len(place)), place]
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,6 +54,16 @@ class Block:
     def moves(self) -> bool:
         """Whether any element changes with phi."""
         return bool(self.elements.size)
+
+    @cached_property
+    def picks(self) -> Picks | None:
+        """For every row the column of its only element and that element; None if rows have more, or change."""
+        return None if self.moves else picked(self.fixed[None])
+
+    @cached_property
+    def picks_down(self) -> Picks | None:
+        """For every column the row of its only element and that element; None if columns have more, or change."""
+        return None if self.moves else picked(self.fixed.T[None])
 
     def at(self, moving: Numbers) -> Numbers:
         """Return the block for each row of `moving` (n, elements), shape (n, w, w'), or (1, w, w') if it is still."""
@@ -124,6 +143,11 @@ class Stack(Sequence[Numbers]):
     def __getitem__(self, n: Any) -> Any:
         block = self.blocks.block(self.step, self.first + range(len(self))[n]).at(self.moving)
         return block if self.step else np.broadcast_to(block, (len(self.moving), *block.shape[1:]))
+
+    def picks(self, n: int) -> Picks | None:
+        """Which element each row of block n picks, or for the lower blocks each column; None if any has more."""
+        block = self.blocks.block(self.step, self.first + n)
+        return block.picks_down if self.step == 1 else block.picks
 
     @property
     def elements(self) -> Elements:

@@ -20,6 +20,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterpump.solver.blocks import picked
 from scatterpump.solver.elimination import EliminatedSingle, backward
 
 __all__ = [
@@ -101,7 +102,8 @@ def segment(
     for n in range(len(blocks) - 2, -1, -1):
         reached = inverse @ entering
         met = met + leaving @ reached
-        here, leaving = backward(blocks[n], lower[n], upper[n], inverse, leaving)
+        picks = picked(upper[n]), picked(lower[n].swapaxes(1, 2))
+        here, leaving = backward(blocks[n], lower[n], upper[n], inverse, leaving, picks)
         entering = -upper[n] @ reached
         inverse = np.asarray(np.linalg.inv(here))
     seen, reached = inverse @ near, inverse @ entering

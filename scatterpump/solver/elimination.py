@@ -25,7 +25,7 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.solver.blocks import Band, Stack
+from scatterpump.solver.blocks import Band, Picks, Stack, picked
 from scatterpump.solver.elements import listed_all, tabled
 from scatterpump.solver.inverses import inverses
 
@@ -256,7 +256,8 @@ def _eliminated_numpy(
             here = _real_if_negligible(here)
         inverse, largest = inverses(here, unit)
         growth = np.maximum(growth, largest)
-        here, amplitudes = backward(diagonal[n], lower[n], upper[n], inverse, amplitudes)
+        picks = _picks(upper, n, -1), _picks(lower, n, 1)
+        here, amplitudes = backward(diagonal[n], lower[n], upper[n], inverse, amplitudes, picks)
         if amplitudes is not None and wanted is not None:
             amplitudes = wanted[n] + amplitudes
     if amplitudes is None:
@@ -265,11 +266,22 @@ def _eliminated_numpy(
 
 
 def backward(
-    block: Numbers, lower: Numbers, upper: Numbers, inverse: Numbers, rows: Numbers | None
+    block: Numbers,
+    lower: Numbers,
+    upper: Numbers,
+    inverse: Numbers,
+    rows: Numbers | None,
+    picks: tuple[Picks | None, Picks | None],
 ) -> tuple[Numbers, Any]:
-    """One step: A_nn - A_n,n+1 D^-1 A_n+1,n and -T D^-1 A_n+1,n, for T = `rows` if there are any."""
+    """One step: A_nn - A_n,n+1 D^-1 A_n+1,n and -T D^-1 A_n+1,n, for T = `rows` if there are any.
+
+    The inverse may be overwritten.
+    """
     carried = None if rows is None else -_times(rows, inverse) @ lower
-    return np.asarray(block - _sandwich(upper, inverse, lower)), carried
+    taken = _sandwich(upper, inverse, lower, *picks)
+    if len(taken) < len(block) or np.result_type(block, taken) != taken.dtype:
+        return np.asarray(block - taken), carried
+    return np.asarray(np.subtract(block, taken, out=taken)), carried
 
 
 def _real_if_negligible(block: Numbers) -> Numbers:
@@ -289,25 +301,24 @@ def _times(amplitudes: Numbers, inverse: Numbers) -> Numbers:
     return np.asarray(both[:, :rows] + 1j * both[:, rows:])
 
 
-def _sandwich(upper: Numbers, inverse: Numbers, lower: Numbers) -> Numbers:
+def _picks(stack: Sequence[Numbers], n: int, step: int) -> Picks | None:
+    """Which elements block n of a stack picks: along its rows for `step` -1, along its columns for 1."""
+    if isinstance(stack, Stack):
+        return stack.picks(n)
+    return picked(stack[n] if step < 0 else stack[n].swapaxes(1, 2))
+
+
+def _sandwich(upper: Numbers, inverse: Numbers, lower: Numbers, up: Picks | None, down: Picks | None) -> Numbers:
     """A_n,n+1 D^-1 A_n+1,n; where both couple every row to at most one other, that is picking and scaling elements."""
-    up, down = _as_picks(upper), _as_picks(lower.swapaxes(1, 2))
     if up is None or down is None:
         return np.asarray(upper @ inverse @ lower)
     (to, rows), (fro, columns) = up, down
     if not (_is_count(to) and _is_count(fro) and inverse.shape[1:] == (len(to), len(fro))):
         inverse = inverse[:, to[:, None], fro]
-    return np.asarray(inverse * (rows[:, None] * columns))
+    scale = rows[:, None] * columns
+    return inverse if (scale == 1.0).all() else np.asarray(inverse * scale)
 
 
 def _is_count(places: Indices) -> bool:
     """Whether these are 0, 1, 2, ..."""
     return bool((places == np.arange(len(places))).all())
-
-
-def _as_picks(coupling: Numbers) -> tuple[Indices, Numbers] | None:
-    """For every row the column of its only element and that element; None if rows have more, or change with phi."""
-    if len(coupling) != 1 or (np.count_nonzero(coupling[0], axis=1) > 1).any():
-        return None
-    place = np.abs(coupling[0]).argmax(axis=1)
-    return place, coupling[0][np.arange(len(place)), place]
