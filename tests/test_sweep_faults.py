@@ -8,6 +8,7 @@ import os
 import signal
 import time
 import warnings
+from concurrent.futures import BrokenExecutor, Executor, Future
 from contextlib import suppress
 from pathlib import Path
 from typing import Any
@@ -225,6 +226,30 @@ def test_signal_finishes_the_batch_and_ends_the_run(tmp_path: Path, number: int)
     assert report.stopped_by == signal.Signals(number).name
     assert 0 < report.done < 12
     assert signal.getsignal(number) is before
+    assert run_sweep(toy_plan(), tmp_path, workers=1).new == report.missing
+    assert_whole(tmp_path)
+
+
+class Dying(Executor):
+    """Answers one batch; with the next one all of the job is signalled, and the workers die of it."""
+
+    answered = False
+
+    def submit(self, function: Any, /, *arguments: Any, **named: Any) -> Future[Any]:
+        future: Future[Any] = Future()
+        if self.answered:
+            os.kill(os.getpid(), signal.SIGTERM)
+            future.set_exception(BrokenExecutor("gone"))
+        else:
+            future.set_result(function(*arguments, **named))
+        self.answered = True
+        return future
+
+
+def test_workers_that_die_of_the_signal_are_not_replaced(tmp_path: Path) -> None:
+    report = run_sweep(toy_plan(), tmp_path, executor=Dying(), workers=1)
+    assert report.stopped_by == "SIGTERM"
+    assert 0 < report.done < 12 and report.failed == 0
     assert run_sweep(toy_plan(), tmp_path, workers=1).new == report.missing
     assert_whole(tmp_path)
 

@@ -66,11 +66,13 @@ def _first_alike(leads: Sequence[Any], parameters: dict[str, Any]) -> list[int]:
     known: dict[Any, int] = {}
     found = []
     for i, lead in enumerate(leads):
-        matrices = lead.cell_hamiltonian(params=parameters), lead.inter_cell_hopping(params=parameters)
-        symmetry = lead.discrete_symmetry((), params=parameters)
-        declared = symmetry.projectors, symmetry.time_reversal, symmetry.particle_hole, symmetry.chiral
-        plain = all(each is None for each in declared)
-        key = tuple((each.shape, each.tobytes()) for each in matrices) if plain else i
+        key: Any = i
+        if hasattr(lead, "inter_cell_hopping"):  # else it is given by its modes alone
+            matrices = lead.cell_hamiltonian(params=parameters), lead.inter_cell_hopping(params=parameters)
+            symmetry = lead.discrete_symmetry((), params=parameters)
+            declared = symmetry.projectors, symmetry.time_reversal, symmetry.particle_hole, symmetry.chiral
+            if all(each is None for each in declared):
+                key = tuple((each.shape, each.tobytes()) for each in matrices)
         found.append(known.setdefault(key, i))
     return found
 

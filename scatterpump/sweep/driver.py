@@ -188,11 +188,13 @@ class Driver:
         self._tell()
 
     def _lost(self, tasks: list[_Task], error: BaseException) -> None:
-        """Take back all that was out when the workers broke down, and replace them."""
+        """Take back all that was out when the workers broke down, and replace them, unless the run is to end anyway."""
         wait(self.in_flight, TICK)
         for future in list(self.in_flight):
             if not (future.done() and not future.cancelled() and future.exception() is None):
                 tasks.append(self.in_flight.pop(future))
+        if self.request.signal:
+            return
         if not self.crew.renew():
             raise SweepError(
                 f"the executor broke ({_named(error)}); {self.log.new} points were finished and are safe; run it again"

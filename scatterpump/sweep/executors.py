@@ -81,7 +81,7 @@ class LocalProcesses:
         methods = multiprocessing.get_all_start_methods()
         self._context = multiprocessing.get_context("forkserver" if "forkserver" in methods else "spawn")
         if "forkserver" in methods:
-            self._context.set_forkserver_preload(["scatterpump.sweep.worker", "kwant"])
+            self._context.set_forkserver_preload(["scatterpump.sweep.server", "kwant"])
         self._start()
 
     def submit(self, function: Any, /, *arguments: Any) -> Future[Any]:

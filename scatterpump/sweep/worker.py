@@ -26,7 +26,7 @@ from scatterpump.sweep.plan import SweepPlan
 from scatterpump.sweep.point import Point, PumpMaker, described
 from scatterpump.sweep.quantities import DTYPES, columns_of, quantities_named
 
-__all__ = ["ONE_THREAD", "Batch", "maker_of", "prepare_worker", "run_batch", "run_points"]
+__all__ = ["ONE_THREAD", "Batch", "ignore_requests", "maker_of", "prepare_worker", "run_batch", "run_points"]
 
 # Scotch 7, which orders matrices for MUMPS, pins the thread that calls it to the first processor while it runs threads
 # of its own: two processes then share one processor.
@@ -59,12 +59,17 @@ class Batch:
     errors: dict[int, str]
 
 
+def ignore_requests() -> None:
+    """Ignore the signals that ask a run to come to an end, which lets its workers finish."""
+    for number in (signal.SIGINT, signal.SIGTERM, getattr(signal, "SIGUSR1", signal.SIGINT)):
+        signal.signal(number, signal.SIG_IGN)
+
+
 def prepare_worker(plan: bytes | None = None) -> None:
     """Give this process one thread, make it outlive neither its parent nor a signal meant for it, teach it `plan`."""
     import multiprocessing
 
-    for number in (signal.SIGINT, signal.SIGTERM, getattr(signal, "SIGUSR1", signal.SIGINT)):
-        signal.signal(number, signal.SIG_IGN)  # they ask the run to come to an end, which lets the workers finish
+    ignore_requests()
     parent = multiprocessing.parent_process()
     if parent is not None:
         threading.Thread(target=_end_with, args=(parent,), daemon=True).start()
