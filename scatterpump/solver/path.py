@@ -116,13 +116,16 @@ class Slopes:
         if not marks[-1] > 0:
             return float(np.copysign(np.inf, length))
         laps, rest = np.divmod(length, marks[-1])
-        cell = int(np.clip(np.searchsorted(marks, rest, side="right") - 1, 0, len(self.left) - 1))
+        cell = int(np.searchsorted(marks[1:-1], rest, side="right"))
         width = self.nodes[cell + 1] - self.nodes[cell]
         speed, need = self.left[cell] + self.excess, rest - marks[cell]
         # speed x + rise x^2 / 2 = need, solved without cancellation
-        rise = (self.right[cell] - self.left[cell]) / width
-        below = speed + np.sqrt(max(0.0, speed**2 + 2 * rise * need))
+        below = speed + np.sqrt(max(0.0, speed**2 + 2 * self._rise[cell] * need))
         return float(laps * TURN + self.nodes[cell] + (min(width, 2 * need / below) if below > 0 else width))
+
+    @cached_property
+    def _rise(self) -> Floats:
+        return (self.right - self.left) / np.diff(self.nodes)
 
     @cached_property
     def _whole(self) -> Floats:
@@ -130,10 +133,9 @@ class Slopes:
 
     def _from_zero(self, phases: Floats) -> Floats:
         laps, rest = np.divmod(phases, TURN)
-        cell = np.clip(np.searchsorted(self.nodes, rest, side="right") - 1, 0, len(self.left) - 1)
+        cell = np.searchsorted(self.nodes[1:-1], rest, side="right")
         inside = rest - self.nodes[cell]
-        rise = (self.right - self.left)[cell] / np.diff(self.nodes)[cell]
-        along = self._whole[cell] + inside * (self.left[cell] + rise * inside / 2)
+        along = self._whole[cell] + inside * (self.left[cell] + self._rise[cell] * inside / 2)
         return np.asarray(laps * self._whole[-1] + along + self.excess * phases)
 
 

@@ -167,7 +167,7 @@ def _arm(device: FoldedDevice, slopes: Slopes, seen: Look, side: Side) -> Arm:
         return simple
     rates = _rates(device, slopes, seen, side)
     model = Model.of(seen.split, rates.core)
-    poles = tuple(np.linalg.eigvals(np.linalg.pinv(model.core) @ model.sigma).real.tolist())
+    poles = tuple(model.poles.real.tolist())
     reach, floor = split_reach(seen.split, rates, length, side, _smooth_stretch(device.path.corners, seen.phase, side))
     return Arm(reach, model, poles, floor) if reach > plain else replace(simple, poles=poles)
 

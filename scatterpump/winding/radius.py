@@ -20,6 +20,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -107,6 +108,13 @@ class Model:
             return self.far
         return np.asarray(self.far + 1j * self.into @ np.linalg.solve(self.sigma - s * self.core, self.out))
 
+    @cached_property
+    def poles(self) -> Complex:
+        """Where sigma - s core is singular; an s for every split level, in general complex."""
+        if len(self.sigma) == 1:
+            return np.array([self.sigma[0, 0] / self.core[0, 0] if self.core[0, 0] != 0 else 0.0], dtype=complex)
+        return np.asarray(np.linalg.eigvals(np.linalg.pinv(self.core) @ self.sigma), dtype=complex)
+
     @property
     def zeros_part(self) -> Complex:
         """q_z(0) = sigma + i out far^-1 into, whose pencil with core has the zeros of det r_m."""
@@ -147,8 +155,7 @@ def split_reach(
 def _pieces(model: Model, side: int, limit: float) -> Floats:
     """Ends of pieces of [0, limit], fine around the look itself and around the resonances of the model."""
     marks = [np.linspace(0.0, limit, 65)[1:], limit / 64 * 0.75 ** np.arange(48)]
-    poles = np.linalg.eigvals(np.linalg.pinv(model.core) @ model.sigma)
-    for pole in poles:
+    for pole in model.poles.tolist():
         centre, width = side * pole.real, max(abs(pole.imag), 1e-16)
         if np.isfinite(centre) and width < limit:
             grown = width * STEP ** np.arange(-18.0, np.log(4 * limit / width) / np.log(STEP))
