@@ -10,16 +10,17 @@ from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.bulk.gap import FLOOR, BulkGap
 from scatterpump.version import version
 from scatterpump.winding.resolved import Resolved
-from scatterpump.winding.result import Winding
+from scatterpump.winding.result import Crossing, Winding
 
 if TYPE_CHECKING:
     from scatterpump.verdict import Verdict
 
-__all__ = ["summarise", "summarise_audit"]
+__all__ = ["breadth", "summarise", "summarise_audit"]
 
 WIDTH = 98
 LABEL = 18
 SHOWN_INTERVALS = 4
+BROAD = "no resonance: broader than the cycle, so its charge comes at no one phi"
 VOID = "not at all: with what the alarm names no proof, gap or leak means anything"
 
 
@@ -44,6 +45,11 @@ def _margins(verdict: Verdict) -> list[str]:
     if verdict.chern is not None:
         lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
     return lines
+
+
+def breadth(crossing: Crossing) -> str:
+    """Return in words how broad the level is that crosses."""
+    return f"half-width {crossing.width:.1e} rad" if crossing.is_resonance else BROAD
 
 
 def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
@@ -102,9 +108,7 @@ def _winding(winding: Winding) -> list[str]:
     lines = _row("how sure", _proof(winding))
     for crossing in winding.crossings:
         verb = "filled from" if crossing.direction > 0 else "emptied into"
-        lines += _row(
-            "level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}"
-        )
+        lines += _row("level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, {breadth(crossing)}")
     if 0 < winding.leak.bound < 1:
         kind = "proven" if winding.exact else "estimated"
         lines += _row("leak", f"{kind} to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
