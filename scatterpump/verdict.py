@@ -72,7 +72,7 @@ class Verdict:
 
     def to_dict(self) -> dict[str, Any]:
         """Return plain data: numbers, text, lists and dictionaries; an infinite number is None."""
-        content = {"scatterpump": version(), "trustworthy": self.trustworthy, **asdict(self)}
+        content = {"scatterpump": version(), "trustworthy": self.trustworthy, "is_void": self.is_void, **asdict(self)}
         return dict(plain(content))
 
     def to_json(self) -> str:
