@@ -89,11 +89,20 @@ def _title(layout: Layout, windows: tuple[View, ...]) -> str:
     text = f"{layout.name}: {len(points)} sites, {len(layout.bonds)} bonds"
     if len(windows) > 1:
         shown = int(sum(window.holds(points).sum() for window in windows))
-        text += f"; its two ends, {shown} sites, are shown"
+        text += f"; its two ends, {shown} sites, are shown{_hidden(layout, points, windows)}"
     if layout.site_change is None:
         return text + "; what changes along the cycle is unknown"
     still = not _largest(layout.site_change) and not _largest(layout.bond_change)
     return text + ("; nothing changes along the cycle" if still else "")
+
+
+def _hidden(layout: Layout, points: Floats, windows: tuple[View, ...]) -> str:
+    """Name the leads that no window shows."""
+    seats = [(lead, points[lead.sites]) for lead in layout.leads]
+    hidden = [
+        lead.name or f"lead {lead.number}" for lead, seat in seats if not any(w.holds(seat).any() for w in windows)
+    ]
+    return f", not {' and '.join(hidden)}" if hidden else ""
 
 
 def _largest(values: Floats | None) -> float:
