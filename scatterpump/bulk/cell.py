@@ -9,7 +9,7 @@ The cell is the one that the pump was given, or else the one that repeats in the
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import Any
 
@@ -28,6 +28,7 @@ __all__ = ["BlochCell", "bloch_cell", "interior", "known_cell"]
 Matrices = NDArray[np.complex128]
 Sample = Callable[[Any], Matrices]
 CIRCLE = 64  # equally spaced phases of a mean over the cycle: exact for waves of up to 63 harmonics
+ROOM = 2**26  # bytes of samples to keep: some 2000 phases of a cell of 30 orbitals
 GIVEN = "the cell that the pump was given"
 
 
@@ -48,6 +49,7 @@ class BlochCell:
     pump: Pump
     sample: Sample
     found: FoundCell | None
+    _kept: dict[bytes, Matrices] = field(default_factory=dict, init=False, repr=False)
 
     @property
     def origin(self) -> str:
@@ -75,7 +77,17 @@ class BlochCell:
         if self.harmonics is not None:
             return self.harmonics.at(points)
         every, places = np.unique(points, return_inverse=True)  # grids ask for each phase at many momenta
-        return np.asarray(self.sample(every)[places])
+        return np.asarray(self._sampled(every)[places])
+
+    def _sampled(self, phases: NDArray[np.float64]) -> Matrices:
+        """Return (h, V) at each of `phases`, kept while there is room: all factors of a drive use the same."""
+        key = phases.tobytes()
+        if key in self._kept:
+            return self._kept[key]
+        found = self.sample(phases)
+        if found.nbytes + sum(kept.nbytes for kept in self._kept.values()) <= ROOM:
+            self._kept[key] = found
+        return found
 
     def hamiltonian(self, momenta: Any, phases: Any) -> Matrices:
         """Return H(k, phi) at pairs of `momenta` and `phases` (radians, shape (n,) each), shape (n, q, q)."""
