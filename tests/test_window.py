@@ -116,6 +116,14 @@ def test_sheet_says_once_that_its_energies_have_no_unit(sheet: Sheet, units: sp.
     assert json.loads(here.to_json())["unit_of_energy"] == wanted
 
 
+def test_plateau_of_estimated_bounds_is_not_called_proven(sheet: Sheet) -> None:
+    (own,) = (plateau for plateau in sheet.plateaus if plateau.lower < -1.2 < plateau.upper)
+    assert own.exact and own.how == "proven"
+    here = replace(sheet, plateaus=(replace(own, exact=False),))
+    (row,) = (row for row in here.summary().splitlines() if row.startswith("plateaus"))
+    assert row.split()[1] == "estimated"
+
+
 # ---- the command -----------------------------------------------------------------------------------------------------
 
 

@@ -93,7 +93,8 @@ class Sheet:
         for line in (*self.limits, *self.output):
             lines += _row(line.label, line.how, line.text)
         for number, plateau in enumerate(self.plateaus):
-            lines += _row("" if number else "plateaus", plateau.how, self._plateau(plateau))
+            how = plateau.how if plateau.exact else "estimated"
+            lines += _row("" if number else "plateaus", how, self._plateau(plateau))
         for number, caution in enumerate(self.cautions):
             lines += _row("" if number else "not modelled", "", caution)
         return "\n".join(lines)

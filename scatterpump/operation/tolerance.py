@@ -26,7 +26,7 @@ from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.winding.unwrap import steps
 
-__all__ = ["DisorderTolerance", "DriveTolerance", "Reach", "disorder_tolerance", "drive_tolerance"]
+__all__ = ["LADDER", "DisorderTolerance", "DriveTolerance", "Reach", "disorder_tolerance", "drive_tolerance"]
 
 SAMPLES = 3
 LADDER = (1.0, 1.5, 2.0, 3.0, 4.0)  # widths to try, in proven ones: samples differ by more than these steps
