@@ -52,7 +52,7 @@ def draw_device(layout: Layout, figure: Any) -> None:
     if layout.widths is not None:
         draw_layers(panels[1][0], layout)
     if largest:
-        _legend(panels[-1][0], colours)
+        _legend(panels[-1][0], colours, layout.unit)
 
 
 def _framed(layout: Layout) -> tuple[float, tuple[View, ...]]:
@@ -76,11 +76,11 @@ def _map_row(layout: Layout, windows: tuple[View, ...]) -> Row:
     return scale * windows[0].height, [scale * window.width for window in windows]
 
 
-def _legend(panel: Any, colours: Any) -> None:
+def _legend(panel: Any, colours: Any, unit: str) -> None:
     from matplotlib.cm import ScalarMappable
 
     bar = panel.figure.colorbar(ScalarMappable(colours[1], colours[0]), cax=panel, orientation="horizontal")
-    bar.set_label("change of a site or bond: largest distance from its mean over the cycle (energy)", fontsize=8)
+    bar.set_label(f"change of a site or bond: largest distance from its mean over the cycle ({unit})", fontsize=8)
     bar.outline.set_visible(False)
 
 

@@ -43,6 +43,11 @@ class Measure:
         return "meV" if self.units is not None and abs(self.units.energy / MEV - 1) < SAME else ""
 
     @property
+    def on_axes(self) -> str:
+        """What stands behind an energy on the axis of a drawing."""
+        return self.energy_unit or "pump's unit"
+
+    @property
     def scale(self) -> str:
         """What one unit of energy in numbers without a unit beside them is: in a sheet's JSON, say."""
         if self.energy_unit:

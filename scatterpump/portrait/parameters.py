@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
+from scatterpump.operation.measure import Measure
 from scatterpump.pump import Pump
 
 __all__ = ["ParameterPlane", "parameter_plane"]
@@ -43,6 +44,8 @@ class ParameterPlane:
         Distance of the Fermi level from the nearest band over sampled k, in the pump's unit.
     is_closed : (b, a) bool array
         Where a band reaches across the Fermi level.
+    unit : str
+        What stands behind an energy: "meV", or "pump's unit" where that is another one, or none.
     """
 
     name: str
@@ -53,6 +56,7 @@ class ParameterPlane:
     y: Floats
     distance: Floats
     is_closed: NDArray[np.bool_]
+    unit: str
 
 
 def parameter_plane(pump: Pump) -> ParameterPlane:
@@ -83,7 +87,8 @@ def parameter_plane(pump: Pump) -> ParameterPlane:
         rows = [_row(cell, (names[0], left, right), (names[1], float(value)), turns) for value in y]
     distance = np.array([row[0] for row in rows]).reshape(len(y), len(x))
     closed = np.array([row[1] for row in rows], dtype=bool).reshape(len(y), len(x))
-    return ParameterPlane(pump.name, (names[0], names[1]), phases, path, x, y, distance, closed)
+    unit = Measure(pump.units).on_axes
+    return ParameterPlane(pump.name, (names[0], names[1]), phases, path, x, y, distance, closed, unit)
 
 
 def _row(
