@@ -17,6 +17,7 @@ from scatterpump.figures.page import BESIDE, INNER, Row, stack
 from scatterpump.figures.sites import draw_sites
 from scatterpump.figures.style import strength_map
 from scatterpump.figures.window import View, flattened, views
+from scatterpump.operation.measure import Measure
 
 __all__ = ["draw_device"]
 
@@ -52,7 +53,7 @@ def draw_device(layout: Layout, figure: Any) -> None:
     if layout.widths is not None:
         draw_layers(panels[1][0], layout)
     if largest:
-        _legend(panels[-1][0], colours, layout.unit)
+        _legend(panels[-1][0], colours, Measure(layout.units).on_axes)
 
 
 def _framed(layout: Layout) -> tuple[float, tuple[View, ...]]:
