@@ -24,7 +24,7 @@ def main() -> None:
     winding = sp.certify(pump)
     print(f"{winding.number} charge a cycle, proven with {winding.evaluations} evaluations")
     for crossing in winding.crossings:
-        print(f"  a level passes the Fermi level at phi = {crossing.phase:.3f}, half-width {crossing.width:.2g}")
+        print(f"  a level passes the Fermi level at phi = {crossing.phase:.3f}, half-width {crossing.width:.2g} rad")
 
     gap = sp.bulk_gap(pump)
     print(f"Fermi levels between {gap.lower_edge.upper:.3f} and {gap.upper_edge.lower:.3f} carry the same")

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.pump import Pump
-from scatterpump.summary import LABEL, summarise
+from scatterpump.summary import LABEL, breadth, summarise
 from scatterpump.winding.result import Winding
 
 if TYPE_CHECKING:
@@ -43,7 +43,7 @@ def winding_table(winding: Winding) -> str:
     rows += [("open", f"phi = {start:.6g} to {end:.6g}") for start, end in winding.unproven[:SHOWN]]
     for crossing in winding.crossings[:SHOWN]:
         verb = "filled" if crossing.direction > 0 else "emptied"
-        rows.append(("level crosses", f"phi = {crossing.phase:.6g}, {verb}, half-width {crossing.width:.2g} rad"))
+        rows.append(("level crosses", f"phi = {crossing.phase:.6g}, {verb}, {breadth(crossing)}"))
     hidden = len(winding.crossings) - SHOWN
     rows += [("", f"and {hidden} more crossings")] if hidden > 0 else []
     return _table("Winding of det r", (), [*rows, ("leak", f"at most {winding.leak.bound:.2g} of the electrons")])

@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 
 from scatterpump.anatomy.layout import Layout, inspect
 from scatterpump.audit.finding import AuditReport, Finding
+from scatterpump.builder.description import Disorder
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 from scatterpump.verdict import Verdict, judge
@@ -182,5 +183,8 @@ def _randomness(description: Any) -> str:
     disorder = getattr(description, "disorder", None)
     if disorder is None:  # the device is built by a program of its own
         return Source.randomness
-    is_random = disorder.onsite or disorder.bonds
-    return f"seed {disorder.seed} of the disorder" if is_random else "nothing is random"
+    if isinstance(disorder, Disorder):
+        seed, is_random = disorder.seed, bool(disorder.onsite or disorder.bonds)
+    else:  # a channel's or a superlattice's: a width, and the seed beside it
+        seed, is_random = description.seed, disorder > 0
+    return f"seed {seed} of the disorder" if is_random else "nothing is random"

@@ -8,24 +8,27 @@ from typing import TYPE_CHECKING
 
 from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.bulk.gap import FLOOR, BulkGap
+from scatterpump.operation.measure import Measure
+from scatterpump.pump import Units
 from scatterpump.version import version
 from scatterpump.winding.resolved import Resolved
-from scatterpump.winding.result import Winding
+from scatterpump.winding.result import Crossing, Winding
 
 if TYPE_CHECKING:
     from scatterpump.verdict import Verdict
 
-__all__ = ["summarise", "summarise_audit"]
+__all__ = ["breadth", "summarise", "summarise_audit"]
 
 WIDTH = 98
 LABEL = 18
 SHOWN_INTERVALS = 4
+BROAD = "no resonance: broader than the cycle, so its charge comes at no one phi"
 VOID = "not at all: with what the alarm names no proof, gap or leak means anything"
 
 
 def summarise(verdict: Verdict) -> str:
     """Return the table that `Verdict.summary` shows."""
-    lines = [f"{verdict.name}, Fermi level {verdict.fermi_level:g}   (scatterpump {version()})", ""]
+    lines = _head(verdict.name, verdict.fermi_level, verdict.units)
     for finding in verdict.audit.alarms:
         lines += _finding(finding)
     lines += _integer(verdict)
@@ -40,15 +43,20 @@ def _margins(verdict: Verdict) -> list[str]:
     lines = [] if verdict.winding is None else _winding(verdict.winding)
     if verdict.resolved is not None:
         lines += _row("conserved", _resolved(verdict.resolved))
-    lines += _row("bulk gap", f"none: {verdict.interior}") if verdict.gap is None else _gap(verdict.gap)
+    lines += _row("bulk gap", f"none: {verdict.interior}") if verdict.gap is None else _gap(verdict.gap, verdict.units)
     if verdict.chern is not None:
         lines += _row("Chern number", f"{_signed(verdict.chern)} of the filled bands")
     return lines
 
 
-def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
+def breadth(crossing: Crossing) -> str:
+    """Return in words how broad the level is that crosses."""
+    return f"half-width {crossing.width:.1e} rad" if crossing.is_resonance else BROAD
+
+
+def summarise_audit(report: AuditReport, name: str, fermi_level: float, units: Units | None = None) -> str:
     """Return the findings as a table: alarms first, then cautions, then what is in order and what was left out."""
-    lines = [f"{name}, Fermi level {fermi_level:g}   (scatterpump {version()})", ""]
+    lines = _head(name, fermi_level, units)
     for finding in (*report.alarms, *report.cautions):
         lines += _finding(finding)
     lines += _row("in order", ", ".join(f.check for f in report.findings if f.status == "pass"))
@@ -59,6 +67,15 @@ def summarise_audit(report: AuditReport, name: str, fermi_level: float) -> str:
     if report.quick:
         lines += _row("how sure", "sampled at single phases, not proven; 'scatterpump verdict' proves")
     return "\n".join([*lines, *_counts(report)])
+
+
+def _head(name: str, fermi_level: float, units: Units | None) -> list[str]:
+    return [f"{name}, Fermi level {fermi_level:g}{_unit(units)}   (scatterpump {version()})", ""]
+
+
+def _unit(units: Units | None) -> str:
+    """What stands behind an energy: " meV", or nothing."""
+    return f" {Measure(units).energy_unit}".rstrip()
 
 
 def _counts(report: AuditReport) -> list[str]:
@@ -102,9 +119,7 @@ def _winding(winding: Winding) -> list[str]:
     lines = _row("how sure", _proof(winding))
     for crossing in winding.crossings:
         verb = "filled from" if crossing.direction > 0 else "emptied into"
-        lines += _row(
-            "level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, half-width {crossing.width:.1e}"
-        )
+        lines += _row("level crosses", f"at phi = {crossing.phase:.4f}, {verb} the probe, {breadth(crossing)}")
     if 0 < winding.leak.bound < 1:
         kind = "proven" if winding.exact else "estimated"
         lines += _row("leak", f"{kind} to be at most {winding.leak.bound:.1e} of the electrons, at every phi")
@@ -134,27 +149,29 @@ def _proof(winding: Winding) -> str:
     return f"{how}: {winding.evaluations} evaluations{place} cover every phi"
 
 
-def _gap(gap: BulkGap) -> list[str]:
+def _gap(gap: BulkGap, units: Units | None) -> list[str]:
+    unit = _unit(units)
     if not gap.is_open:
         near = max(gap.distance_upper, FLOOR / 2)
         place = f"k = {gap.momentum:.4f}, phi = {gap.phase:.4f}"
-        return _row("bulk gap", f"closed, or the level closer than {near:.1e} to a band, at {place}")
+        return _row("bulk gap", f"closed, or the level closer than {near:.1e}{unit} to a band, at {place}")
     kind = "proven" if gap.exact else "estimated"
     low, high = gap.lower_edge.upper, gap.upper_edge.lower
     window = (
-        f"{low:.5g} to {high:.5g}"
+        f"{low:.5g} to {high:.5g}{unit}"
         if isfinite(high - low)
-        else f"below {high:.5g}"
+        else f"below {high:.5g}{unit}"
         if isfinite(high)
-        else f"above {low:.5g}"
+        else f"above {low:.5g}{unit}"
     )
-    lines = _row("Fermi window", f"{window}, the level is {gap.distance_lower:.4g} away from the nearer edge")
+    lines = _row("Fermi window", f"{window}, the level is {gap.distance_lower:.4g}{unit} away from the nearer edge")
     if not isfinite(gap.upper):
         return lines
     return [
         *_row(
             "bulk gap",
-            f"{gap.lower:.5g} to {gap.upper:.5g} ({kind}), smallest at k = {gap.momentum:.4f}, phi = {gap.phase:.4f}",
+            f"{gap.lower:.5g} to {gap.upper:.5g}{unit} ({kind}), smallest at k = {gap.momentum:.4f}, "
+            f"phi = {gap.phase:.4f}",
         ),
         *lines,
     ]

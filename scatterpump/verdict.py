@@ -17,7 +17,7 @@ from scatterpump.audit.finding import AuditReport
 from scatterpump.bulk.cell import interior
 from scatterpump.bulk.gap import BulkGap
 from scatterpump.plain import plain
-from scatterpump.pump import Pump
+from scatterpump.pump import Pump, Units
 from scatterpump.version import version
 from scatterpump.winding.resolved import Resolved, resolve_if_asked
 from scatterpump.winding.result import Winding
@@ -48,6 +48,8 @@ class Verdict:
         Which cell the gap and the Chern number belong to, or why there is none, in words.
     resolved : Resolved or None
         What each eigenvalue of a conserved quantity carries; None if the probe was built without a conservation law.
+    units : Units or None
+        What one unit of energy and one lattice constant are, in joules and metres; None if the pump does not say.
     """
 
     name: str
@@ -59,6 +61,7 @@ class Verdict:
     route: str
     interior: str
     resolved: Resolved | None
+    units: Units | None = None
 
     @property
     def trustworthy(self) -> bool:
@@ -72,7 +75,7 @@ class Verdict:
 
     def to_dict(self) -> dict[str, Any]:
         """Return plain data: numbers, text, lists and dictionaries; an infinite number is None."""
-        content = {"scatterpump": version(), "trustworthy": self.trustworthy, **asdict(self)}
+        content = {"scatterpump": version(), "trustworthy": self.trustworthy, "is_void": self.is_void, **asdict(self)}
         return dict(plain(content))
 
     def to_json(self) -> str:
@@ -118,4 +121,4 @@ def judge(pump: Pump, *, progress: Callable[[float], None] | None = None) -> Ver
         report = run_checks(evidence)
         resolved = resolve_if_asked(pump)
     route, cell = pump.route, interior(pump)
-    return Verdict(pump.name, pump.fermi_level, winding, gap, chern, report, route, cell, resolved)
+    return Verdict(pump.name, pump.fermi_level, winding, gap, chern, report, route, cell, resolved, pump.units)

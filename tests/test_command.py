@@ -249,6 +249,15 @@ def test_unknown_example_is_bad_input(tmp_path: Path, monkeypatch: pytest.Monkey
     assert all(word in result.stderr for word in ("'dimmer'", *NAMES))
 
 
+def test_help_tells_of_every_command_in_whole_sentences() -> None:
+    text = call("--help").output
+    commands = text[text.index("Commands:") :]
+    for name, command in main.commands.items():
+        assert name in commands
+        assert command.get_short_help_str(10_000).split()[-1] in commands.split()
+    assert "..." not in commands
+
+
 def test_version_and_help() -> None:
     assert call("--version").stdout == version() + "\n"
     assert "verdict" in call("-h").stdout

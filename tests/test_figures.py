@@ -18,16 +18,18 @@ from matplotlib.figure import Figure
 from numpy.testing import assert_allclose
 
 from scatterpump import figures
+from scatterpump.anatomy.layout import inspect
 from scatterpump.builder.chain import ModulatedChain
 from scatterpump.builder.description import Wave
 from scatterpump.errors import InputError
 from scatterpump.figures import catalogue
+from scatterpump.figures.device import draw_device
 from scatterpump.figures.output import save
 from scatterpump.figures.sheet import draw_sheet
 from scatterpump.figures.style import ACCENT, GREY, INK, PALE, cycle_map, strength_map
 from scatterpump.portrait import Turning
 from scatterpump.portrait.album import Album
-from scatterpump.pump import Pump
+from scatterpump.pump import Pump, Units
 
 TURN = 2 * np.pi
 
@@ -145,6 +147,26 @@ def test_energies_without_an_open_mode_are_blank(album: Album, ax: Any) -> None:
     # derived
     assert np.ma.getmaskarray(ax.collections[0].get_array())[0].all()
     assert not np.ma.getmaskarray(ax.collections[0].get_array())[1:].any()
+
+
+@pytest.mark.parametrize(
+    ("energy", "unit"), [(1.602176634e-22, "meV"), (6.62607015e-34, "pump's unit"), (None, "pump's unit")]
+)
+def test_energies_are_drawn_with_their_unit(energy: float | None, unit: str) -> None:
+    # 1 meV in joules by the SI of 2019, exact
+    pump = rice_mele(loop(), cells=6, energy=0.1)
+    album = Album(pump if energy is None else replace(pump, units=Units(energy, 1e-9)))
+    axes = Figure().subplots(4)
+    figures.edge_levels(album.spectrum, axes[0])
+    figures.local_density(album.density, axes[1])
+    figures.potential(album.potential, axes[2])
+    figures.parameter_plane(album.plane, axes[3])
+    assert [ax.get_ylabel() for ax in axes[:2]] == [f"energy ({unit})"] * 2
+    bars = [ax.get_ylabel() for ax in axes[0].figure.axes[4:]]
+    assert bars == [f"states per {unit}", f"on-site ({unit})", f"nearest band ({unit})"]
+    device = Figure()
+    draw_device(inspect(album.pump), device)
+    assert sum(f"({unit})" in label for ax in device.axes for label in (ax.get_xlabel(), ax.get_ylabel())) == 2
 
 
 def test_plane_shows_the_cycle_over_the_gap(album: Album, ax: Any) -> None:

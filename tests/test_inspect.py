@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import kwant
 import numpy as np
 import pytest
+from geometries import three_leads
 from numpy.testing import assert_allclose
 from sound import LATTICE, bench, two_orbitals, wire, with_lead
 
@@ -120,6 +122,29 @@ def test_every_shape_is_drawn(make: Any, tmp_path: Path) -> None:
     layout.draw(tmp_path / "device.png")
     # derived: something is on the page, and warnings are errors
     assert (tmp_path / "device.png").stat().st_size > 10_000
+
+
+@pytest.mark.parametrize(
+    ("names", "at", "sites", "words", "title"),
+    [
+        ((), 12, 24, ["probe, 1 mode", "lead 2, 1 mode", "drain, 1 mode"], None),
+        (("west", "east", "gauge"), 12, 24, ["west (probe), 1 mode", "gauge, 1 mode", "east (drain), 1 mode"], None),
+        (("west", "east", "gauge"), 1, 24, ["west (probe), 1 mode; gauge, 1 mode", "east (drain), 1 mode"], None),
+        (("west", "east", "gauge"), 60, 120, ["west (probe), 1 mode", "east (drain), 1 mode"], "not gauge"),
+    ],
+)
+def test_leads_are_called_by_their_names(
+    names: tuple[str, ...], at: int, sites: int, words: list[str], title: str | None
+) -> None:
+    from matplotlib.figure import Figure
+
+    from scatterpump.figures.device import draw_device
+
+    figure = Figure()
+    draw_device(inspect(replace(three_leads(sites, at), lead_names=names)), figure)
+    texts = [text for panel in figure.axes for text in panel.texts if "mode" in text.get_text()]
+    assert [text.get_text() for text in texts] == words
+    assert title is None or title in figure.axes[0].get_title() + figure.axes[0].get_title(loc="left")
 
 
 def test_device_that_fails_is_drawn_with_what_is_known(tmp_path: Path) -> None:

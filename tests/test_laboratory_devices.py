@@ -230,3 +230,13 @@ def test_channel_of_another_step_has_no_interior_but_a_verdict_all_the_same():
     assert channel.cell is None
     assert channel.pump().bulk is None
     assert sp.certify(channel.pump()).number == 1
+
+
+def test_verdict_tells_energies_in_their_unit():
+    verdict = sp.judge(replace(CONVEYOR, length=400).pump())
+    text = verdict.summary()
+    assert "Fermi level -1.05 meV " in text
+    for row in ("bulk gap", "Fermi window"):
+        assert " meV" in next(line for line in text.splitlines() if line.startswith(row))
+    # 1 meV in joules by the SI of 2019, exact; the step is 10 nm
+    assert verdict.to_dict()["units"] == pytest.approx({"energy": 1.602176634e-22, "length": 1e-8}, rel=1e-12)

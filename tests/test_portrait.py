@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import kwant
 import numpy as np
 import pytest
@@ -12,6 +14,7 @@ from sound import bench
 from scatterpump import portrait
 from scatterpump.builder.chain import ModulatedChain
 from scatterpump.builder.description import Lead, Wave
+from scatterpump.bulk import cell
 from scatterpump.bulk.gap import bulk_gap
 from scatterpump.errors import InputError
 from scatterpump.portrait.window import energy_window
@@ -135,6 +138,18 @@ def test_plane_closes_where_the_dimerised_chain_does() -> None:
     assert_allclose(found.distance[inside], expected[inside], atol=1e-9)
     assert not found.is_closed[expected > 1e-9].any()
     assert_allclose(found.path[0], [0.5, 0.0], atol=1e-12)
+
+
+def test_plane_of_a_found_cell_is_that_of_the_given_one(monkeypatch: pytest.MonkeyPatch) -> None:
+    given = rice_mele(loop(), cells=12)
+    searches: list[Pump] = []
+    search = cell.find_cell
+    monkeypatch.setattr(cell, "find_cell", lambda pump: (searches.append(pump), search(pump))[1])
+    found, wanted = (portrait.parameter_plane(pump) for pump in (replace(given, bulk=None), given))
+    # derived: one device, and one cell of it, wherever it is cut
+    assert_allclose(found.distance, wanted.distance, atol=1e-9)
+    assert (found.is_closed == wanted.is_closed).all()
+    assert len(searches) == 1  # for all rows of the plane together
 
 
 def test_plane_needs_two_parameters() -> None:

@@ -12,7 +12,9 @@ from numpy.testing import assert_allclose
 from scipy.optimize import brentq
 
 import scatterpump as sp
-from scatterpump.operation.altered import with_disorder, with_drive
+from scatterpump.bulk import cell
+from scatterpump.bulk.cell import bloch_cell
+from scatterpump.operation.altered import with_disorder
 from scatterpump.solver.hamiltonian import DrivenHamiltonian
 
 SLIDING = sp.ModulatedChain(sites=36, fermi_level=-1.2, onsite=[sp.Wave(1.5, 3)], probe=WIDE, drain=WIDE)
@@ -23,15 +25,33 @@ SLIDING = sp.ModulatedChain(sites=36, fermi_level=-1.2, onsite=[sp.Wave(1.5, 3)]
 
 def test_half_the_drive_is_half_the_wave():
     weak = replace(SLIDING, onsite=[sp.Wave(0.75, 3)]).pump()
-    for phase in (0.3, 2.0):
-        found, wanted = (DrivenHamiltonian(pump).at(phase) for pump in (with_drive(SLIDING.pump(), 0.5), weak))
-        assert_allclose(found, wanted, atol=1e-13)  # derived: the wave's mean over the cycle is 0
+    found = bloch_cell(SLIDING.pump()).driven(0.5)
+    # derived: the wave's mean over the cycle is 0
+    assert_allclose(found.blocks([0.3, 2.0]), bloch_cell(weak).blocks([0.3, 2.0]), atol=1e-13)
 
 
 def test_drive_shrinks_a_loop_about_its_middle():
     shrunk = rice_mele(loop(delta=(0.2, 0.3), stagger=(0.1, 0.2)))
-    pump = with_drive(rice_mele(loop(delta=(0.2, 0.6), stagger=(0.1, 0.4))), 0.5)
-    assert_allclose(DrivenHamiltonian(pump).at(1.1), DrivenHamiltonian(shrunk).at(1.1), atol=1e-13)  # derived
+    found = bloch_cell(rice_mele(loop(delta=(0.2, 0.6), stagger=(0.1, 0.4)))).driven(0.5)
+    assert_allclose(found.blocks([1.1]), bloch_cell(shrunk).blocks([1.1]), atol=1e-13)  # derived
+
+
+@pytest.mark.parametrize("bulk", [True, False])
+def test_cell_without_its_drive_does_not_move(bulk):
+    pump = SLIDING.pump()
+    still = bloch_cell(pump if bulk else replace(pump, bulk=None)).driven(0.0)
+    assert still.harmonics is not None and still.harmonics.degree == 0
+    # textbook: a uniform chain of hopping 1 has the band -2 cos k; the wave's mean over the cycle is 0
+    momenta = np.linspace(0, 2 * np.pi, 5)
+    bands = -2 * np.cos((momenta[:, None] + 2 * np.pi * np.arange(3)) / 3)
+    energies = np.linalg.eigvalsh(still.hamiltonian(momenta, 0 * momenta))
+    assert_allclose(energies, np.sort(bands, axis=1), atol=1e-12)
+
+
+def test_drive_reaches_as_far_by_a_found_cell():
+    given, found = (sp.drive_tolerance(pump) for pump in (SLIDING.pump(), replace(SLIDING.pump(), bulk=None)))
+    for one, other in ((given.weakest, found.weakest), (given.strongest, found.strongest)):
+        assert one.holds == pytest.approx(other.holds, rel=0.01)  # twice LAST_STEP: each march stops within one
 
 
 def test_disorder_stays_in_its_box_and_is_the_same_each_time():
@@ -101,14 +121,22 @@ def test_drive_of_the_sliding_wave_holds_until_an_edge_meets_the_level():
     assert 0.98 * strongest <= found.strongest.holds <= strongest <= found.strongest.fails
 
 
-def test_drive_of_a_bent_trace_is_called_estimated():
+def test_drive_of_a_bent_trace_is_called_estimated(monkeypatch):
     """Recorded points joined by a spline: H between samples is known by sampling only."""
     angles = 2 * np.pi * np.arange(9) / 8
     table = {"delta": (0.45 + 0.5 * np.cos(angles)).tolist(), "stagger": (0.5 * np.sin(angles)).tolist()}
     table = {name: [*values[:-1], values[0]] for name, values in table.items()}
-    found = sp.drive_tolerance(rice_mele(sp.Cycle.through(table, curve="spline")), limit=1.01)
+    pump = rice_mele(sp.Cycle.through(table, curve="spline"))
+    asked = []
+    at = cell._at
+    monkeypatch.setattr(cell, "_at", lambda *where: (asked.append(1), at(*where))[1])
+    found = sp.drive_tolerance(pump, limit=1.01)
     assert not found.exact
     assert 0.9 <= found.weakest.holds < 0.91  # derived: the loop about (0.45, 0) must be wider than 0.45
+    assert found.steps > 2
+    assert (
+        len(asked) < 2500
+    )  # derived: 512 knots and 512 middles, 512 of the norm and 64 of the mean, once for all steps
 
 
 @pytest.mark.parametrize("limit", [1.0, 0.5, np.inf, np.nan])

@@ -25,6 +25,7 @@ def test_verdict_without_a_hermitian_hamiltonian_proves_nothing(sheet: Sheet) ->
     verdict = sheet.verdict
     assert [finding.check for finding in verdict.audit.alarms] == ["Hamiltonian Hermitian"]
     assert (verdict.is_void, verdict.trustworthy) == (True, False)
+    assert verdict.to_dict()["is_void"] is True
     text = verdict.summary()
     assert "how sure          not at all" in text
     for claim in ("proven:", "proven to be", "bulk gap  ", "det r winds"):
@@ -41,5 +42,5 @@ def test_alarm_about_a_device_that_scatters_leaves_its_proofs() -> None:
     """A device that leaks is no pump, but its r is what it is, and so is its winding."""
     verdict = operating_sheet(SimpleNamespace(pump=lambda: bench(cells=2)), samples=0).verdict
     assert "leakage" in {finding.check for finding in verdict.audit.alarms}
-    assert not verdict.is_void
+    assert not verdict.is_void and verdict.to_dict()["is_void"] is False
     assert "how sure          proven" in verdict.summary()

@@ -17,7 +17,7 @@ from scatterpump.anatomy.motion import Motion, watch
 from scatterpump.anatomy.period import cell_length
 from scatterpump.bulk.cell import interior
 from scatterpump.errors import PumpError
-from scatterpump.pump import Pump
+from scatterpump.pump import Pump, Units
 from scatterpump.solver.hamiltonian import driven_path
 
 __all__ = ["Layout", "LeadView", "inspect"]
@@ -85,6 +85,8 @@ class Layout:
         Its length in lattice constants; None without a cell, or if its sites are not that far apart throughout.
     troubles : tuple of str
         Why something is unknown.
+    units : Units or None
+        What one unit of energy and one lattice constant are; None if the pump does not say.
     """
 
     name: str
@@ -102,6 +104,7 @@ class Layout:
     interior: str
     period: float | None
     troubles: tuple[str, ...]
+    units: Units | None
 
     def summary(self) -> str:
         """Return the layout as a table."""
@@ -138,6 +141,7 @@ def inspect(pump: Pump) -> Layout:
         "unknown" if motion is None else interior(pump),
         None if motion is None else cell_length(pump),
         tuple(troubles),
+        pump.units,
     )
 
 

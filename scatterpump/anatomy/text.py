@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.anatomy.layout import UNREACHED, Layout, LeadView
+from scatterpump.operation.measure import Measure
 from scatterpump.version import version
 
 __all__ = ["describe"]
@@ -18,7 +19,8 @@ WIDTH, LABEL = 98, 18
 
 def describe(layout: Layout) -> str:
     """Return the table that `Layout.summary` shows."""
-    lines = [f"{layout.name}, Fermi level {layout.fermi_level:g}   (scatterpump {version()})", ""]
+    unit = f" {Measure(layout.units).energy_unit}".rstrip()
+    lines = [f"{layout.name}, Fermi level {layout.fermi_level:g}{unit}   (scatterpump {version()})", ""]
     lines += _row("sites", _sites(layout))
     lines += _row("bonds", f"{len(layout.bonds)}")
     for lead in layout.leads:

@@ -16,6 +16,7 @@ from scatterpump.audit.finding import Place
 
 __all__ = ["continuum_resolved"]
 
+NANOMETRE = 1e-9  # metres
 COARSE = (0.01, 0.1)  # error of the kinetic energy: as good as effective masses are known; no longer a parabola
 
 
@@ -43,7 +44,7 @@ def continuum_resolved(evidence: Evidence) -> Outcome | None:
         text += f": the kinetic energy {kinetic:.3g} is more than the band of the lattice, {4 * continuum.hopping:.3g}"
     elif error > COARSE[0]:
         needed = continuum.step * sqrt(COARSE[0] / error)
-        text += f", so energies are wrong by {100 * error:.2g} %; a step of {needed:.2g} m would do"
+        text += f", so energies are wrong by {100 * error:.2g} %; a step of {needed / NANOMETRE:.2g} nm would do"
     return graded(error, COARSE, text + ".", text + ".", Place(site=site))
 
 

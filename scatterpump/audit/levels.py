@@ -78,7 +78,8 @@ def _same_behind_good_contact(evidence: Evidence) -> bool:
     because="A level at the Fermi level where the cycle starts is half filled there; the winding does not mind, but a "
     "charge counted over one cycle from that start does.",
     caution="an eigenphase of r at phi = 0 is within a quarter turn of the resonance of a level that moves",
-    remedy="Start the cycle elsewhere (started_at), or move the Fermi level a little.",
+    remedy="Start the cycle elsewhere (started_at), or move the Fermi level a little; weaken the contact if the "
+    "level is broader than the cycle.",
 )
 def start_clear(evidence: Evidence) -> Outcome | None:
     """Is there no edge level at the Fermi level where the cycle starts?"""

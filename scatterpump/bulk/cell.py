@@ -9,7 +9,7 @@ The cell is the one that the pump was given, or else the one that repeats in the
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import Any
 
@@ -17,14 +17,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.bulk.found import FoundCell, find_cell
+from scatterpump.cycle import Cycle
 from scatterpump.errors import NoBulkError, SolverError
 from scatterpump.pump import Pump
+from scatterpump.solver.hamiltonian import driven_path
 from scatterpump.solver.harmonics import Harmonics, fit
 
 __all__ = ["BlochCell", "bloch_cell", "interior", "known_cell"]
 
 Matrices = NDArray[np.complex128]
 Sample = Callable[[Any], Matrices]
+CIRCLE = 64  # equally spaced phases of a mean over the cycle: exact for waves of up to 63 harmonics
+ROOM = 2**26  # bytes of samples to keep: some 2000 phases of a cell of 30 orbitals
 GIVEN = "the cell that the pump was given"
 
 
@@ -39,12 +43,13 @@ class BlochCell:
     sample : callable
         Phases (n,) to (h, V) at each of them, shape (n, 2, q, q).
     found : FoundCell or None
-        Where the cell is in the device; None if the pump was given it.
+        Where the cell is in the device; None if the pump was given it, or if it is `driven` another way.
     """
 
     pump: Pump
     sample: Sample
     found: FoundCell | None
+    _kept: dict[bytes, Matrices] = field(default_factory=dict, init=False, repr=False)
 
     @property
     def origin(self) -> str:
@@ -69,13 +74,39 @@ class BlochCell:
     def blocks(self, phases: Any) -> Matrices:
         """Return (h, V) at each of `phases`, shape (n, 2, q, q)."""
         points = np.asarray(phases, dtype=float)
-        return self.sample(points) if self.harmonics is None else self.harmonics.at(points)
+        if self.harmonics is not None:
+            return self.harmonics.at(points)
+        every, places = np.unique(points, return_inverse=True)  # grids ask for each phase at many momenta
+        return np.asarray(self._sampled(every)[places])
+
+    def _sampled(self, phases: NDArray[np.float64]) -> Matrices:
+        """Return (h, V) at each of `phases`, kept while there is room: all factors of a drive use the same."""
+        key = phases.tobytes()
+        if key in self._kept:
+            return self._kept[key]
+        found = self.sample(phases)
+        if found.nbytes + sum(kept.nbytes for kept in self._kept.values()) <= ROOM:
+            self._kept[key] = found
+        return found
 
     def hamiltonian(self, momenta: Any, phases: Any) -> Matrices:
         """Return H(k, phi) at pairs of `momenta` and `phases` (radians, shape (n,) each), shape (n, q, q)."""
         h, hop = np.moveaxis(self.blocks(phases), 1, 0)
         turned = hop * np.exp(-1j * np.asarray(momenta))[:, None, None]
         return np.asarray(h + turned + turned.conj().swapaxes(1, 2))
+
+    def driven(self, factor: float) -> BlochCell:
+        """Return the cell with all that moves in it multiplied by `factor`, about its mean over the cycle."""
+        mean = self.blocks(2 * np.pi * np.arange(CIRCLE) / CIRCLE).mean(axis=0)
+        return BlochCell(self.pump, lambda phases: mean + factor * (self.blocks(phases) - mean), None)
+
+    def along(self, cycle: Cycle) -> BlochCell:
+        """Return the same cell driven round another cycle; one that was found is not looked for again."""
+        pump = self.pump.on(cycle)
+        if self.found is None:
+            return _given(pump)
+        found = replace(self.found, path=driven_path(pump)[1])
+        return BlochCell(pump, found.sample, found)
 
 
 def bloch_cell(pump: Pump) -> BlochCell:

@@ -17,7 +17,7 @@ from scatterpump.bulk.cell import BlochCell, bloch_cell
 from scatterpump.errors import ClosedGapError
 from scatterpump.pump import Pump
 
-__all__ = ["chern_number", "plaquettes"]
+__all__ = ["chern_number", "chern_of", "plaquettes"]
 
 FINEST = 512
 SAFE_PLAQUETTE = 1.0
@@ -35,7 +35,12 @@ def chern_number(pump: Pump) -> int:
     InputError
         If the pump has no cell, given or found.
     """
-    cell, size = bloch_cell(pump), 24
+    return chern_of(bloch_cell(pump))
+
+
+def chern_of(cell: BlochCell) -> int:
+    """Return the Chern number of a cell, as `chern_number` does that of the cell of a pump."""
+    size = 24
     while size <= FINEST:
         states = _filled_states(cell, size, 2 * size)
         if states.shape[-1] == 0:
@@ -44,7 +49,7 @@ def chern_number(pump: Pump) -> int:
         if np.abs(flux).max() < SAFE_PLAQUETTE:
             return round(float(flux.sum()) / (2 * np.pi))
         size *= 2
-    raise ClosedGapError(pump.fermi_level, "the Berry flux cannot be resolved")
+    raise ClosedGapError(cell.fermi_level, "the Berry flux cannot be resolved")
 
 
 def plaquettes(states: NDArray[np.complex128]) -> NDArray[np.float64]:

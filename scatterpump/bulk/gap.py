@@ -21,7 +21,7 @@ from scatterpump.bulk.torus import Found, search
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 
-__all__ = ["FLOOR", "BulkGap", "Extremum", "bulk_gap"]
+__all__ = ["FLOOR", "BulkGap", "Extremum", "bulk_gap", "gap_of"]
 
 Place = NDArray[np.float64]
 
@@ -136,8 +136,13 @@ def bulk_gap(pump: Pump, *, accuracy: float = ACCURACY, floor: float = FLOOR, bu
     >>> gap.is_open, gap.filled, round(gap.upper, 4)
     (True, 1, 1.0788)
     """
+    return gap_of(bloch_cell(pump), accuracy=accuracy, floor=floor, budget=budget)
+
+
+def gap_of(cell: BlochCell, *, accuracy: float = ACCURACY, floor: float = FLOOR, budget: int = BUDGET) -> BulkGap:
+    """Bracket the gap of a cell, as `bulk_gap` does that of the cell of a pump."""
     _check(accuracy, floor, budget)
-    bands = _Bands(bloch_cell(pump))
+    bands = _Bands(cell)
     family = bloch_family(bands.cell)
     filled = sum(energy < 0 for energy in bands.at(np.zeros(2)))
     found = search(family, family.bends, family.cover, filled=filled, accuracy=accuracy, floor=floor / 2, budget=budget)

@@ -51,7 +51,7 @@ def audit(
         pump = load_device(device, changes).pump()
         report = examine(pump, quick=True)
     content = json.dumps({"name": pump.name, **report.to_dict()}, indent=2, allow_nan=False)
-    click.echo(content if json_file == "-" else summarise_audit(report, pump.name, pump.fermi_level))
+    click.echo(content if json_file == "-" else summarise_audit(report, pump.name, pump.fermi_level, pump.units))
     if json_file not in (None, "-"):
         write(Path(str(json_file)), content + "\n")
     sound = report.passed and not (strict and report.cautions)

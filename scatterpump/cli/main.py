@@ -45,4 +45,5 @@ def main() -> None:
 
 
 for command in (verdict, audit, inspect, window, draw, report, sweep, status, gather, example):
+    command.short_help = " ".join((command.help or "").split("\n\n")[0].split())  # whole: click would cut it short
     main.add_command(command)

@@ -17,6 +17,7 @@ from scatterpump.figures.page import BESIDE, INNER, Row, stack
 from scatterpump.figures.sites import draw_sites
 from scatterpump.figures.style import strength_map
 from scatterpump.figures.window import View, flattened, views
+from scatterpump.operation.measure import Measure
 
 __all__ = ["draw_device"]
 
@@ -52,7 +53,7 @@ def draw_device(layout: Layout, figure: Any) -> None:
     if layout.widths is not None:
         draw_layers(panels[1][0], layout)
     if largest:
-        _legend(panels[-1][0], colours)
+        _legend(panels[-1][0], colours, Measure(layout.units).on_axes)
 
 
 def _framed(layout: Layout) -> tuple[float, tuple[View, ...]]:
@@ -76,11 +77,11 @@ def _map_row(layout: Layout, windows: tuple[View, ...]) -> Row:
     return scale * windows[0].height, [scale * window.width for window in windows]
 
 
-def _legend(panel: Any, colours: Any) -> None:
+def _legend(panel: Any, colours: Any, unit: str) -> None:
     from matplotlib.cm import ScalarMappable
 
     bar = panel.figure.colorbar(ScalarMappable(colours[1], colours[0]), cax=panel, orientation="horizontal")
-    bar.set_label("change of a site or bond: largest distance from its mean over the cycle (energy)", fontsize=8)
+    bar.set_label(f"change of a site or bond: largest distance from its mean over the cycle ({unit})", fontsize=8)
     bar.outline.set_visible(False)
 
 
@@ -89,11 +90,20 @@ def _title(layout: Layout, windows: tuple[View, ...]) -> str:
     text = f"{layout.name}: {len(points)} sites, {len(layout.bonds)} bonds"
     if len(windows) > 1:
         shown = int(sum(window.holds(points).sum() for window in windows))
-        text += f"; its two ends, {shown} sites, are shown"
+        text += f"; its two ends, {shown} sites, are shown{_hidden(layout, points, windows)}"
     if layout.site_change is None:
         return text + "; what changes along the cycle is unknown"
     still = not _largest(layout.site_change) and not _largest(layout.bond_change)
     return text + ("; nothing changes along the cycle" if still else "")
+
+
+def _hidden(layout: Layout, points: Floats, windows: tuple[View, ...]) -> str:
+    """Name the leads that no window shows."""
+    seats = [(lead, points[lead.sites]) for lead in layout.leads]
+    hidden = [
+        lead.name or f"lead {lead.number}" for lead, seat in seats if not any(w.holds(seat).any() for w in windows)
+    ]
+    return f", not {' and '.join(hidden)}" if hidden else ""
 
 
 def _largest(values: Floats | None) -> float:

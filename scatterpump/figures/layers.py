@@ -8,6 +8,7 @@ import numpy as np
 
 from scatterpump.anatomy.layout import Layout
 from scatterpump.figures.style import INK, PALE
+from scatterpump.operation.measure import Measure
 
 __all__ = ["draw_layers"]
 
@@ -35,5 +36,5 @@ def draw_layers(panel: Any, layout: Layout) -> None:
     for values, dashes, label in zip(by_layer, ("-", ":"), ("sites", "bonds"), strict=True):
         other.step(layers, values, dashes, where="mid", color=INK, linewidth=1.1, label=label)
     other.set_ylim(0, 1.25 * (by_layer.max() or 1.0))
-    other.set_ylabel("change (energy)")
+    other.set_ylabel(f"change ({Measure(layout.units).on_axes})")
     other.legend(loc="upper right", ncols=2, fontsize=7, frameon=False)

@@ -35,7 +35,7 @@ def edge_levels(spectrum: Spectrum, ax: Any) -> Any:
     cycle_axis(ax.xaxis, ax.set_xlim)
     ax.set_ylim(*energy_window(spectrum))
     what = "bands and levels" if spectrum.bottom.shape[1] else "levels (no cell repeats: no bands)"
-    ax.set(ylabel="energy (pump's unit)", title=what)
+    ax.set(ylabel=f"energy ({spectrum.unit})", title=what)
     ax.legend(loc="upper center", bbox_to_anchor=(0.5, -0.2), fontsize=7, frameon=False, ncols=2, handletextpad=0.4)
     return ax
 

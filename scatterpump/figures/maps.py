@@ -33,8 +33,8 @@ def local_density(density: LocalDensity, ax: Any) -> Any:
     ax.axhline(density.fermi_level, color=ACCENT, linewidth=1.1, linestyle="--")
     cycle_axis(ax.xaxis, ax.set_xlim)
     ax.set_ylim(density.energies[0], density.energies[-1])
-    ax.set(ylabel="energy (pump's unit)", title="density at the probe's end")
-    colour_bar(drawn, ax, "states per unit of energy", extend="max")
+    ax.set(ylabel=f"energy ({density.unit})", title="density at the probe's end")
+    colour_bar(drawn, ax, f"states per {density.unit}", extend="max")
     return ax
 
 
@@ -45,5 +45,5 @@ def potential(potential: Potential, ax: Any) -> Any:
     )
     cycle_axis(ax.yaxis, ax.set_ylim)
     ax.set(xlabel="x (lattice constants)", title="potential")
-    colour_bar(drawn, ax, "on-site (pump's unit)")
+    colour_bar(drawn, ax, f"on-site ({potential.unit})")
     return ax

@@ -23,7 +23,7 @@ def parameter_plane(plane: ParameterPlane, ax: Any) -> Any:
         drawn = ax.pcolormesh(
             plane.x, plane.y, plane.distance, cmap=shades, vmin=0.0, shading="nearest", rasterized=True
         )
-        colour_bar(drawn, ax, "nearest band (pump's unit)")
+        colour_bar(drawn, ax, f"nearest band ({plane.unit})")
         _hatch_closed(plane, ax)
     x, y = plane.path.T
     ax.plot(x, y, color="white", linewidth=3.2)

@@ -16,6 +16,7 @@ __all__ = ["draw_sites"]
 Floats = NDArray[np.float64]
 CROWDED = 1200  # sites in a window beyond which outlines and resting bonds only blur it
 SMALLEST, LARGEST = 0.8, 11.0  # points
+ASIDE = 0.25  # of the width: leads nearer to an end of the map are named there
 
 
 def draw_sites(panel: Any, layout: Layout, window: View, inches: float, unit: float, colours: Any) -> None:
@@ -31,8 +32,8 @@ def draw_sites(panel: Any, layout: Layout, window: View, inches: float, unit: fl
     size = float(np.clip(0.42 * unit * inches * 72 / window.width, SMALLEST, LARGEST))  # under half a bond
     _bonds(panel, layout, points, inside, size, colours, crowded=crowded)
     _sites(panel, layout, points, inside, size, colours, crowded=crowded)
-    for lead in layout.leads:
-        _draw_lead(panel, lead, points, window, size)
+    places = [(_draw_lead(panel, lead, points, window, size), lead) for lead in layout.leads]
+    _label(panel, [(along, lead) for along, lead in places if along is not None])
 
 
 def _bonds(
@@ -77,7 +78,8 @@ def _sites(
         panel.legend(loc="upper right", fontsize=7, frameon=False)
 
 
-def _draw_lead(panel: Any, lead: LeadView, points: Floats, window: View, size: float) -> None:
+def _draw_lead(panel: Any, lead: LeadView, points: Floats, window: View, size: float) -> float | None:
+    """Draw what `window` shows of a lead, and return its place along x as a share of the window; None if nothing."""
     marker = {"probe": "s", "drain": "D"}.get(lead.role, "^")
     for fade, cell in zip((0.75, 0.45, 0.2), lead.cells, strict=False):
         flat = flattened(cell)
@@ -86,16 +88,25 @@ def _draw_lead(panel: Any, lead: LeadView, points: Floats, window: View, size: f
     seat = points[lead.sites]
     seat = seat[window.holds(seat)]
     if not len(seat):
-        return
+        return None
     panel.scatter(*seat.T, s=1.9 * size**2, facecolors="none", edgecolors=INK, marker=marker, linewidths=0.9, zorder=5)
     centre = flattened(lead.cells[1]).mean(axis=0) if len(lead.cells) > 1 else seat.mean(axis=0)
-    _name(panel, lead, float(np.clip((centre[0] - window.left) / window.width, 0.0, 1.0)))
+    return float(np.clip((centre[0] - window.left) / window.width, 0.0, 1.0))
 
 
-def _name(panel: Any, lead: LeadView, along: float) -> None:
-    """Write what a lead is above the map, at its place along x."""
+def _label(panel: Any, places: list[tuple[float, LeadView]]) -> None:
+    """Write above the map what its leads are: those on the left, in the middle and on the right, each on one line."""
+    for side, low, high in (("left", 0.0, ASIDE), ("center", ASIDE, 1 - ASIDE), ("right", 1 - ASIDE, 1.1)):
+        here = [(along, lead) for along, lead in places if low <= along < high]
+        if here:
+            middle = sum(along for along, _ in here) / len(here)
+            place = {"left": 0.0, "center": middle, "right": 1.0}[side]
+            text = "; ".join(_named(lead) for _, lead in here)
+            panel.text(place, 1.02, text, transform=panel.transAxes, ha=side, va="bottom", fontsize=8)
+
+
+def _named(lead: LeadView) -> str:
+    role = f"lead {lead.number}" if lead.role == "lead" else lead.role
+    name = role if not lead.name else lead.name if lead.role == "lead" else f"{lead.name} ({role})"
     modes = "modes unknown" if lead.modes is None else f"{lead.modes} mode" + "s" * (lead.modes != 1)
-    name = lead.role if lead.role != "lead" else f"lead {lead.number}"
-    side = "left" if along < 0.25 else "right" if along > 0.75 else "center"
-    place = {"left": 0.0, "right": 1.0, "center": along}[side]
-    panel.text(place, 1.02, f"{name}, {modes}", transform=panel.transAxes, ha=side, va="bottom", fontsize=8)
+    return f"{name}, {modes}"

@@ -13,6 +13,7 @@ from scatterpump.portrait.turning import Turning
 __all__ = ["determinant_circle", "determinant_phase", "eigenphases"]
 
 TURN = 2 * np.pi
+LATE = 0.85  # of the cycle: beyond it the word beside a crossing goes to its left, where there is room
 MOST_RINGS = 60  # beyond which they hide what they ring
 LIFT = 0.16  # of the radius over a cycle: a second turn does not hide the first
 STRIP = (0.035, 0.075)  # heights of the intervals of the proof, as shares of the axes
@@ -75,12 +76,15 @@ def _number(turning: Turning) -> str:
 
 def _mark_crossings(turning: Turning, ax: Any) -> None:
     for crossing in turning.winding.crossings:
+        late = crossing.phase > LATE * TURN
         ax.axvline(crossing.phase, color=ACCENT, linewidth=1.0, linestyle="--", zorder=1)
         ax.annotate(
             "filled" if crossing.direction > 0 else "emptied",
             (crossing.phase, 1.0),
             xycoords=("data", "axes fraction"),
-            xytext=(3, -2),
+            xytext=(-3 if late else 3, -2),
+            ha="right" if late else "left",
+            zorder=1.5,  # the curve stays on top
             textcoords="offset points",
             color=ACCENT,
             fontsize=7,

@@ -61,4 +61,6 @@ def views(points: Floats, around: Floats, margin: float) -> tuple[View, ...]:
     if whole.width <= max(LONG * whole.height, 3 * end):
         return (whole,)
     near, far = whole.left + end, whole.right - end
-    return (View(whole.left, near, whole.bottom, whole.top), View(far, whole.right, whole.bottom, whole.top))
+    heights = every[(every[:, 0] <= near) | (every[:, 0] >= far), 1]  # a lead in the middle needs no room here
+    bottom, top = float(heights.min()) - margin, float(heights.max()) + margin
+    return (View(whole.left, near, bottom, top), View(far, whole.right, bottom, top))

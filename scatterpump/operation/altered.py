@@ -1,16 +1,11 @@
-"""The same pump with disorder on its sites, or driven more or less strongly.
+"""The same pump with disorder on its sites: H + noise, drawn for each site of the scattering region from (seed, site).
 
-Both change the value functions of a finalized kwant system, so that they work for any pump, however it was built:
-
-    disorder:  H + noise,                noise drawn for each site of the scattering region from (seed, site)
-    drive:     mean H + factor (H(phi) - mean H),    the mean taken over the cycle, element by element
-
-The leads stay as they are.
+The value functions of the finalized kwant system are changed, so that it works for any pump, however it was built.  The
+leads stay as they are.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from copy import copy
 from dataclasses import replace
 from typing import Any
@@ -20,9 +15,8 @@ import numpy as np
 from scatterpump.errors import InputError
 from scatterpump.pump import Pump
 
-__all__ = ["CIRCLE", "with_disorder", "with_drive"]
+__all__ = ["with_disorder"]
 
-CIRCLE = 64  # equally spaced phases of a mean over the cycle: exact for waves of up to 63 harmonics
 Value = tuple[Any, Any]
 
 
@@ -43,16 +37,6 @@ def with_disorder(pump: Pump, width: float, *, seed: int) -> Pump:
     noise = [width * (kwant.digest.uniform(_label(site), f"disorder {seed}") - 0.5) for site in system.sites]
     system.onsites = [_raised(value, by) for value, by in zip(system.onsites, noise, strict=True)]
     return replace(pump, system=system, bulk=pump.finalized_bulk)
-
-
-def with_drive(pump: Pump, factor: float) -> Pump:
-    """Return `pump` with all that moves in its Hamiltonian multiplied by `factor`, about its mean over the cycle."""
-    circle = [pump.parameters(2 * np.pi * i / CIRCLE) for i in range(CIRCLE)]
-    return replace(
-        pump,
-        system=_redriven(pump.finalized, circle, factor),
-        bulk=None if pump.finalized_bulk is None else _redriven(pump.finalized_bulk, circle, factor),
-    )
 
 
 def _own(system: Any) -> Any:
@@ -78,36 +62,3 @@ def _raised(value: Value, by: float) -> Value:
 def _plus(value: Any, by: float) -> Any:
     """Add an energy to a number, to an array of numbers, or to a matrix or an array of matrices."""
     return value + by if np.ndim(value) < 2 else np.asarray(value) + by * np.eye(np.shape(value)[-1])
-
-
-def _redriven(system: Any, circle: list[dict[str, Any]], factor: float) -> Any:
-    from kwant.builder import Other
-
-    system, known = _own(system), {}
-
-    def redriven(value: Value) -> Value:
-        function, names = value
-        if names is None or function is Other:
-            return value
-        key = (id(function), id(names))
-        if key not in known:
-            known[key] = _about_mean(function, [tuple(p[name] for name in names) for p in circle], factor)
-        return known[key], names
-
-    system.onsites = [redriven(value) for value in system.onsites]
-    system.hoppings = [redriven(value) for value in system.hoppings]
-    return system
-
-
-def _about_mean(function: Callable[..., Any], circle: list[tuple[Any, ...]], factor: float) -> Callable[..., Any]:
-    """Return the value function whose distance from its mean over `circle` is `factor` times that of `function`."""
-    count = len(circle[0])
-    means: dict[Any, Any] = {}
-
-    def value(*arguments: Any) -> Any:
-        sites, parameters = arguments[: len(arguments) - count], arguments[len(arguments) - count :]
-        if sites not in means:
-            means[sites] = sum(np.asarray(function(*sites, *place)) for place in circle) / len(circle)
-        return means[sites] + factor * (function(*sites, *parameters) - means[sites])
-
-    return value

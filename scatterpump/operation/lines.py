@@ -12,7 +12,7 @@ from scatterpump.operation import warmth
 from scatterpump.operation.bench import Bench
 from scatterpump.operation.length import Resizable, shortest_device
 from scatterpump.operation.line import How, Line
-from scatterpump.operation.tolerance import Reach, disorder_tolerance, drive_tolerance
+from scatterpump.operation.tolerance import LADDER, Reach, disorder_tolerance, drive_tolerance
 
 __all__ = ["LIMITS", "OUTPUT", "How", "Line"]
 
@@ -50,6 +50,7 @@ def disorder(bench: Bench) -> tuple[Line, ...]:
     if found.samples:
         worst, best, count = min(found.samples), max(found.samples), len(found.samples)
         text = f"of {count} samples the weakest bore a box {energy(worst)} wide, the strongest {energy(best)}"
+        text += ", the widest tried" if best >= LADDER[-1] * found.width else ""
         lines.append(Line("disorder tried", "estimated", text, {"samples": list(found.samples)}))
     return tuple(lines)
 

@@ -7,12 +7,13 @@ from math import floor, inf, log10
 
 from scatterpump.pump import Units
 
-__all__ = ["Measure", "with_prefix"]
+__all__ = ["OWN", "Measure", "with_prefix"]
 
 PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T"}
 MEV = 1.602176634e-22  # joules, exact since 2019
 SAME = 1e-9
 DIGITS = 4
+OWN = "the system's own unit"
 
 
 def with_prefix(value: float, unit: str) -> str:
@@ -40,6 +41,18 @@ class Measure:
     def energy_unit(self) -> str:
         """What a number of the pump's energies is followed by, or "" if by nothing."""
         return "meV" if self.units is not None and abs(self.units.energy / MEV - 1) < SAME else ""
+
+    @property
+    def on_axes(self) -> str:
+        """What stands behind an energy on the axis of a drawing."""
+        return self.energy_unit or "pump's unit"
+
+    @property
+    def scale(self) -> str:
+        """What one unit of energy in numbers without a unit beside them is: in a sheet's JSON, say."""
+        if self.energy_unit:
+            return self.energy_unit
+        return OWN if self.units is None else f"{self.units.energy:.{DIGITS}g} J"
 
     def energy(self, value: float) -> str:
         """Return an energy: in meV, or as a number with the frequency E/h behind it, or as a number."""

@@ -12,7 +12,7 @@ from typing import Any
 from scatterpump.errors import InputError
 from scatterpump.operation.bench import Bench
 from scatterpump.operation.lines import LIMITS, OUTPUT, Line
-from scatterpump.operation.measure import Measure
+from scatterpump.operation.measure import OWN, Measure
 from scatterpump.operation.plateaus import Plateau, require_range
 from scatterpump.operation.tolerance import SAMPLES
 from scatterpump.plain import plain
@@ -67,6 +67,7 @@ class Sheet:
             "trustworthy": self.trustworthy,
             "name": self.verdict.name,
             "fermi_level": self.verdict.fermi_level,
+            "unit_of_energy": self.measure.scale,
             "units": None if self.measure.units is None else asdict(self.measure.units),
             "limits": [asdict(line) for line in self.limits],
             "output": [asdict(line) for line in self.output],
@@ -83,7 +84,8 @@ class Sheet:
     def summary(self) -> str:
         """Return the sheet as a table, alarms and limits first."""
         level = self.measure.energy(self.verdict.fermi_level)
-        lines = [f"{self.verdict.name}, Fermi level {level}   (scatterpump {version()})", ""]
+        lines = [f"{self.verdict.name}, Fermi level {level}   (scatterpump {version()})"]
+        lines += [""] if self.measure.units else [f"energies in {OWN}, lengths in sites", ""]
         for finding in self.verdict.audit.alarms:
             lines += _row("ALARM", "", f"{finding.check}: {finding.message} {finding.remedy}")
         if not self.limits:
@@ -91,7 +93,8 @@ class Sheet:
         for line in (*self.limits, *self.output):
             lines += _row(line.label, line.how, line.text)
         for number, plateau in enumerate(self.plateaus):
-            lines += _row("" if number else "plateaus", plateau.how, self._plateau(plateau))
+            how = plateau.how if plateau.exact else "estimated"
+            lines += _row("" if number else "plateaus", how, self._plateau(plateau))
         for number, caution in enumerate(self.cautions):
             lines += _row("" if number else "not modelled", "", caution)
         return "\n".join(lines)

@@ -17,16 +17,16 @@ from math import inf
 
 import numpy as np
 
-from scatterpump.bulk.cell import bloch_cell
-from scatterpump.bulk.chern import chern_number
-from scatterpump.bulk.gap import BulkGap, bulk_gap
+from scatterpump.bulk.cell import BlochCell, bloch_cell
+from scatterpump.bulk.chern import chern_of
+from scatterpump.bulk.gap import BulkGap, bulk_gap, gap_of
 from scatterpump.errors import ClosedGapError, InputError
-from scatterpump.operation.altered import with_disorder, with_drive
+from scatterpump.operation.altered import with_disorder
 from scatterpump.pump import Pump
 from scatterpump.solver.reflect import reflect
 from scatterpump.winding.unwrap import steps
 
-__all__ = ["DisorderTolerance", "DriveTolerance", "Reach", "disorder_tolerance", "drive_tolerance"]
+__all__ = ["LADDER", "DisorderTolerance", "DriveTolerance", "Reach", "disorder_tolerance", "drive_tolerance"]
 
 SAMPLES = 3
 LADDER = (1.0, 1.5, 2.0, 3.0, 4.0)  # widths to try, in proven ones: samples differ by more than these steps
@@ -154,8 +154,9 @@ def drive_tolerance(pump: Pump, *, limit: float = LIMIT) -> DriveTolerance:
     if not 1 < limit < inf:
         raise InputError(f"limit is {limit}", allowed="a number above 1")
     gap = _open_gap(pump)
-    norm, is_bound = _drive_norm(pump)
-    march = _March(pump, norm, _chern(pump))
+    cell = bloch_cell(pump)
+    norm, is_bound = _drive_norm(cell)
+    march = _March(cell, norm, _chern(cell))
     weakest, strongest = march.towards(0.0, gap), march.towards(limit, gap)
     return DriveTolerance(weakest, strongest, gap.exact and is_bound, march.steps)
 
@@ -190,14 +191,14 @@ def _read_off(pump: Pump) -> int | None:
 class _March:
     """Steps along the factor of the drive, each as long as the proven distance allows."""
 
-    pump: Pump
+    cell: BlochCell
     norm: float
     number: int | None
     steps: int = 0
 
     def gap(self, factor: float) -> BulkGap:
         self.steps += 1
-        return bulk_gap(with_drive(self.pump, factor), accuracy=ROUGH)
+        return gap_of(self.cell.driven(factor), accuracy=ROUGH)
 
     def towards(self, end: float, gap: BulkGap) -> Reach:
         """Return how far it goes from 1 towards `end`, where `gap` is the one at 1."""
@@ -218,22 +219,21 @@ class _March:
         factor = holds
         while factor != end:
             factor = min(end, factor + step) if end > holds else max(end, factor + step)
-            if not self.gap(factor).is_open or _chern(with_drive(self.pump, factor)) != self.number:
+            if not self.gap(factor).is_open or _chern(self.cell.driven(factor)) != self.number:
                 return factor
             step *= 2
         return None
 
 
-def _chern(pump: Pump) -> int | None:
+def _chern(cell: BlochCell) -> int | None:
     try:
-        return chern_number(pump)
+        return chern_of(cell)
     except ClosedGapError:
         return None
 
 
-def _drive_norm(pump: Pump) -> tuple[float, bool]:
+def _drive_norm(cell: BlochCell) -> tuple[float, bool]:
     """Return a bound on |H - mean H| of the interior at any phi, by row sums, and whether it is one for certain."""
-    cell = bloch_cell(pump)
     if cell.harmonics is not None:
         parts = np.abs(np.delete(cell.harmonics.coefficients, cell.harmonics.degree, axis=0)).sum(axis=0)
         return _row_sums(parts[None]), True

@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.errors import ClosedProbeError, InputError
+from scatterpump.operation.measure import Measure
 from scatterpump.pump import Pump
 from scatterpump.solver.elimination import eliminate_single
 from scatterpump.solver.hamiltonian import driven_path
@@ -47,6 +48,8 @@ class LocalDensity:
         In the pump's unit.
     density : (k, n) float array
         States per unit of energy on all orbitals of the first layers; nan at energies where the probe has no open mode.
+    unit : str
+        What stands behind an energy: "meV", or "pump's unit" where that is another one, or none.
     """
 
     name: str
@@ -54,6 +57,7 @@ class LocalDensity:
     phases: Floats
     energies: Floats
     density: Floats
+    unit: str
 
 
 def local_density(pump: Pump, energies: Floats, *, phases: int = PHASES) -> LocalDensity:
@@ -70,7 +74,8 @@ def local_density(pump: Pump, energies: Floats, *, phases: int = PHASES) -> Loca
     driven_path(pump)  # found once, and shared by the pumps at all energies
     with threadpool_limits(1):  # many small matrices: threads would only get in each other's way
         rows = [_at(pump.at_fermi_level(float(energy)), points) for energy in energies]
-    return LocalDensity(pump.name, pump.fermi_level, points, np.asarray(energies, dtype=float), np.array(rows))
+    unit = Measure(pump.units).on_axes
+    return LocalDensity(pump.name, pump.fermi_level, points, np.asarray(energies, dtype=float), np.array(rows), unit)
 
 
 def _at(pump: Pump, phases: Floats) -> Floats:

@@ -11,9 +11,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterpump.bulk.cell import bloch_cell
+from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.cycle import Cycle
-from scatterpump.errors import InputError, NoBulkError
+from scatterpump.errors import InputError
+from scatterpump.operation.measure import Measure
 from scatterpump.pump import Pump
 
 __all__ = ["ParameterPlane", "parameter_plane"]
@@ -43,6 +44,8 @@ class ParameterPlane:
         Distance of the Fermi level from the nearest band over sampled k, in the pump's unit.
     is_closed : (b, a) bool array
         Where a band reaches across the Fermi level.
+    unit : str
+        What stands behind an energy: "meV", or "pump's unit" where that is another one, or none.
     """
 
     name: str
@@ -53,6 +56,7 @@ class ParameterPlane:
     y: Floats
     distance: Floats
     is_closed: NDArray[np.bool_]
+    unit: str
 
 
 def parameter_plane(pump: Pump) -> ParameterPlane:
@@ -76,24 +80,26 @@ def parameter_plane(pump: Pump) -> ParameterPlane:
     (left, bottom), (right, top) = low - margin, high + margin
     turns = np.linspace(-np.pi, 0.0, ACROSS)
     x, y = (left + right) / 2 + (right - left) / 2 * np.cos(turns), np.linspace(bottom, top, UP)
-    try:
-        rows = [_row(pump, (names[0], left, right), (names[1], float(value)), turns) for value in y]
-    except NoBulkError:
+    cell = known_cell(pump)
+    if cell is None:
         x, y, rows = np.empty(0), np.empty(0), []
+    else:
+        rows = [_row(cell, (names[0], left, right), (names[1], float(value)), turns) for value in y]
     distance = np.array([row[0] for row in rows]).reshape(len(y), len(x))
     closed = np.array([row[1] for row in rows], dtype=bool).reshape(len(y), len(x))
-    return ParameterPlane(pump.name, (names[0], names[1]), phases, path, x, y, distance, closed)
+    unit = Measure(pump.units).on_axes
+    return ParameterPlane(pump.name, (names[0], names[1]), phases, path, x, y, distance, closed, unit)
 
 
 def _row(
-    pump: Pump, moving: tuple[str, float, float], resting: tuple[str, float], turns: Floats
+    cell: BlochCell, moving: tuple[str, float, float], resting: tuple[str, float], turns: Floats
 ) -> tuple[Floats, NDArray[np.bool_]]:
     """Distance from the bands, and whether one reaches across, along one row of the plane."""
     name, low, high = moving
     cycle = Cycle.ellipse(x=(name, (low + high) / 2, (high - low) / 2), y=(*resting, 0.0))
     momenta = TURN * np.arange(MOMENTA) / MOMENTA
-    h, hop = np.moveaxis(bloch_cell(pump.on(cycle)).blocks(turns), 1, 0)
+    h, hop = np.moveaxis(cell.along(cycle).blocks(turns), 1, 0)
     turned = hop[:, None] * np.exp(-1j * momenta)[:, None, None]
-    energies = np.linalg.eigvalsh(h[:, None] + turned + turned.conj().swapaxes(2, 3)) - pump.fermi_level
+    energies = np.linalg.eigvalsh(h[:, None] + turned + turned.conj().swapaxes(2, 3)) - cell.fermi_level
     filled = (energies < 0).sum(axis=2)
     return np.abs(energies).min(axis=(1, 2)), np.asarray(filled.min(axis=1) != filled.max(axis=1))

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.anatomy.geometry import geometry
+from scatterpump.operation.measure import Measure
 from scatterpump.pump import Pump
 from scatterpump.solver.hamiltonian import driven_path
 
@@ -32,12 +33,15 @@ class Potential:
         x of the sites, each once, ascending; lattice constants.
     energies : (n, p) float array
         Mean on-site energy of all orbitals there, in the pump's unit.
+    unit : str
+        What stands behind an energy: "meV", or "pump's unit" where that is another one, or none.
     """
 
     name: str
     phases: Floats
     places: Floats
     energies: Floats
+    unit: str
 
 
 def potential(pump: Pump, *, phases: int = PHASES) -> Potential:
@@ -50,4 +54,4 @@ def potential(pump: Pump, *, phases: int = PHASES) -> Potential:
     values = driven.many(points)[:, own].real
     summed = np.zeros((phases, len(places)))
     np.add.at(summed.T, group, values.T)
-    return Potential(pump.name, points, places, summed / np.bincount(group))
+    return Potential(pump.name, points, places, summed / np.bincount(group), Measure(pump.units).on_axes)

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.bulk.gap import BulkGap
+from scatterpump.operation.measure import Measure
 from scatterpump.pump import Pump
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.layers import distances
@@ -47,6 +48,8 @@ class Spectrum:
         Share of each level's weight on orbitals that are nearer to the probe than to any other lead.
     gap : BulkGap or None
         The proven window of Fermi levels.
+    unit : str
+        What stands behind an energy: "meV", or "pump's unit" where that is another one, or none.
     """
 
     name: str
@@ -57,6 +60,7 @@ class Spectrum:
     levels: Floats
     nearness: Floats
     gap: BulkGap | None
+    unit: str
 
     @property
     def is_between_bands(self) -> NDArray[np.bool_]:
@@ -74,7 +78,9 @@ def spectrum(pump: Pump, gap: BulkGap | None = None, *, phases: int = PHASES) ->
     bottom, top = (none, none) if cell is None else _bands(cell, points)
     with threadpool_limits(1):  # many small matrices: threads would only get in each other's way
         levels, nearness = _levels(fold(pump), pump.fermi_level, points)
-    return Spectrum(pump.name, pump.fermi_level, points, bottom, top, levels, nearness, gap)
+    return Spectrum(
+        pump.name, pump.fermi_level, points, bottom, top, levels, nearness, gap, Measure(pump.units).on_axes
+    )
 
 
 def _bands(cell: BlochCell, phases: Floats) -> tuple[Floats, Floats]:

@@ -128,7 +128,9 @@ QUANTITIES = {
             (
                 Column("crossing_phase", "where levels cross the Fermi level", "rad", dims=("crossing",)),
                 Column("crossing_direction", "+1 filled from the probe", kind="integer", dims=("crossing",)),
-                Column("crossing_width", "half-width of the crossings", "rad", dims=("crossing",)),
+                Column(
+                    "crossing_width", "half-width of the crossings; from pi on, no resonance", "rad", dims=("crossing",)
+                ),
             ),
             _crossings,
         ),

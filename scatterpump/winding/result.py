@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from math import pi
 from typing import Literal
 
 __all__ = ["Crossing", "Leak", "Winding"]
@@ -21,12 +22,18 @@ class Crossing:
     direction : int
         +1: the level is filled from the probe; -1: it is emptied into it.
     width : float
-        Half-width in radians: at this distance from `phase` the eigenphase of r is a quarter turn from its value there.
+        Half-width in radians, 2 / |d theta / d phi| of the eigenphase theta of r that passes: as far from `phase` as
+        this a narrow level has turned it by a quarter turn.
     """
 
     phase: float
     direction: int
     width: float
+
+    @property
+    def is_resonance(self) -> bool:
+        """False if the level is broader than the cycle: its charge comes at no one phase."""
+        return self.width < pi  # `width` to either side is then less than the cycle
 
 
 @dataclass(frozen=True)
