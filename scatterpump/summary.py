@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from scatterpump.audit.finding import AuditReport, Finding
 from scatterpump.bulk.gap import FLOOR, BulkGap
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.pump import Units
 from scatterpump.version import version
 from scatterpump.winding.resolved import Resolved

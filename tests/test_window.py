@@ -13,7 +13,7 @@ from click.testing import CliRunner, Result
 import scatterpump as sp
 from scatterpump.cli import main
 from scatterpump.device_file import load_device
-from scatterpump.operation.measure import Measure, with_prefix
+from scatterpump.measure import Measure, with_prefix
 from scatterpump.operation.sheet import Sheet
 
 EXAMPLES = Path(__file__).parents[1] / "examples"

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.anatomy.layout import UNREACHED, Layout, LeadView
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.version import version
 
 __all__ = ["describe"]

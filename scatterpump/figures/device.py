@@ -17,7 +17,7 @@ from scatterpump.figures.page import BESIDE, INNER, Row, stack
 from scatterpump.figures.sites import draw_sites
 from scatterpump.figures.style import strength_map
 from scatterpump.figures.window import View, flattened, views
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 
 __all__ = ["draw_device"]
 

@@ -8,7 +8,7 @@ import numpy as np
 
 from scatterpump.anatomy.layout import Layout
 from scatterpump.figures.style import INK, PALE
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 
 __all__ = ["draw_layers"]
 

@@ -8,7 +8,7 @@ from typing import Any
 
 from scatterpump.bulk.cell import known_cell
 from scatterpump.bulk.gap import BulkGap
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.operation.plateaus import Plateau, plateaus
 from scatterpump.pump import Pump
 from scatterpump.verdict import Verdict

@@ -10,9 +10,9 @@ from textwrap import wrap
 from typing import Any
 
 from scatterpump.errors import InputError
+from scatterpump.measure import OWN, Measure
 from scatterpump.operation.bench import Bench
 from scatterpump.operation.lines import LIMITS, OUTPUT, Line
-from scatterpump.operation.measure import OWN, Measure
 from scatterpump.operation.plateaus import Plateau, require_range
 from scatterpump.operation.tolerance import SAMPLES
 from scatterpump.plain import plain

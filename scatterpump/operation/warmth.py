@@ -8,13 +8,13 @@ from __future__ import annotations
 from collections.abc import Callable
 from math import log
 
+from scatterpump.measure import with_prefix
 from scatterpump.operation.bench import Bench
 from scatterpump.operation.charge import charge
 from scatterpump.operation.current import Current, current, delivered
 from scatterpump.operation.heat import temperature_limit
 from scatterpump.operation.limit import Limit
 from scatterpump.operation.line import How, Line
-from scatterpump.operation.measure import with_prefix
 from scatterpump.operation.speed import adiabatic_frequency, speed_limit
 from scatterpump.operation.units import hertz, kelvin
 from scatterpump.pump import Pump

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.errors import ClosedProbeError, InputError
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.pump import Pump
 from scatterpump.solver.elimination import eliminate_single
 from scatterpump.solver.hamiltonian import driven_path

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.cycle import Cycle
 from scatterpump.errors import InputError
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.pump import Pump
 
 __all__ = ["ParameterPlane", "parameter_plane"]

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterpump.anatomy.geometry import geometry
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.pump import Pump
 from scatterpump.solver.hamiltonian import driven_path
 

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from scatterpump.bulk.cell import BlochCell, known_cell
 from scatterpump.bulk.gap import BulkGap
-from scatterpump.operation.measure import Measure
+from scatterpump.measure import Measure
 from scatterpump.pump import Pump
 from scatterpump.solver.folded import FoldedDevice, fold
 from scatterpump.solver.layers import distances
