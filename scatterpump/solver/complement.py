@@ -25,7 +25,7 @@ __all__ = ["Banded", "Complement", "Mumps", "PublicMumps", "SuperLU", "complemen
 Complex = NDArray[np.complex128]
 Indices = NDArray[np.int64]
 PIVOT = 0.01  # a diagonal element is kept as pivot if it is so large against its column: kwant's choice as well
-NARROW = 48  # half-bandwidth up to which a band is faster than the analysis of the others
+NARROW = 16  # half-bandwidth up to which a band costs no more for each matrix than the others do
 SHORT_OF_MEMORY = (-8, -9)  # what MUMPS says when its estimate was too small
 
 
