@@ -12,6 +12,7 @@ from typing import Any
 import numpy as np
 from numba import njit
 
+from scatterpump.solver.elimination import DROPPED, LOOK_EVERY
 from scatterpump.solver.inverses import SMALL_PIVOT
 from scatterpump.solver.lanes import PANEL, inner, inverted, inverted_with_pivots, subtract_product
 from scatterpump.solver.simd import (
@@ -32,9 +33,6 @@ from scatterpump.solver.simd import (
 )
 
 __all__ = ["swept"]
-
-LOOK_EVERY = 4
-DROPPED = 1e-16  # of |D|: what one rounding changes
 
 
 @inner
