@@ -8,12 +8,12 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from click.testing import CliRunner, Result
+from click.testing import Result
+from console import call
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from scatterpump.audit.examine import CHECKS
-from scatterpump.cli import main
 
 DEVICE = """
 name = "sliding wave"
@@ -24,10 +24,6 @@ probe = {hopping = 2.0}
 drain = {hopping = 2.0}
 """
 FUZZ = settings(derandomize=True, deadline=None, max_examples=14)
-
-
-def call(*arguments: object) -> Result:
-    return CliRunner().invoke(main, [str(argument) for argument in arguments])
 
 
 def with_changes(command: str, device: Path, *changes: str, options: tuple[str, ...] = ()) -> Result:

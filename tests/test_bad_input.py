@@ -12,12 +12,11 @@ from types import SimpleNamespace
 from typing import Any
 from unittest.mock import patch
 
+import console
 import pytest
-from click.testing import CliRunner, Result
+from click.testing import Result
 from hypothesis import given, settings
 from hypothesis import strategies as st
-
-from scatterpump.cli import main
 
 NAN, INF = float("nan"), float("inf")
 GOOD: dict[str, Any] = {
@@ -62,7 +61,7 @@ def written(folder: Path, content: dict[str, Any], trace: str | bytes = TRACE) -
 
 
 def call(*arguments: object) -> Result:
-    return CliRunner().invoke(main, ["verdict", *map(str, arguments)])
+    return console.call("verdict", *arguments)
 
 
 def complaint(result: Result, *words: str) -> str:

@@ -8,7 +8,8 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from click.testing import CliRunner, Result
+from click.testing import Result
+from console import call
 
 from scatterpump.cli import main
 from scatterpump.device_file import load_device
@@ -26,10 +27,6 @@ onsite = [{amplitude = 1.5, period = 3}]
 probe = {hopping = 2.0}
 drain = {hopping = 2.0}
 """
-
-
-def call(*arguments: object) -> Result:
-    return CliRunner().invoke(main, [str(argument) for argument in arguments])
 
 
 @cache

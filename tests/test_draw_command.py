@@ -11,9 +11,8 @@ import matplotlib.image
 import numpy as np
 import pytest
 import xarray
-from click.testing import CliRunner, Result
+from console import call
 
-from scatterpump.cli import main
 from scatterpump.device_file import load_device
 from scatterpump.figures import catalogue
 from scatterpump.report import make_report, source_of
@@ -26,10 +25,6 @@ onsite = [{amplitude = 1.5, period = 3}]
 probe = {hopping = 2.0}
 drain = {hopping = 2.0}
 """
-
-
-def call(*arguments: object) -> Result:
-    return CliRunner().invoke(main, [str(argument) for argument in arguments])
 
 
 @pytest.fixture

@@ -13,10 +13,9 @@ from typing import Any
 import numpy as np
 import pytest
 import xarray
-from click.testing import CliRunner, Result
+from console import call
 from sweep_toys import picky, square, toy_plan
 
-from scatterpump.cli import main
 from scatterpump.device_file import load_device, read_device
 from scatterpump.errors import InputError, SweepError
 from scatterpump.sweep import files
@@ -55,10 +54,6 @@ drain = {hopping = 2.0}
 
 def linear(x: int) -> Any:
     return float(x)
-
-
-def call(*arguments: object) -> Result:
-    return CliRunner().invoke(main, [str(argument) for argument in arguments])
 
 
 # --- one data set; derived unless said otherwise

@@ -8,10 +8,9 @@ from math import inf
 from pathlib import Path
 
 import pytest
-from click.testing import CliRunner, Result
+from console import call
 
 import scatterpump as sp
-from scatterpump.cli import main
 from scatterpump.device_file import load_device
 from scatterpump.measure import Measure, with_prefix
 from scatterpump.operation.sheet import Sheet
@@ -20,10 +19,6 @@ EXAMPLES = Path(__file__).parents[1] / "examples"
 CONVEYOR = EXAMPLES / "conveyor.toml"
 WIRE = sp.Lead(hopping=2.0)
 CHAIN = sp.ModulatedChain(sites=24, fermi_level=-1.2, onsite=[sp.Wave(1.5, 3)], probe=WIRE, drain=WIRE)
-
-
-def call(*arguments: object) -> Result:
-    return CliRunner().invoke(main, [str(argument) for argument in arguments])
 
 
 @pytest.fixture(scope="module")
